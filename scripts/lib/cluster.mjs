@@ -151,8 +151,11 @@ export function runningServer({ data }) {
 	try {
 		const lines = readFileSync(join(data, 'postmaster.pid'), 'utf8').split('\n');
 		const pid = Number(lines[0]);
-		const command = readFileSync(`/proc/${pid}/cmdline`, 'utf8');
-		if (!command.includes('postgres') || !command.includes(data)) return null;
+		process.kill(pid, 0);
+		if (existsSync('/proc/self')) {
+			const command = readFileSync(`/proc/${pid}/cmdline`, 'utf8');
+			if (!command.includes('postgres') || !command.includes(data)) return null;
+		}
 		return { pid, port: Number(lines[3]) };
 	} catch {
 		return null;

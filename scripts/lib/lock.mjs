@@ -28,16 +28,18 @@ export function holderOf(path) {
 /**
  * @param {string} path
  * @param {string} script
- * @returns {{ holder: Holder } | { release: () => void, tell: (address: string) => void }}
+ * @returns {{ holder: Holder } | { release: () => void, tell: (address: string) => void, afterKill: boolean }} afterKill: an earlier run ended without giving its lock back
  */
 export function takeLock(path, script) {
 	const mine = { pid: process.pid, script };
+	let afterKill = false;
 	for (let attempt = 0; attempt < 3; attempt++) {
 		try {
 			const file = openSync(path, 'wx', 0o644);
 			writeSync(file, JSON.stringify(mine));
 			closeSync(file);
 			return {
+				afterKill,
 				release: () => rmSync(path, { force: true }),
 				tell: (address) => writeJson(path, { ...mine, address }, 0o644)
 			};
@@ -46,6 +48,7 @@ export function takeLock(path, script) {
 		}
 		const holder = holderOf(path);
 		if (holder) return { holder };
+		afterKill = true;
 		rmSync(path, { force: true });
 	}
 	return { holder: { pid: 0, script } };
