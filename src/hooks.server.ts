@@ -48,12 +48,15 @@ const framing: Handle = async ({ event, resolve }) => {
 			method: event.request.method,
 			status: response.status,
 			ms: Math.round(performance.now() - begun),
-			person: event.locals.session?.personId
+			person: personOf(event.locals)
 		},
 		'request'
 	);
 	return response;
 };
+
+/** Set by the guard while the request was answered. */
+const personOf = (locals: App.Locals) => locals.session?.personId;
 
 /** Cookies travel with requests from anywhere; whatever changes something must say that it comes from our own pages. */
 const sameOrigin: Handle = async ({ event, resolve }) => {

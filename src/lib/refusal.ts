@@ -17,6 +17,8 @@ export const refusals = {
 		say: () => 'The screen was locked. Enter your password to go on; what you typed is kept.'
 	},
 	INVALID: { status: 400, say: () => 'Some fields need another look.' },
+	/** A domain rule's own sentence (see domain/problems.ts). */
+	RULE: { status: 422, say: (f) => String(f.why) },
 	NOT_JSON: { status: 400, say: () => 'The request’s body is not valid JSON.' },
 	TOO_LARGE: { status: 413, say: (f) => `That is too large: at most ${f.limit}.` },
 	WRONG_TYPE: { status: 415, say: (f) => `Send ${f.wanted}.` },

@@ -17,7 +17,12 @@ export async function startWorker(
 	handlers: Handlers,
 	schedules: Partial<Record<QueueName, string>> = {}
 ): Promise<{ stop(): Promise<void> }> {
-	const boss = new PgBoss({ connectionString, schema: 'queue', migrate: false, max: 4 });
+	const boss = new PgBoss({
+		connectionString,
+		schema: 'queue',
+		migrate: false,
+		max: 4
+	});
 	boss.on('error', (error) => log.error({ err: error }, 'queue'));
 	await boss.start();
 	for (const [queue, cron] of Object.entries(schedules))
