@@ -266,7 +266,7 @@ export interface GrowthResult {
 	trajectories: Trajectory[];
 	residuals: ResidualPoint[];
 	converged: boolean;
-	/** Relative slope of −2 log-likelihood at the estimate; near 0 at an interior optimum. */
+	/** How far the slope of −2 log-likelihood says the optimum still is, in units of its own curvature; near 0. */
 	gradient: number;
 	iterations: number;
 	/** The between-subject variance is estimated as exactly zero. */
