@@ -1,7 +1,8 @@
+import { dependence, estimates, figures, fit, provenance } from './answer';
 import { count, groupedHex, instant } from './format';
 import { checkInput, ReportFault, type LookReportInput } from './input';
 import { names as namesOf } from './names';
-import { asked, dependence, estimates, figures, fit, people, provenance } from './sections';
+import { asked, people } from './question';
 import { reportText, type CautionNode, type Definition, type ReportTree } from './tree';
 import { fill, words } from './words';
 

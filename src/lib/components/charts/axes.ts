@@ -29,6 +29,15 @@ export const charactersIn = (width: number): number => Math.max(4, Math.floor(wi
 export const axisTitle = (axis: Axis): string =>
 	axis.unit ? `${axis.label}, ${axis.unit}` : axis.label;
 
+/** The title in one line of `width`: a long name is shortened, its unit is not. */
+export function axisLine(axis: Axis, width: number): string {
+	const letters = charactersIn(width);
+	const whole = axisTitle(axis);
+	if (whole.length <= letters) return whole;
+	const name = wrap(axis.label, Math.max(4, letters - axis.unit.length - 2), 1)[0] ?? '';
+	return axisTitle({ ...axis, label: name });
+}
+
 /** A domain with some breadth: a constant is widened, so that no coordinate is ever NaN. */
 export function breadth(values: Iterable<number>): [number, number] | null {
 	const [low, high] = extent([...values].filter(Number.isFinite));

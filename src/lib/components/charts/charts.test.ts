@@ -1,7 +1,15 @@
+import { createRawSnippet } from 'svelte';
 import { render } from 'svelte/server';
 import { describe, expect, test } from 'vitest';
-import { spread, wrap } from './axes';
-import { paperPalette, ResidualChart, residualWords, TrajectoryChart, trajectoryWords } from '.';
+import { axisLine, spread, wrap } from './axes';
+import {
+	ChartFigure,
+	paperPalette,
+	ResidualChart,
+	residualWords,
+	TrajectoryChart,
+	trajectoryWords
+} from '.';
 import { residualGeometry } from './residual';
 import { trajectoryGeometry, type TrajectoryData } from './trajectory';
 
@@ -283,6 +291,20 @@ describe('the residual chart', () => {
 	});
 });
 
+describe('a chart on a page', () => {
+	test('has its caption before it and its words after it', () => {
+		const chart = createRawSnippet<[number]>((width) => ({
+			render: () => `<svg data-width="${width()}"></svg>`
+		}));
+		const html = render(ChartFigure, {
+			props: { caption: 'What happened', words: 'In words.', chart }
+		}).body.replace(/<!--.*?-->/gs, '');
+		expect(html).toMatch(
+			/<figcaption[^>]*>What happened<.*<svg data-width="560">.*<summary[^>]*>This figure in words<.*In words\./s
+		);
+	});
+});
+
 describe('making room', () => {
 	test('spread keeps order, gaps and the top', () => {
 		expect(
@@ -306,6 +328,12 @@ describe('making room', () => {
 			)
 		).toEqual([90, 70]);
 		expect(spread([{ at: 50, height: 20 }], 0, 100)).toEqual([50]);
+	});
+
+	test('an axis title too long for its line keeps its unit', () => {
+		const axis = { label: 'a measure with a very long name indeed', unit: 'mmol/L' };
+		expect(axisLine(axis, 1000)).toBe('a measure with a very long name indeed, mmol/L');
+		expect(axisLine(axis, 260)).toMatch(/^a measure .*…, mmol\/L$/);
 	});
 
 	test('wrap cuts long words and ends long texts with an ellipsis', () => {

@@ -4,6 +4,7 @@ export interface ChartPalette {
 	muted: string;
 	axis: string;
 	rule: string;
+	sheet: string;
 	mark: string;
 	limit: string;
 	groups: readonly [string, string, string];
@@ -14,6 +15,7 @@ export const screenPalette: ChartPalette = {
 	muted: 'var(--muted)',
 	axis: 'var(--rule-strong)',
 	rule: 'var(--rule)',
+	sheet: 'var(--sheet)',
 	mark: 'var(--act)',
 	limit: 'var(--muted)',
 	groups: ['var(--arm-a)', 'var(--arm-b)', 'var(--arm-c)']
@@ -24,6 +26,7 @@ export const paperPalette: ChartPalette = {
 	muted: '#54402f',
 	axis: '#94856d',
 	rule: '#d9cdb8',
+	sheet: '#ffffff',
 	mark: '#28396b',
 	limit: '#54402f',
 	groups: ['#28396b', '#8a4a12', '#17606a']
