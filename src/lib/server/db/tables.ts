@@ -266,6 +266,7 @@ interface MeasurementTable {
 	unit: string;
 	entered_value: Numeric | null;
 	entered_unit: string | null;
+	entered_readings: Numeric[] | null;
 	not_done_reason: string | null;
 	soft_answer: string | null;
 	comment: string | null;
