@@ -1,12 +1,19 @@
+import { importJob } from '../imports/job';
 import { byArmLookJob, lookJob } from '../looks/jobs';
+import { closedReleaseJob, closedReportJob, releaseJob, reportJob } from '../looks/report-jobs';
 import type { Handlers } from './worker';
 
 /** What the ordinary worker does, each queue's work in a file of its own. */
 export const openHandlers: Handlers = {
-	look: lookJob
+	import: importJob,
+	look: lookJob,
+	report: reportJob,
+	release: releaseJob
 };
 
 /** What the look worker does, with the by-arm reader. */
 export const closedHandlers: Handlers = {
-	'by-arm-look': byArmLookJob
+	'by-arm-look': byArmLookJob,
+	'closed-report': closedReportJob,
+	'closed-release': closedReleaseJob
 };
