@@ -77,7 +77,7 @@ describe('invitations', () => {
 		);
 		expect(links).toHaveLength(1);
 		expect(links?.[0].hash).not.toContain(token);
-		expect(mails?.[0]).toMatchObject({ kind: 'invitation', status: 'waiting', facts: {} });
+		expect(mails?.[0]).toMatchObject({ kind: 'invitation', status: 'waiting' });
 		expect(mails?.[0].message_id).toMatch(/^<[0-9a-f-]{36}@heddle\.test>$/);
 		expect(jobs).toEqual([{ data: { mailId: mails?.[0].id } }]);
 	});
