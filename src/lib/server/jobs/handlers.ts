@@ -1,6 +1,8 @@
 import { importJob } from '../imports/job';
 import { byArmLookJob, lookJob } from '../looks/jobs';
 import { closedReleaseJob, closedReportJob, releaseJob, reportJob } from '../looks/report-jobs';
+import { sendMail } from '../mail/send';
+import { sealTrail } from './seal';
 import type { Handlers } from './worker';
 
 /** What the ordinary worker does, each queue's work in a file of its own. */
@@ -8,7 +10,9 @@ export const openHandlers: Handlers = {
 	import: importJob,
 	look: lookJob,
 	report: reportJob,
-	release: releaseJob
+	release: releaseJob,
+	mail: sendMail,
+	seal: sealTrail
 };
 
 /** What the look worker does, with the by-arm reader. */
