@@ -1,7 +1,10 @@
+import { makeAllocationList } from '$lib/domain/randomisation/allocation.commands.server';
 import type { Handlers } from './worker';
 
 /** What the ordinary worker does, each queue's work in a file of its own. */
 export const openHandlers: Handlers = {};
 
 /** What the look worker does, with the by-arm reader. */
-export const closedHandlers: Handlers = {};
+export const closedHandlers: Handlers = {
+	'allocation-list': makeAllocationList
+};
