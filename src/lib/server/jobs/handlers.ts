@@ -1,3 +1,4 @@
+import { makeAllocationList } from '$lib/domain/randomisation/allocation.commands.server';
 import { importJob } from '../imports/job';
 import { byArmLookJob, lookJob } from '../looks/jobs';
 import { closedReleaseJob, closedReportJob, releaseJob, reportJob } from '../looks/report-jobs';
@@ -17,6 +18,7 @@ export const openHandlers: Handlers = {
 
 /** What the look worker does, with the by-arm reader. */
 export const closedHandlers: Handlers = {
+	'allocation-list': makeAllocationList,
 	'by-arm-look': byArmLookJob,
 	'closed-report': closedReportJob,
 	'closed-release': closedReleaseJob
