@@ -17,7 +17,7 @@ import { actorFor } from '../../src/lib/server/auth/actor';
 import { importJob } from '../../src/lib/server/imports/job';
 import type { ExpectedFit, ExpectedValues } from '../../src/lib/stats/reference/load';
 import type { FreshDatabase } from './database';
-import { addPerson, addRole } from './people';
+import { addPerson, addRole, asOwner } from './people';
 
 /** The published data sets and what other programs make of them; src/lib/stats/reference/README.md says where they come from. */
 const reference = (file: string) =>
@@ -128,4 +128,39 @@ export async function importFile(
 ) {
 	const { id } = await checkFile(scene, text, request);
 	return runImport(scene, id);
+}
+
+/**
+ * Allocations as a loaded list would have them, for subjects that came from a file: `armOf` says which of the arms 'a' and
+ * 'b' each is in. Arm a is letter A.
+ */
+export async function allocate(
+	db: FreshDatabase,
+	studyId: string,
+	armOf: (importedAs: string) => 'a' | 'b'
+): Promise<void> {
+	const [subjects = []] = (await db.sql(
+		`select id, imported_as from app.subject where study_id = '${studyId}' order by number`
+	)) as [{ id: string; imported_as: string }[]];
+	await asOwner(db, async (client) => {
+		const listId = newId();
+		await client.query(
+			`insert into closed.allocation_list (id, study_id, seed, block_sizes, method, hash) values ($1, $2, 'seed', '{4}', 'a test', 'none')`,
+			[listId, studyId]
+		);
+		await client.query(
+			`insert into closed.arm_letter (study_id, arm_key, letter) values ($1, 'a', 'A'), ($1, 'b', 'B')`,
+			[studyId]
+		);
+		for (const [at, subject] of subjects.entries())
+			await client.query(
+				`insert into closed.list_position (id, study_id, list_id, stratum, position, arm_key, kit_number, subject_id, used_at)
+				values ($1, $2, $3, '{}', $4, $5, $6, $7, now())`,
+				[newId(), studyId, listId, at + 1, armOf(subject.imported_as), `K${at}`, subject.id]
+			);
+		await client.query(
+			`update app.subject set randomised_at = now(), randomised_on = current_date where study_id = $1`,
+			[studyId]
+		);
+	});
 }
