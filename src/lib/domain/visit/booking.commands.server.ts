@@ -3,11 +3,10 @@ import { Refusal, type RefusalCode } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { change, mustHaveChanged, type Reader, type Writer } from '$lib/server/change';
 import { clock } from '$lib/time/clock';
-import { plainDateOf, shortDateText, type PlainDate } from '$lib/time/dates';
+import { isoWeekday, plainDateOf, shortDateText, type PlainDate } from '$lib/time/dates';
 import { dateInZone, instantFromLocal, localTimeKind } from '$lib/time/zones';
 import { checkOpening, openingText, spanOf, type TimeSpan } from '../schedule/booking';
 import { inWindow } from '../schedule/window';
-import { isoWeekday } from '$lib/time/dates';
 import { staffOn } from './booking.reads.server';
 import { refuseStale, refuseStep } from './steps.server';
 import type { BookVisitInput, CancelAppointmentInput, MoveAppointmentInput } from './visit.input';
@@ -102,7 +101,8 @@ export async function moveAppointment(
 					ends_at: span.end,
 					zone: visit.site.zone,
 					outside_reason: reasonOutside(visit, span, input),
-					calendar_sequence: open.calendar_sequence + 1
+					calendar_sequence: open.calendar_sequence + 1,
+					changed_at: clock.now()
 				})
 				.where('id', '=', open.id)
 				.where('version', '=', version)
@@ -189,7 +189,11 @@ async function openAppointment(reader: Reader, visitId: string): Promise<OpenApp
 export async function closeAppointment(writer: Writer, open: OpenAppointment): Promise<number> {
 	const changed = await writer
 		.updateTable('appointment')
-		.set({ status: 'cancelled', calendar_sequence: open.calendar_sequence + 1 })
+		.set({
+			status: 'cancelled',
+			calendar_sequence: open.calendar_sequence + 1,
+			changed_at: clock.now()
+		})
 		.where('id', '=', open.id)
 		.where('version', '=', open.version)
 		.returning('version')
