@@ -156,7 +156,7 @@ export function aldermere(today: PlainDate, subjects = 240, seed = 20_260_609): 
 			sex: female ? 'female' : 'male',
 			birthDate: addDays(enrolsOn, -Math.round(365.25 * clamp(draw.normal(58, 10), 32, 79))),
 			name: `${draw.pick(givenNames)} ${draw.pick(familyNames)}`,
-			email: draw.happens(0.7),
+			email: draw.happens(0.25),
 			egfr: clamp(draw.normal(48, 9), 27, 73),
 			slope: draw.normal(-4.2, 1.6),
 			systolic: draw.normal(136, 11),
