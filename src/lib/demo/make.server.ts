@@ -280,7 +280,7 @@ export async function makeDemo(sides: Sides, tell: Tell): Promise<DemoAccount[]>
 	const ids = await people();
 	const administrator = await acting(id(ids, 'admin'));
 	const deputy = await acting(id(ids, 'deputy'));
-	await give(administrator, deputy, id(ids, 'deputy'), 'administrator').catch(() => {});
+	await give(administrator, deputy, id(ids, 'deputy'), 'administrator');
 	await give(administrator, deputy, id(ids, 'data'), 'data_manager');
 	tell(0.04, 'Setting Aldermere up');
 	const studyId = await trial(ids, sides, now, today, tell);
