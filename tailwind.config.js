@@ -1,8 +1,28 @@
 /** Natural-dye tokens: each name is a role, its value a custom property set in src/app.css for light and dark. */
 const token = (name) => `var(--${name})`;
 const tokens = [
-	'ground', 'sheet', 'wash', 'rule', 'rule-strong', 'ink', 'muted', 'act', 'act-soft', 'on-act', 'kept', 'kept-soft',
-	'soon', 'soon-fill', 'soon-soft', 'lost', 'lost-soft', 'off', 'off-soft', 'arm-a', 'arm-b', 'arm-c'
+	'ground',
+	'sheet',
+	'wash',
+	'rule',
+	'rule-strong',
+	'ink',
+	'muted',
+	'act',
+	'act-soft',
+	'on-act',
+	'kept',
+	'kept-soft',
+	'soon',
+	'soon-fill',
+	'soon-soft',
+	'lost',
+	'lost-soft',
+	'off',
+	'off-soft',
+	'arm-a',
+	'arm-b',
+	'arm-c'
 ];
 
 export default {

@@ -70,9 +70,23 @@ export default defineConfig(({ mode }) =>
 								include: ['src/**/*.svelte.test.ts']
 							}
 						},
-						{ extends: true, test: { name: 'db', include: ['tests/db/**/*.test.ts'], ...database } },
-						{ extends: true, test: { name: 'http', include: ['tests/http/**/*.test.ts'], ...database } },
-						{ extends: true, test: { name: 'proof', include: ['tests/proof/**/*.test.ts'], ...database, testTimeout: 1_800_000 } }
+						{
+							extends: true,
+							test: { name: 'db', include: ['tests/db/**/*.test.ts'], ...database }
+						},
+						{
+							extends: true,
+							test: { name: 'http', include: ['tests/http/**/*.test.ts'], ...database }
+						},
+						{
+							extends: true,
+							test: {
+								name: 'proof',
+								include: ['tests/proof/**/*.test.ts'],
+								...database,
+								testTimeout: 1_800_000
+							}
+						}
 					]
 				}
 			}

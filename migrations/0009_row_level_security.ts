@@ -6,12 +6,33 @@ import { sql, type Kysely } from 'kysely';
  * and the closed schema's functions, which check for themselves.
  */
 const byStudy = [
-	'protocol_version', 'planned_visit', 'measure', 'planned_measure', 'consent_version', 'import_batch', 'cut',
-	'monitoring_plan', 'look', 'report', 'release', 'download', 'recommendation', 'allocation_record'
+	'protocol_version',
+	'planned_visit',
+	'measure',
+	'planned_measure',
+	'consent_version',
+	'import_batch',
+	'cut',
+	'monitoring_plan',
+	'look',
+	'report',
+	'release',
+	'download',
+	'recommendation',
+	'allocation_record'
 ];
 const bySite = [
-	'room', 'subject', 'contact_details', 'screening', 'consent', 'study_exit', 'visit', 'appointment', 'contact_attempt',
-	'deviation', 'measurement'
+	'room',
+	'subject',
+	'contact_details',
+	'screening',
+	'consent',
+	'study_exit',
+	'visit',
+	'appointment',
+	'contact_attempt',
+	'deviation',
+	'measurement'
 ];
 
 export async function up(db: Kysely<unknown>): Promise<void> {

@@ -12,6 +12,8 @@ const own = {
 		'OIDC_CLIENT_ID',
 		'OIDC_CLIENT_SECRET',
 		'STORAGE_DIR',
+		// Ciphertext only: the web process hands a released copy on, with a key it is given for that one file.
+		'CLOSED_STORAGE_DIR',
 		'S3_ENDPOINT',
 		'S3_BUCKET',
 		'S3_REGION',
@@ -22,7 +24,7 @@ const own = {
 		'TRAINING_BANNER'
 	],
 	owner: ['DATABASE_OWNER_URL'],
-	closed: ['DATABASE_UNMASKED_URL', 'CLOSED_KEY', 'CLOSED_STORAGE_DIR'],
+	closed: ['DATABASE_UNMASKED_URL', 'CLOSED_KEY'],
 	/** Held by the backup commands alone. */
 	backup: ['BACKUP_DATABASE_URL', 'RESTORE_DATABASE_URL']
 };

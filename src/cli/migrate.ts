@@ -1,8 +1,8 @@
 import { migrationConfig } from '$lib/server/config';
-import { migrateToLatest } from '$lib/server/db/migrate';
+import { install } from '$lib/server/db/install';
 
 try {
-	const applied = await migrateToLatest(migrationConfig().ownerUrl);
+	const applied = await install(migrationConfig().ownerUrl);
 	for (const name of applied) console.log(`applied ${name}`);
 	if (applied.length === 0) console.log('up to date');
 } catch (error) {

@@ -38,6 +38,7 @@ const general = z
 		OIDC_CLIENT_ID: z.string().optional(),
 		OIDC_CLIENT_SECRET: z.string().optional(),
 		STORAGE_DIR: z.string().optional(),
+		CLOSED_STORAGE_DIR: z.string().optional(),
 		S3_ENDPOINT: httpUrl.optional(),
 		S3_BUCKET: z.string().optional(),
 		S3_REGION: z.string().default('us-east-1'),
@@ -89,6 +90,8 @@ const general = z
 					secretKey: env.S3_SECRET_KEY ?? ''
 				}
 			: { kind: 'folder' as const, folder: env.STORAGE_DIR ?? '' },
+		/** Holds ciphertext only; the keys stand in the closed schema. */
+		closedFolder: env.CLOSED_STORAGE_DIR ?? null,
 		logLevel: env.LOG_LEVEL,
 		idleMinutes: env.IDLE_MINUTES,
 		trainingBanner: env.TRAINING_BANNER ?? null

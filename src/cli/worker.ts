@@ -1,0 +1,9 @@
+import { config } from '$lib/server/config';
+import { openHandlers } from '$lib/server/jobs/handlers';
+import { startWorker } from '$lib/server/jobs/worker';
+import { stopOnSignal } from '$lib/server/jobs/stop';
+
+/** The ordinary worker: mail, imports, masked fits, open reports, sealing. It holds nothing closed. */
+const worker = await startWorker(config().databaseUrl, openHandlers, { seal: '* * * * *' });
+stopOnSignal(worker);
+console.log('ready');

@@ -1,0 +1,295 @@
+import { z } from 'zod';
+import { analyteKeys } from '../../units/convert';
+import { unitCodes, type UnitCode } from '../../units/units';
+import { isPlainDate } from '../../time/dates';
+import { isZone, minutesOfTime } from '../../time/zones';
+import { formulaKeys } from '../measurement/formulas';
+
+/**
+ * A study as its protocol version says it. Keys are short stable words that stay the same from one version to the
+ * next; names are what people read and may be reworded. Block sizes and seeds are not here: everyone at a site
+ * may read a definition.
+ */
+
+const hasControl = (text: string) =>
+	[...text].some(
+		(character) => character < ' ' || (character >= '\u007f' && character <= '\u009f')
+	);
+
+const line = (most: number) =>
+	z
+		.string()
+		.trim()
+		.min(1, 'Give some text.')
+		.max(most, `Use at most ${most} characters.`)
+		.refine((text) => !hasControl(text), 'Use one line of plain text.');
+
+export const keySchema = z
+	.string()
+	.max(40, 'Use at most 40 characters.')
+	.regex(
+		/^[a-z][a-z0-9]*(-[a-z0-9]+)*$/,
+		'Use lower-case letters, digits and single hyphens, starting with a letter.'
+	)
+	.meta({ description: 'A short stable word: lower-case letters, digits, single hyphens.' });
+
+const plainDate = z
+	.string()
+	.refine(isPlainDate, 'Give a day that exists, as year-month-day: 2026-06-09.')
+	.meta({ format: 'date' });
+
+const unit = z.enum(unitCodes).meta({ description: 'UCUM code of a unit that Heddle knows.' });
+const finite = z.number().refine(Number.isFinite, 'Give a number.');
+const whole = (least: number, most: number) =>
+	z
+		.number()
+		.int('Give a whole number.')
+		.min(least, `Give a number from ${least} to ${most}.`)
+		.max(most, `Give a number from ${least} to ${most}.`);
+
+const amount = z.strictObject({
+	amount: whole(-1200, 1200),
+	unit: z.enum(['day', 'week', 'month'])
+});
+const width = z.strictObject({ amount: whole(0, 366), unit: z.enum(['day', 'week', 'month']) });
+
+const arm = z.strictObject({ key: keySchema, name: line(100), ratio: whole(1, 10) });
+
+const named = z.strictObject({ key: keySchema, name: line(200) });
+
+const stratum = z.strictObject({
+	key: keySchema,
+	name: line(100),
+	levels: z.array(named).min(2).max(20)
+});
+
+const time = z
+	.string()
+	.refine((text) => minutesOfTime(text) !== null, 'Give a time on a 24-hour clock: 09:30.');
+
+const site = z.strictObject({
+	code: z.string().regex(/^\d{2}$/, 'A site code has two digits: 02.'),
+	name: line(100),
+	zone: z
+		.string()
+		.refine(isZone, 'Give a time zone by its name: Europe/Berlin.')
+		.meta({ description: 'IANA time zone name.' }),
+	openingHours: z
+		.array(z.strictObject({ weekday: whole(1, 7), opens: time, closes: time }))
+		.max(50)
+		.meta({ description: 'Weekday 1 is Monday. Times are those of the site’s own zone.' }),
+	rooms: z.array(named).max(100)
+});
+
+const characteristic = z.discriminatedUnion('kind', [
+	z.strictObject({
+		key: keySchema,
+		name: line(100),
+		kind: z.literal('choice'),
+		choices: z.array(named).min(2).max(50)
+	}),
+	z.strictObject({
+		key: keySchema,
+		name: line(100),
+		kind: z.literal('number'),
+		unit,
+		decimals: whole(0, 6)
+	}),
+	z.strictObject({ key: keySchema, name: line(100), kind: z.literal('birth-date') })
+]);
+
+const anchor = z
+	.string()
+	.regex(
+		/^(enrolment|randomisation|visit:[a-z][a-z0-9]*(-[a-z0-9]+)*)$/,
+		'Count from “enrolment”, “randomisation” or “visit:” with the key of another visit.'
+	)
+	.meta({ description: 'enrolment, randomisation, or visit:<key of another visit>' });
+
+const visit = z.strictObject({
+	key: keySchema,
+	name: line(100),
+	anchor,
+	target: amount.meta({
+		description:
+			'Distance from the anchor. Months lead to the same day of a later month, or to that month’s last day.'
+	}),
+	before: width,
+	after: width,
+	order: whole(0, 999),
+	lengthMinutes: whole(5, 1440)
+});
+
+const common = {
+	key: keySchema,
+	name: line(100),
+	showLast: z
+		.enum(['before', 'after', 'never'])
+		.meta({ description: 'Whether the last value is shown before entry, only after it, or never.' })
+};
+const notDoneReasons = z.array(line(100)).min(1).max(20);
+
+const limits = {
+	unit,
+	decimals: whole(0, 6),
+	alsoIn: z
+		.array(unit)
+		.max(5)
+		.optional()
+		.meta({ description: 'Other units a value may be entered in.' }),
+	analyte: z
+		.enum(analyteKeys)
+		.optional()
+		.meta({ description: 'Needed where mass turns into moles.' }),
+	hardLow: finite.optional(),
+	hardHigh: finite.optional(),
+	softLow: finite.optional(),
+	softHigh: finite.optional(),
+	softChange: z
+		.strictObject({
+			from: z.enum(['last', 'baseline']),
+			by: z.enum(['percent', 'amount']),
+			size: z.number().positive('Give a number above zero.')
+		})
+		.optional()
+		.meta({ description: 'A change larger than this asks for a second look.' }),
+	limitsSource: line(200).optional()
+};
+
+const measure = z.discriminatedUnion('kind', [
+	z.strictObject({ ...common, kind: z.literal('number'), ...limits, notDoneReasons }),
+	z.strictObject({
+		...common,
+		kind: z.literal('repeated'),
+		...limits,
+		notDoneReasons,
+		readings: whole(2, 10),
+		readingsNeeded: whole(1, 10),
+		summary: z.enum(['mean', 'mean-without-first', 'median', 'last']),
+		summaryDecimals: whole(0, 6)
+	}),
+	z.strictObject({
+		...common,
+		kind: z.literal('choice'),
+		choices: z.array(named).min(2).max(50),
+		notDoneReasons
+	}),
+	z.strictObject({ ...common, kind: z.literal('date'), future: z.boolean(), notDoneReasons }),
+	z.strictObject({ ...common, kind: z.literal('text'), maxLength: whole(1, 4000), notDoneReasons }),
+	z.strictObject({
+		...common,
+		kind: z.literal('derived'),
+		unit,
+		decimals: whole(0, 6),
+		derivedBy: z.strictObject({
+			formula: z.enum(formulaKeys),
+			inputs: z
+				.record(
+					keySchema,
+					z
+						.string()
+						.regex(
+							/^(measure|characteristic|age):[a-z][a-z0-9]*(-[a-z0-9]+)*$/,
+							'Name the input as measure:…, characteristic:… or age:… with its key.'
+						)
+				)
+				.meta({
+					description:
+						'From the formula’s input names to measure:<key>, characteristic:<key> or age:<key of a birth date>.'
+				})
+		})
+	})
+]);
+
+export const studyDefinition = z
+	.strictObject({
+		format: z.literal('heddle.study/1'),
+		code: z
+			.string()
+			.regex(
+				/^[A-Z0-9][A-Z0-9-]{1,19}$/,
+				'A study code has 2 to 20 capital letters, digits and hyphens.'
+			),
+		name: line(200),
+		masked: z
+			.boolean()
+			.meta({ description: 'Whether the arms are kept from everyone at the sites.' }),
+		plannedSubjects: whole(1, 100_000).optional(),
+		arms: z.array(arm).max(8),
+		strata: z.array(stratum).max(4),
+		stratifyBySite: z.boolean(),
+		sites: z.array(site).max(99),
+		characteristics: z
+			.array(characteristic)
+			.max(20)
+			.meta({ description: 'What is known of a subject once, at enrolment.' }),
+		visits: z.array(visit).min(1).max(100),
+		measures: z.array(measure).min(1).max(200),
+		comparisons: z
+			.array(z.strictObject({ lower: keySchema, higher: keySchema }))
+			.max(20)
+			.meta({ description: 'Pairs of measures of which the first must be below the second.' }),
+		schedule: z
+			.record(keySchema, z.array(keySchema).max(200))
+			.meta({ description: 'From each visit’s key to the keys of the measures taken there.' }),
+		baselineVisit: keySchema,
+		primaryMeasure: keySchema,
+		timeUnit: z
+			.enum(['day', 'month', 'year'])
+			.meta({ description: 'Unit of time in the analysis.' }),
+		consentVersions: z
+			.array(z.strictObject({ version: line(20), name: line(200), from: plainDate }))
+			.max(50),
+		eligibility: z
+			.array(
+				z.strictObject({
+					key: keySchema,
+					kind: z.enum(['inclusion', 'exclusion']),
+					text: line(1000)
+				})
+			)
+			.max(100)
+	})
+	.meta({
+		id: 'heddle.study/1',
+		title: 'Heddle study definition',
+		description: 'Arms, sites, visits, measures and the schedule of activities of one study.'
+	});
+
+export type StudyDefinition = z.infer<typeof studyDefinition>;
+export type Arm = StudyDefinition['arms'][number];
+export type Stratum = StudyDefinition['strata'][number];
+export type SiteDefinition = StudyDefinition['sites'][number];
+export type OpeningHours = SiteDefinition['openingHours'][number];
+export type Characteristic = StudyDefinition['characteristics'][number];
+export type PlannedVisit = StudyDefinition['visits'][number];
+export type VisitOffset = PlannedVisit['target'];
+export type Measure = StudyDefinition['measures'][number];
+export type NumberMeasure = Extract<Measure, { kind: 'number' | 'repeated' }>;
+export type DerivedMeasure = Extract<Measure, { kind: 'derived' }>;
+
+/** Unit of the measure's values, or null where there are no numbers. */
+export function unitOfMeasure(measure: Measure): UnitCode | null {
+	return 'unit' in measure ? measure.unit : null;
+}
+
+/** Decimals of the value that is kept for a measure (of the summary, where there are several readings). */
+export function decimalsOfMeasure(measure: Measure): number {
+	if (measure.kind === 'repeated') return measure.summaryDecimals;
+	return 'decimals' in measure ? measure.decimals : 0;
+}
+
+/** Measures taken at a visit, in the order of the schedule. */
+export function measuresAt(definition: StudyDefinition, visitKey: string): Measure[] {
+	const byKey = new Map(definition.measures.map((each) => [each.key, each]));
+	return (definition.schedule[visitKey] ?? []).flatMap((key) => byKey.get(key) ?? []);
+}
+
+export function isRandomised(definition: StudyDefinition): boolean {
+	return definition.arms.length >= 2;
+}
+
+/** The definition as JSON Schema, for people who write one by hand. Rules across fields are not in it. */
+export function definitionJsonSchema(): Record<string, unknown> {
+	return z.toJSONSchema(studyDefinition, { target: 'draft-2020-12', io: 'input' });
+}

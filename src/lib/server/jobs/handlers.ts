@@ -1,0 +1,7 @@
+import type { Handlers } from './worker';
+
+/** What the ordinary worker does, each queue's work in a file of its own. */
+export const openHandlers: Handlers = {};
+
+/** What the look worker does, with the by-arm reader. */
+export const closedHandlers: Handlers = {};

@@ -1,0 +1,103 @@
+import type { QueryExecutorProvider } from 'kysely';
+import { CompiledQuery } from 'kysely';
+import PgBoss from 'pg-boss';
+import { database } from '../db/db';
+
+/**
+ * The queues and what each job carries: ids only, never data. The owner makes the queues when migrating; the
+ * application may fill and empty them.
+ */
+export interface QueuePayloads {
+	mail: { mailId: string };
+	import: { batchId: string; jobRunId: string; dryRun: boolean };
+	look: { lookId: string; jobRunId: string };
+	report: { reportId: string; jobRunId: string };
+	release: { releaseId: string };
+	/** For the look worker alone. */
+	'allocation-list': { studyId: string; askedBy: string; jobRunId: string };
+	'by-arm-look': { lookId: string; jobRunId: string };
+	'closed-report': { reportId: string; jobRunId: string };
+	'closed-release': { releaseId: string };
+	/** Seals the audit trail; scheduled. */
+	seal: Record<string, never>;
+}
+export type QueueName = keyof QueuePayloads;
+
+const retry = { retryLimit: 5, retryDelay: 5, retryBackoff: true } as const;
+const once = { retryLimit: 0 } as const;
+
+export const queueSettings: Record<
+	QueueName,
+	{ retryLimit: number; retryDelay?: number; retryBackoff?: boolean }
+> = {
+	mail: { ...retry, retryLimit: 8 },
+	import: once,
+	look: { ...retry, retryLimit: 2 },
+	report: { ...retry, retryLimit: 2 },
+	release: retry,
+	'allocation-list': { ...retry, retryLimit: 2 },
+	'by-arm-look': { ...retry, retryLimit: 2 },
+	'closed-report': { ...retry, retryLimit: 2 },
+	'closed-release': retry,
+	seal: once
+};
+
+/** Makes the queue's tables and queues, as the owner. */
+export async function installQueues(ownerUrl: string): Promise<void> {
+	const boss = new PgBoss({
+		connectionString: ownerUrl,
+		schema: 'queue',
+		supervise: false,
+		schedule: false,
+		max: 2
+	});
+	boss.on('error', () => {});
+	await boss.start();
+	for (const [name, settings] of Object.entries(queueSettings)) {
+		if (await boss.getQueue(name))
+			await boss.updateQueue(name, { name, policy: 'standard', ...settings });
+		else await boss.createQueue(name, { name, policy: 'standard', ...settings });
+	}
+	await boss.stop({ graceful: false, wait: true });
+}
+
+let sender: Promise<PgBoss> | undefined;
+
+/** One for the process; it only sends. */
+function sending(): Promise<PgBoss> {
+	sender ??= (async () => {
+		const { pool } = database();
+		const boss = new PgBoss({
+			db: { executeSql: (text, values) => pool.query(text, values as unknown[]) },
+			schema: 'queue',
+			migrate: false,
+			supervise: false,
+			schedule: false
+		});
+		boss.on('error', () => {});
+		await boss.start();
+		return boss;
+	})();
+	return sender;
+}
+
+/** Forgets the sender: for tests that change databases. */
+export function forgetSender(): void {
+	sender = undefined;
+}
+
+/** Adds a job in the given transaction. */
+export async function enqueue<Q extends QueueName>(
+	on: QueryExecutorProvider,
+	queue: Q,
+	payload: QueuePayloads[Q]
+): Promise<void> {
+	const boss = await sending();
+	const executor = on.getExecutor();
+	await boss.send(queue, payload, {
+		db: {
+			executeSql: async (text: string, values: unknown[]) =>
+				executor.executeQuery(CompiledQuery.raw(text, values)) as never
+		}
+	});
+}

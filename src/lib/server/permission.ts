@@ -1,0 +1,104 @@
+import type { Grant, Role } from '$lib/domain/person/roles';
+
+/**
+ * The one table of who may do what. What it does not mention is "no". Site roles act at their sites, study roles in
+ * their study; an administrator manages accounts and by that alone sees no study data.
+ */
+const table = {
+	'person.manage': ['administrator'],
+	'role.grant': ['administrator'],
+	'job.read': ['administrator'],
+	'security.read': ['administrator'],
+
+	'study.create': ['data_manager'],
+	'study.read': [
+		'data_manager',
+		'coordinator',
+		'nurse',
+		'investigator',
+		'monitor',
+		'auditor',
+		'statistician',
+		'independent_statistician'
+	],
+	'study.enter': [
+		'data_manager',
+		'coordinator',
+		'nurse',
+		'investigator',
+		'monitor',
+		'auditor',
+		'statistician',
+		'independent_statistician',
+		'board_member'
+	],
+	'study.edit': ['data_manager'],
+	'study.publish': ['data_manager'],
+	'import.run': ['data_manager'],
+
+	'subject.read': ['data_manager', 'coordinator', 'nurse', 'investigator', 'monitor', 'auditor'],
+	'contact.read': ['coordinator', 'investigator'],
+	'contact.edit': ['coordinator'],
+	'screening.edit': ['coordinator', 'investigator'],
+	'consent.record': ['coordinator', 'investigator'],
+	'subject.enrol': ['coordinator', 'investigator'],
+	'subject.randomise': ['coordinator', 'investigator'],
+	'subject.exit': ['coordinator', 'investigator'],
+
+	'visit.book': ['coordinator'],
+	'visit.chase': ['coordinator'],
+	'visit.measure': ['nurse', 'investigator'],
+	'feed.own': ['coordinator', 'nurse', 'investigator'],
+
+	'cut.make': ['data_manager', 'statistician'],
+	'cut.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],
+	'plan.sign': ['statistician'],
+	'look.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],
+	'look.pooled': ['statistician', 'independent_statistician'],
+	'look.by-arm': ['independent_statistician'],
+	'allocation.make': ['independent_statistician'],
+
+	'report.make': ['statistician', 'independent_statistician'],
+	'report.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],
+	'report.release': ['statistician', 'independent_statistician'],
+	'report.approve-release': ['data_manager', 'independent_statistician'],
+	'board.read': ['board_member', 'independent_statistician', 'statistician', 'data_manager'],
+	'board.download': ['board_member'],
+	'board.recommend': ['board_member'],
+
+	'audit.read': ['auditor', 'monitor', 'data_manager'],
+	'audit.export': ['auditor']
+} satisfies Record<string, readonly Role[]>;
+
+export type Capability = keyof typeof table;
+
+export const capabilities = Object.keys(table) as Capability[];
+
+export interface Scope {
+	studyId?: string | null;
+	siteId?: string | null;
+}
+
+export const rolesFor = (capability: Capability): readonly Role[] => table[capability];
+
+function covers(grant: Grant, scope: Scope): boolean {
+	if (scope.studyId && grant.studyId !== null && grant.studyId !== scope.studyId) return false;
+	// A question about the whole study is not answered by a role at one site, unless no site is named.
+	if (scope.siteId && grant.siteId !== null && grant.siteId !== scope.siteId) return false;
+	// Creating studies and managing accounts are installation-wide: only a grant without a study allows them.
+	if (!scope.studyId && grant.studyId !== null) return false;
+	return true;
+}
+
+/** The role by which these grants allow the capability in this scope; null when they do not. */
+export function roleAllowing(
+	grants: readonly Grant[],
+	capability: Capability,
+	scope: Scope
+): Role | null {
+	const allowed: readonly Role[] = table[capability];
+	return grants.find((grant) => allowed.includes(grant.role) && covers(grant, scope))?.role ?? null;
+}
+
+export const may = (grants: readonly Grant[], capability: Capability, scope: Scope): boolean =>
+	roleAllowing(grants, capability, scope) !== null;

@@ -1,0 +1,15 @@
+import type { RouteTable } from './table';
+
+/** Accounts, roles, jobs, the audit trail. */
+export const peopleRoutes: RouteTable = {
+	'/(public)/invitation/[token]': { GET: 'public', POST: 'public' },
+	'/(public)/forgotten': { GET: 'public', POST: 'public' },
+	'/(public)/reset/[token]': { GET: 'public', POST: 'public' },
+	'/(public)/set-up/[token]': { GET: 'public', POST: 'public' },
+	'/(app)/account': { GET: 'signed-in', POST: 'signed-in' },
+	'/(app)/people': { GET: 'person.manage', POST: 'person.manage' },
+	'/(app)/people/[person=id]': { GET: 'person.manage', POST: 'role.grant' },
+	'/(app)/jobs': { GET: 'job.read', POST: 'job.read' },
+	'/(app)/studies/[study=id]/audit': { GET: 'audit.read' },
+	'/(app)/studies/[study=id]/audit/export.csv': { GET: 'audit.export' }
+};

@@ -1,0 +1,19 @@
+import { createCipheriv, createDecipheriv, createHash, randomBytes } from 'node:crypto';
+import { config } from './config';
+
+/** A token as the database keeps it: its hash alone. */
+export const tokenHash = (token: string): Buffer => createHash('sha256').update(token).digest();
+
+/** Text that must be sent later and may not lie open meanwhile (a link in a waiting mail). */
+export function wrap(text: string): Buffer {
+	const nonce = randomBytes(12);
+	const cipher = createCipheriv('aes-256-gcm', config().key, nonce);
+	const body = Buffer.concat([cipher.update(text, 'utf8'), cipher.final()]);
+	return Buffer.concat([nonce, cipher.getAuthTag(), body]);
+}
+
+export function unwrap(wrapped: Buffer): string {
+	const decipher = createDecipheriv('aes-256-gcm', config().key, wrapped.subarray(0, 12));
+	decipher.setAuthTag(wrapped.subarray(12, 28));
+	return Buffer.concat([decipher.update(wrapped.subarray(28)), decipher.final()]).toString('utf8');
+}
