@@ -10,6 +10,7 @@ import { confirmGrant, grantRole } from '$lib/domain/person/grant.commands.serve
 import { invitePerson } from '$lib/domain/person/person.commands.server';
 import type { Role } from '$lib/domain/person/roles';
 import { clock } from '$lib/time/clock';
+import { plainDateOf } from '$lib/time/dates';
 import { config } from '$lib/server/config';
 
 /** Sets the clock for what follows; each act of the demo happens when it says it does. */
@@ -52,7 +53,7 @@ export async function give(
 		role,
 		studyId,
 		siteId,
-		validFrom: clock.now().toISOString().slice(0, 10),
+		validFrom: plainDateOf(clock.now().toISOString().slice(0, 10)),
 		validTo: ''
 	});
 	if (role === 'independent_statistician' || role === 'board_member')

@@ -1,9 +1,13 @@
 import { byArmLookJob, lookJob } from '../looks/jobs';
+import { sendMail } from '../mail/send';
+import { sealTrail } from './seal';
 import type { Handlers } from './worker';
 
 /** What the ordinary worker does, each queue's work in a file of its own. */
 export const openHandlers: Handlers = {
-	look: lookJob
+	look: lookJob,
+	mail: sendMail,
+	seal: sealTrail
 };
 
 /** What the look worker does, with the by-arm reader. */
