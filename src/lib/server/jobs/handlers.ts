@@ -1,3 +1,4 @@
+import { makeAllocationList } from '$lib/domain/randomisation/allocation.commands.server';
 import { byArmLookJob, lookJob } from '../looks/jobs';
 import { sendMail } from '../mail/send';
 import { sealTrail } from './seal';
@@ -12,5 +13,6 @@ export const openHandlers: Handlers = {
 
 /** What the look worker does, with the by-arm reader. */
 export const closedHandlers: Handlers = {
+	'allocation-list': makeAllocationList,
 	'by-arm-look': byArmLookJob
 };
