@@ -311,6 +311,7 @@ interface PersonRoleTable {
 	granted_at: Generated<Timestamp>;
 	confirmed_by: string | null;
 	confirmed_at: Timestamp | null;
+	ended_at: Timestamp | null;
 	version: Generated<number>;
 }
 

@@ -10,6 +10,9 @@ export const peopleRoutes: RouteTable = {
 	'/(app)/people': { GET: 'person.manage', POST: 'person.manage' },
 	'/(app)/people/[person=id]': { GET: 'person.manage', POST: 'role.grant' },
 	'/(app)/jobs': { GET: 'job.read', POST: 'job.read' },
+	'/api/jobs': { GET: 'job.read' },
+	'/api/jobs/[job=id]': { GET: 'signed-in' },
+	'/api/jobs/[job=id]/cancel': { POST: 'signed-in' },
 	'/(app)/studies/[study=id]/audit': { GET: 'audit.read' },
 	'/(app)/studies/[study=id]/audit/export.csv': { GET: 'audit.export' }
 };
