@@ -2,6 +2,7 @@ import { newId } from '$lib/id';
 import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { change, type Writer } from '$lib/server/change';
+import { closeAppointment, findOpenAppointment } from '../visit/booking.commands.server';
 import { endsVisits } from './exit';
 import { getSite, siteOf } from './site.reads.server';
 import type { ExitInput } from './subject.input';
@@ -26,7 +27,7 @@ export async function recordExit(
 		{ studyId, siteId },
 		async (writer) => {
 			const site = await getSite(writer, studyId, siteId);
-			// Held so that nobody is randomised while he leaves.
+			// Held so that nobody is randomised meanwhile.
 			const subject = await writer
 				.selectFrom('subject')
 				.select(['id', 'enrolled_on'])
@@ -97,7 +98,7 @@ async function mustFollow(
 			.executeTakeFirst();
 		if (!tried)
 			throw new Refusal('RULE', {
-				why: 'Somebody is lost to follow-up after attempts to reach him: log those first.'
+				why: 'Somebody is lost to follow-up after attempts to reach them: log those first.'
 			});
 	}
 	if (input.kind === 'completed') {
@@ -132,5 +133,9 @@ async function endVisits(
 		.where('latest', '>=', on)
 		.returning('id')
 		.execute();
+	for (const visit of ended) {
+		const booked = await findOpenAppointment(writer, visit.id);
+		if (booked) await closeAppointment(writer, booked);
+	}
 	return ended.length;
 }

@@ -7,7 +7,6 @@ import { may } from '$lib/server/permission';
 import { getPublished } from '../study/study.reads.server';
 import { isRandomised } from '../study/definition';
 import { standing, type Answers } from './eligibility';
-import { endsVisits } from './exit';
 import { mostSubjectsPerSite, subjectNumber } from './number';
 import { characteristicsOf, stratumOf } from './particulars';
 import { planSubjectVisits } from './plan-visits.server';
@@ -203,7 +202,7 @@ export async function randomiseSubject(
 			.where('study_id', '=', studyId)
 			.where('subject_id', '=', subjectId)
 			.execute();
-		if (exits.some((exit) => endsVisits(exit.kind))) throw new Refusal('LEFT_STUDY');
+		if (exits.length > 0) throw new Refusal('LEFT_STUDY');
 		const { rows } = await sql<{
 			kit: string;
 		}>`select closed.allocate(${subjectId}::uuid) as kit`.execute(writer);

@@ -1,3 +1,4 @@
+import { makeAllocationList } from '$lib/domain/randomisation/allocation.commands.server';
 import { sendMail } from '../mail/send';
 import { sealTrail } from './seal';
 import type { Handlers } from './worker';
@@ -9,4 +10,6 @@ export const openHandlers: Handlers = {
 };
 
 /** What the look worker does, with the by-arm reader. */
-export const closedHandlers: Handlers = {};
+export const closedHandlers: Handlers = {
+	'allocation-list': makeAllocationList
+};
