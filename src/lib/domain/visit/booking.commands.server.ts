@@ -7,6 +7,7 @@ import { isoWeekday, plainDateOf, shortDateText, type PlainDate } from '$lib/tim
 import { dateInZone, instantFromLocal, localTimeKind } from '$lib/time/zones';
 import { checkOpening, openingText, spanOf, type TimeSpan } from '../schedule/booking';
 import { inWindow } from '../schedule/window';
+import { takeTurn } from '../subject/screening.commands.server';
 import { staffOn } from './booking.reads.server';
 import { refuseStale, refuseStep } from './steps.server';
 import type { BookVisitInput, CancelAppointmentInput, MoveAppointmentInput } from './visit.input';
@@ -204,7 +205,7 @@ export async function closeAppointment(writer: Writer, open: OpenAppointment): P
 
 /** The span the form means, once everything but who else is there at the time has been checked. */
 async function checkPlace(
-	reader: Reader,
+	writer: Writer,
 	visit: VisitRow,
 	input: BookVisitInput
 ): Promise<TimeSpan> {
@@ -232,7 +233,9 @@ async function checkPlace(
 		const sentence = new Refusal('OUTSIDE_WINDOW', facts).message;
 		throw new Refusal('OUTSIDE_WINDOW', facts, { outsideReason: sentence });
 	}
-	await checkRoomAndStaff(reader, visit, input, date);
+	await checkRoomAndStaff(writer, visit, input, date);
+	// One at a time at a site: two that meet would otherwise wait for each other. The constraints still decide.
+	await takeTurn(writer, 'booking', visit.site.id);
 	return span;
 }
 
