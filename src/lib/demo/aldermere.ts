@@ -118,7 +118,7 @@ function visitStory(draw: Chance, number: number): StoryVisit {
 	// The first visit is the day of enrolment; later ones are missed or late now and then.
 	const u = draw.next();
 	const fate: Fate =
-		number === 0 ? 'kept' : u < 0.05 ? 'missed' : u < 0.095 ? 'late' : u < 0.105 ? 'early' : 'kept';
+		number === 0 ? 'kept' : u < 0.07 ? 'missed' : u < 0.115 ? 'late' : u < 0.125 ? 'early' : 'kept';
 	return {
 		fate,
 		place: Math.max(-0.95, Math.min(0.95, draw.normal(0.05, 0.45))),

@@ -384,7 +384,7 @@ export class Trial {
 			});
 		call(addDays(visit.latest, -2), 'no answer', 'Call again in the evening.');
 		call(addDays(visit.latest, 3), 'message left', 'Wait for the call back.');
-		this.diary.add(this.local(subject.site, addDays(visit.latest, 9), '10:05'), async () => {
+		this.diary.add(this.local(subject.site, addDays(visit.latest, 18), '10:05'), async () => {
 			await declareMissed(coordinator, studyId, visit.id, visit.version, {
 				reason: 'Could not be reached before the window closed.'
 			});
