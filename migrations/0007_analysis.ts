@@ -45,6 +45,12 @@ create table app.mail (
 create index mail_subject on app.mail (subject_id, created_at) where subject_id is not null;
 create index mail_waiting on app.mail (created_at) where status in ('waiting', 'sending');
 
+-- How many mails are in which state, for the administrator, who may not see whom they go to.
+create function app.mail_state() returns table (status text, mails bigint)
+language sql stable security definer set search_path = pg_catalog as $$
+	select m.status, count(*) from app.mail m where app.has_role(array['administrator'], null, null) group by m.status
+$$;
+
 create table app.feed (
 	id uuid primary key,
 	person_id uuid not null references app.person (id),

@@ -1,31 +1,24 @@
-import { linkHours } from '$lib/domain/person/link-hours';
-import { addHours, instantText } from '$lib/time/zones';
+import { z } from 'zod';
 import { unwrap } from '../secret';
 import type { ContentMaker } from './content';
 import { renderMail } from './render';
 
+const facts = z.object({ expires: z.string() });
+
 /** To the account itself; somebody switched off meanwhile gets no more mail. */
 const toPerson =
-	(
-		template: 'account-invitation' | 'password-reset',
-		purpose: keyof typeof linkHours
-	): ContentMaker =>
+	(name: 'account-invitation' | 'password-reset'): ContentMaker =>
 	async (mail, reader) => {
 		const person = await reader
 			.selectFrom('person')
-			.select(['email'])
+			.select('email')
 			.where('id', '=', mail.person_id)
 			.where('active', '=', true)
 			.executeTakeFirst();
 		if (!person || !mail.secret) return null;
-		return {
-			to: person.email,
-			...renderMail(template, {
-				link: unwrap(mail.secret),
-				expires: instantText(addHours(mail.created_at, linkHours[purpose]), 'UTC')
-			})
-		};
+		const { expires } = facts.parse(mail.facts);
+		return { to: person.email, ...renderMail(name, { link: unwrap(mail.secret), expires }) };
 	};
 
-export const invitationContent = toPerson('account-invitation', 'invitation');
-export const resetContent = toPerson('password-reset', 'reset');
+export const invitationContent = toPerson('account-invitation');
+export const resetContent = toPerson('password-reset');

@@ -9,6 +9,8 @@ export const peopleRoutes: RouteTable = {
 	'/(app)/account': { GET: 'signed-in', POST: 'signed-in' },
 	'/(app)/people': { GET: 'person.manage', POST: 'person.manage' },
 	'/(app)/people/[person=id]': { GET: 'person.manage', POST: 'role.grant' },
+	'/(app)/people/access.csv': { GET: 'person.manage' },
+	'/api/people': { GET: 'person.manage' },
 	'/(app)/jobs': { GET: 'job.read', POST: 'job.read' },
 	'/api/jobs': { GET: 'job.read' },
 	'/api/jobs/[job=id]': { GET: 'signed-in' },
