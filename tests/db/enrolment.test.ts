@@ -289,7 +289,7 @@ describe('contact details', () => {
 		await expect(
 			saveContactDetails(scene.coordinator, scene.studyId, subject.id, contact, 1)
 		).rejects.toMatchObject({ code: 'STALE' });
-		const [[kept], events] = await db.sql(
+		const [[kept] = [], events] = await db.sql(
 			`select email, version from app.contact_details where subject_id = '${subject.id}'`,
 			`select personal from audit.event where record = 'contact_details' and subject_id = '${subject.id}'`
 		);

@@ -6,7 +6,7 @@ import { exitKinds } from './exit';
 // eslint-disable-next-line no-control-regex
 const oneLine = /^[^\u0000-\u001f\u007f]*$/;
 const id = z.uuid('Choose one of the list.');
-const date = z.string().refine(isPlainDate, 'Enter a date that exists.');
+const date = z.string().refine((text): boolean => isPlainDate(text), 'Enter a date that exists.');
 const time = z
 	.string()
 	.refine(
