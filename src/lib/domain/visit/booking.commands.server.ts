@@ -9,6 +9,7 @@ import { checkOpening, openingText, spanOf, type TimeSpan } from '../schedule/bo
 import { inWindow } from '../schedule/window';
 import { takeTurn } from '../subject/screening.commands.server';
 import { staffOn } from './booking.reads.server';
+import { tellSubject } from './visit-mail.server';
 import { refuseStale, refuseStep } from './steps.server';
 import type { BookVisitInput, CancelAppointmentInput, MoveAppointmentInput } from './visit.input';
 import { holdVisit, refuseIfLeft, scopeOfVisit, type VisitRow } from './visit.reads.server';
@@ -65,6 +66,7 @@ export async function bookVisit(
 				.returning('version')
 				.execute();
 			mustHaveChanged(changed);
+			await tellSubject(writer, 'visit-invitation', id);
 			return {
 				appointmentId: id,
 				version: appointment.version,
@@ -110,6 +112,7 @@ export async function moveAppointment(
 				.returning('version')
 				.execute();
 			mustHaveChanged(changed);
+			await tellSubject(writer, 'visit-moved', open.id, open.starts_at);
 			return {
 				appointmentId: open.id,
 				version: changed[0]?.version ?? version + 1,
@@ -200,7 +203,15 @@ export async function closeAppointment(writer: Writer, open: OpenAppointment): P
 		.returning('version')
 		.execute();
 	mustHaveChanged(changed);
+	// What is over already needs no taking back.
+	if (open.starts_at > clock.now()) await tellSubject(writer, 'visit-cancelled', open.id);
 	return changed[0]?.version ?? open.version + 1;
+}
+
+/** For whoever settles a visit in another way: its open appointment, if any, will not be kept. */
+export async function closeOpenAppointment(writer: Writer, visitId: string): Promise<void> {
+	const open = await findOpenAppointment(writer, visitId);
+	if (open) await closeAppointment(writer, open);
 }
 
 /** The span the form means, once everything but who else is there at the time has been checked. */

@@ -2,6 +2,7 @@ import type { Selectable } from 'kysely';
 import type { Reader } from '../change';
 import type { MailKind, Tables } from '../db/tables';
 import { invitationContent, resetContent } from './account-content';
+import { visitContent } from './visit-content';
 
 export type MailRow = Selectable<Tables['mail']>;
 
@@ -21,5 +22,6 @@ export type ContentMaker = (mail: MailRow, reader: Reader) => Promise<MailConten
 /** Each area adds the mails it sends. A kind that is not here cannot be sent, and the sender says so. */
 export const mailContent: Partial<Record<MailKind, ContentMaker>> = {
 	invitation: invitationContent,
-	reset: resetContent
+	reset: resetContent,
+	...visitContent
 };
