@@ -71,13 +71,17 @@ export async function runPlaywright(run, project, files) {
 	await follow(run, args, project, {});
 }
 
+/** Kit's hint about the tsconfig, which is derived for the tests' own folder elsewhere. @param {string} line */
+const kitHint = (line) =>
+	/^Your tsconfig\.json should extend|^\{$|^\}$|^ {2}"extends": "\.\/\.svelte-kit/.test(line);
+
 /** Runs it with its output shown; a bad end without a failed test counts as one failure. @param {Run} run @param {string[]} args @param {string} name @param {NodeJS.ProcessEnv} more */
 async function follow(run, args, name, more) {
 	const before = readResults(run.results).length;
 	const { status, output } = await execute(process.execPath, args, {
 		cwd: root,
 		env: { ...run.env, ...more },
-		onLine: (line) => line.trim() && print(line)
+		onLine: (line) => line.trim() && !kitHint(line) && print(line)
 	});
 	const own = readResults(run.results).slice(before);
 	const failed = own.some((result) => result.status === 'failed');
