@@ -1,7 +1,18 @@
-import { createStudyFrom } from '$lib/domain/study/study.commands.server';
-import { publishProtocol } from '$lib/domain/study/study.commands.server';
+import { recommend } from '$lib/domain/board/board.server';
+import { mapImport, startImport, uploadImport } from '$lib/domain/import/import.commands.server';
+import { downloadCopy } from '$lib/domain/report/report-file.server';
+import {
+	approveRelease,
+	makeReport,
+	releaseReport
+} from '$lib/domain/report/report.commands.server';
+import {
+	createStudy,
+	createStudyFrom,
+	definitionFrom,
+	publishProtocol
+} from '$lib/domain/study/study.commands.server';
 import { findTemplate } from '$lib/domain/study/templates.server';
-import { definitionFrom } from '$lib/domain/study/study.commands.server';
 import { askForList } from '$lib/domain/randomisation/allocation.commands.server';
 import { freezeCut } from '$lib/domain/cut/cut.commands.server';
 import { requestLook } from '$lib/domain/look/look.commands.server';
@@ -12,12 +23,14 @@ import { newId } from '$lib/id';
 import type { Actor } from '$lib/server/actor';
 import { systemActor } from '$lib/server/actor';
 import { readOwn } from '$lib/server/change';
+import { roleAllowing } from '$lib/server/permission';
 import { useDatabase, type Database } from '$lib/server/db/db';
 import { closedHandlers, openHandlers } from '$lib/server/jobs/handlers';
 import type { QueueName, QueuePayloads } from '$lib/server/jobs/queue';
 import { clock } from '$lib/time/clock';
 import { addDays, plainDateOf, type PlainDate } from '$lib/time/dates';
 import { aldermere, aldermereSites } from './aldermere';
+import { larkfieldFile } from './larkfield';
 import { Trial, type Cast, type SiteCast } from './play-aldermere.server';
 import { acting, at, demoPassword, give, join, postMail } from './stage.server';
 
@@ -265,9 +278,100 @@ async function looks(
 		cutOffAt: `${day}T06:00:00Z`
 	});
 	at(new Date(`${day}T09:30:00Z`));
-	await look(sides, statistician, studyId, cut.id, { group: 'none' });
+	const pooled = await look(sides, statistician, studyId, cut.id, { group: 'none' });
 	at(new Date(`${day}T13:00:00Z`));
-	await look(sides, await acting(id(ids, 'independent')), studyId, cut.id, {});
+	const independent = await acting(id(ids, 'independent'));
+	const byArm = await look(sides, independent, studyId, cut.id, {});
+	at(new Date(`${day}T14:00:00Z`));
+	const open = await report(sides, statistician, studyId, pooled);
+	const closed = await report(sides, independent, studyId, byArm);
+	const board = [id(ids, 'board'), id(ids, 'board2')];
+	at(new Date(`${addDays(day, 1)}T08:15:00Z`));
+	const released = await releaseReport(statistician, studyId, open, { people: board });
+	for (const { id: releaseId } of released.releases) await work(sides, 'release', { releaseId });
+	const asked = await releaseReport(independent, studyId, closed, { people: board });
+	at(new Date(`${addDays(day, 1)}T11:40:00Z`));
+	const manager = await acting(id(ids, 'data'));
+	for (const { id: releaseId } of asked.releases) {
+		await approveRelease(manager, studyId, releaseId);
+		await work(sides, 'closed-release', { releaseId });
+	}
+	at(new Date(`${addDays(day, 5)}T16:20:00Z`));
+	const member = await acting(id(ids, 'board2'));
+	await downloadCopy(member, studyId, closed);
+	await recommend(member, studyId, {
+		reportId: closed,
+		advice: 'continue unchanged',
+		reason:
+			'No concern about safety; visits are kept well. The board meets again at three quarters of the information.',
+		meetingOn: addDays(day, 5),
+		attendees: 'Henrike Olausson (chair), Desmond Ake'
+	});
+}
+
+async function report(
+	sides: Sides,
+	actor: Actor,
+	studyId: string,
+	lookId: string
+): Promise<string> {
+	const made = await makeReport(actor, studyId, lookId);
+	const closed = roleAllowing(actor.grants, 'look.by-arm', { studyId }) !== null;
+	await work(sides, closed ? 'closed-report' : 'report', {
+		reportId: made.id,
+		jobRunId: made.jobRunId
+	});
+	return made.id;
+}
+
+/** The cohort, brought in as the file of an existing study, frozen and looked at by sex. */
+async function cohort(ids: Record<string, string>, sides: Sides, today: PlainDate): Promise<void> {
+	at(new Date(`${addDays(today, -41)}T08:30:00Z`));
+	const manager = await acting(id(ids, 'data'));
+	const { studyId } = await createStudy(manager, {
+		template: 'imported-data',
+		code: 'LGC-2',
+		name: 'Larkfield',
+		masked: false,
+		training: false,
+		sites: [{ name: 'Larkfield', zone: 'Europe/Dublin' }],
+		plannedSubjects: 180
+	});
+	const administrator = await acting(id(ids, 'admin'));
+	const deputy = await acting(id(ids, 'deputy'));
+	await give(administrator, deputy, id(ids, 'statistician'), 'statistician', studyId);
+	await give(administrator, deputy, id(ids, 'auditor'), 'auditor', studyId);
+	const file = Buffer.from(larkfieldFile(addDays(today, -60)));
+	const uploaded = await uploadImport(manager, studyId, { name: 'larkfield.csv', bytes: file });
+	await mapImport(manager, studyId, uploaded.id, uploaded.version, {
+		subject: 'child',
+		site: { kind: 'site', code: '01' },
+		time: { kind: 'date', column: 'date', anchor: { kind: 'first-date' } },
+		visit: 'visit',
+		characteristic: { column: 'sex', name: 'Sex' },
+		covariates: [],
+		measures: [
+			{ column: 'height_cm', name: 'Standing height', unit: 'cm', decimals: 1 },
+			{ column: 'weight_kg', name: 'Weight', unit: 'kg', decimals: 1 }
+		],
+		decimalSign: '.',
+		missing: []
+	});
+	for (const dryRun of [true, false]) {
+		const begun = await startImport(manager, studyId, uploaded.id, { dryRun });
+		await work(sides, 'import', { batchId: uploaded.id, jobRunId: begun.jobRunId, dryRun });
+	}
+	at(new Date(`${addDays(today, -40)}T09:00:00Z`));
+	const statistician = await acting(id(ids, 'statistician'));
+	const cut = await freezeCut(statistician, studyId, {
+		label: 'First five half-years',
+		cutOffAt: ''
+	});
+	await look(sides, statistician, studyId, cut.id, {
+		measure: 'standing-height',
+		group: 'characteristic:sex',
+		covariates: []
+	});
 }
 
 /** Makes the whole demo at the present day. The caller has set the database to let its clock be moved. */
@@ -286,6 +390,8 @@ export async function makeDemo(sides: Sides, tell: Tell): Promise<DemoAccount[]>
 	const studyId = await trial(ids, sides, now, today, tell);
 	tell(0.82, 'Freezing the data and looking');
 	await looks(ids, sides, studyId, today);
+	tell(0.9, 'Larkfield: importing, freezing, looking');
+	await cohort(ids, sides, today);
 	tell(0.95, 'Posting the mail');
 	await postMail();
 	clock.reset();

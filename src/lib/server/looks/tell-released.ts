@@ -1,4 +1,5 @@
 import type { Writer } from '../change';
+import { queueMail } from '../mail/queue-mail';
 
 /** Tells a board member that something is there for them: neither the study nor what was found stands in the mail. */
 export async function tellReleased(
@@ -6,7 +7,5 @@ export async function tellReleased(
 	studyId: string,
 	personId: string
 ): Promise<void> {
-	void writer;
-	void studyId;
-	void personId;
+	await queueMail(writer, { kind: 'report-released', personId, studyId });
 }
