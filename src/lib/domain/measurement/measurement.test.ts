@@ -314,7 +314,9 @@ describe('derived values', () => {
 		['female', 65, 2.0, 27.2],
 		['female', 30, 0.7, 119.2],
 		['male', 50, 1.0, 91.7],
-		['male', 70, 1.5, 49.8]
+		['male', 70, 1.5, 49.8],
+		['male', 40, 0.7, 119.5],
+		['female', 25, 0.5, 133.4]
 	])('CKD-EPI 2021: %s of %i with %d mg/dL is %d', (sex, age, mgDl, expected) => {
 		expect(outcome(egfr, person(sex, age, mgDl))).toBe(expected);
 		const molar = person(sex, age, mgDl);

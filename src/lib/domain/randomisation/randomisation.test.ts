@@ -45,6 +45,19 @@ describe('random numbers from a seed', () => {
 		expect(randomStream(seed, 'a').below(1000)).toBe(1912565693 % 1000);
 	});
 
+	it('skip what would make some outcomes likelier', () => {
+		const n = 2 ** 31 + 1;
+		const raw = randomStream(seedOf(3), 'x');
+		const words = Array.from({ length: 8 }, () => raw.block()).flatMap((block) =>
+			Array.from({ length: 8 }, (_, at) => block.readUInt32BE(at * 4))
+		);
+		// n goes into 2³² once, so that words from n upwards are skipped and the others stand as they are.
+		const kept = words.filter((word) => word < n).slice(0, 10);
+		const stream = randomStream(seedOf(3), 'x');
+		expect(kept.map(() => stream.below(n))).toEqual(kept);
+		expect(words.slice(0, 10)).not.toEqual(kept);
+	});
+
 	it('are even: each of six outcomes comes about as often', () => {
 		const stream = randomStream(seedOf(2), 'dice');
 		const counts = Array(6).fill(0);

@@ -62,6 +62,7 @@ describe('clashes', () => {
 
 	it('spans that touch do not overlap', () => {
 		expect(overlap(span, at('2026-06-09T09:30:00Z', 30))).toBe(false);
+		expect(overlap(at('2026-06-09T09:30:00Z', 30), span)).toBe(false);
 		expect(overlap(span, at('2026-06-09T09:29:00Z', 30))).toBe(true);
 		expect(overlap(span, at('2026-06-09T08:00:00Z', 300))).toBe(true);
 	});

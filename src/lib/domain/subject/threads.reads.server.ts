@@ -15,6 +15,7 @@ import type { ThreadFrame, ThreadPage, ThreadRow } from './thread';
 /** For drawing only: a study time in months or years, turned into days. */
 const daysIn: Record<StudyDefinition['timeUnit'], number> = {
 	day: 1,
+	week: 7,
 	month: 30.4375,
 	year: 365.25
 };

@@ -75,6 +75,12 @@ export const logContactInput = z.strictObject({
 });
 export type LogContactInput = z.output<typeof logContactInput>;
 
+export const freeTimesQuery = z.object({
+	date,
+	roomId: z.uuid('Choose a room.').optional(),
+	staffId: z.uuid('Choose a person.').optional()
+});
+
 const versioned = { version };
 export const bookVisitForm = bookVisitInput.extend(versioned);
 export const moveAppointmentForm = moveAppointmentInput.extend(versioned);
