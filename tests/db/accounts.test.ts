@@ -28,7 +28,7 @@ import { clock } from '../../src/lib/time/clock';
 import { plainDateOf } from '../../src/lib/time/dates';
 import { freshDatabase, useEnvironment, type FreshDatabase } from '../support/database';
 import { addPerson, addRole, asOwner } from '../support/people';
-import { actorFrom, addBareStudy, grant, type BareStudy } from '../support/scene';
+import { actorFrom, addBareStudy, grant, type BareStudy } from '../support/bare-scene';
 
 const password = 'linen warp and weft';
 let db: FreshDatabase;

@@ -2,6 +2,8 @@ import type { Selectable } from 'kysely';
 import type { Reader } from '../change';
 import type { MailKind, Tables } from '../db/tables';
 import { invitationContent, resetContent } from './account-content';
+import { releasedContent } from './released-content';
+import { visitContent } from './visit-content';
 
 export type MailRow = Selectable<Tables['mail']>;
 
@@ -21,5 +23,7 @@ export type ContentMaker = (mail: MailRow, reader: Reader) => Promise<MailConten
 /** Each area adds the mails it sends. A kind that is not here cannot be sent, and the sender says so. */
 export const mailContent: Partial<Record<MailKind, ContentMaker>> = {
 	invitation: invitationContent,
-	reset: resetContent
+	reset: resetContent,
+	'report-released': releasedContent,
+	...visitContent
 };
