@@ -167,6 +167,9 @@ begin
 		select s.seal, e.id, 'the row was altered after it was written' from audit.event e
 		left join audit.sealed s on s.event_id = e.id where e.digest <> audit.digest_of(e) order by e.id;
 	return query
+		select s.seal, s.event_id, 'the row is missing' from audit.sealed s
+		left join audit.event e on e.id = s.event_id where e.id is null order by s.event_id;
+	return query
 		with chain as (
 			select k.number, k.events, k.digest, k.previous, lag(k.digest) over (order by k.number) as should_follow,
 				count(e.id) as found,
@@ -181,6 +184,13 @@ begin
 		from chain where found <> events or again <> digest or previous is distinct from should_follow order by number;
 end $$;
 
+-- How much there is, how much of it is sealed, and the newest seal: written down elsewhere, it proves what stood before.
+create function audit.state() returns table (events bigint, sealed bigint, seals bigint, head text)
+language sql stable security definer set search_path = pg_catalog as $$
+	select (select count(*) from audit.event), (select count(*) from audit.sealed), (select count(*) from audit.seal),
+		(select number || ':' || encode(digest, 'hex') from audit.seal order by number desc limit 1)
+$$;
+
 -- A seal's rows may not lose their event even for the owner: the trail refuses change from every side.
 create function audit.never() returns trigger language plpgsql as $$
 begin
@@ -193,7 +203,7 @@ create trigger sealed_is_kept before update or delete on audit.sealed for each r
 create trigger closed_event_is_kept before update or delete on closed.event for each row execute function audit.never();
 
 revoke all on all functions in schema audit from public;
-grant execute on function audit.act, audit.refuse, audit.seal_now, audit.verify to heddle_app, heddle_unmasked;
+grant execute on function audit.act, audit.refuse, audit.seal_now, audit.verify, audit.state to heddle_app, heddle_unmasked;
 grant select on audit.event, audit.seal to heddle_app, heddle_unmasked;
 grant select on closed.event to heddle_unmasked;
 `.execute(db);

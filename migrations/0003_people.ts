@@ -55,6 +55,8 @@ create table app.person_role (
 	granted_at timestamptz not null default app.now(),
 	confirmed_by uuid references app.person (id),
 	confirmed_at timestamptz,
+	-- Taken away at once, before its last day.
+	ended_at timestamptz,
 	version integer not null default 1,
 	check (site_id is null or study_id is not null),
 	check (role <> 'administrator' or study_id is null),
@@ -97,7 +99,7 @@ create table app.rate_limit (
 
 -- Whether a grant is in force: begun, not ended, and confirmed by a second person where the role opens closed material.
 create function app.in_force(r app.person_role, today date) returns boolean language sql immutable as $$
-	select r.valid_from <= today and (r.valid_to is null or r.valid_to >= today)
+	select r.ended_at is null and r.valid_from <= today and (r.valid_to is null or r.valid_to >= today)
 		and (r.role not in ('independent_statistician', 'board_member') or r.confirmed_by is not null)
 $$;
 
@@ -152,11 +154,14 @@ declare
 	closed_side text[] := array['independent_statistician', 'board_member'];
 	team text[] := array['data_manager', 'coordinator', 'nurse', 'investigator', 'monitor', 'statistician'];
 	other app.person_role;
+	-- A grant that was taken away counts up to the day on which that happened.
+	last_day date := least(new.valid_to, (new.ended_at at time zone 'UTC')::date);
 begin
 	-- One person's grants are weighed one at a time, or two grants could pass each other.
 	perform pg_advisory_xact_lock(hashtext('role:' || new.person_id::text));
 	for other in select * from app.person_role r where r.person_id = new.person_id and r.id <> new.id
-			and daterange(r.valid_from, r.valid_to, '[]') && daterange(new.valid_from, new.valid_to, '[]') loop
+			and r.valid_from <= coalesce(last_day, 'infinity')
+			and coalesce(least(r.valid_to, (r.ended_at at time zone 'UTC')::date), 'infinity') >= greatest(r.valid_from, new.valid_from) loop
 		if (new.role = 'administrator' and other.role = any (stake)) or (other.role = 'administrator' and new.role = any (stake)) then
 			raise exception using errcode = 'HD003', message = 'ROLE_PAIR', detail = other.role || ',' || new.role;
 		end if;
@@ -169,6 +174,75 @@ begin
 	return new;
 end $$;
 create trigger role_pairs before insert or update on app.person_role for each row execute function app.refuse_role_pairs();
+
+-- A grant is in the hand of who gives it, and is never turned into another: it ends, and a new one is given.
+create function app.keep_grant() returns trigger language plpgsql security definer set search_path = pg_catalog as $$
+declare
+	by_heddle boolean := exists (select from app.person p where p.id = app.actor() and p.kind = 'system');
+begin
+	if tg_op = 'INSERT' then
+		if new.granted_by <> app.actor() and not by_heddle then
+			raise exception using errcode = 'HD006', message = 'NOT_PERMITTED';
+		end if;
+		if new.confirmed_by is not null and not by_heddle then
+			raise exception using errcode = 'HD006', message = 'SECOND_PERSON';
+		end if;
+		return new;
+	end if;
+	if (new.id, new.person_id, new.role, new.study_id, new.site_id, new.valid_from, new.granted_by, new.granted_at)
+		is distinct from (old.id, old.person_id, old.role, old.study_id, old.site_id, old.valid_from, old.granted_by, old.granted_at)
+		or (old.confirmed_by is not null and (new.confirmed_by, new.confirmed_at) is distinct from (old.confirmed_by, old.confirmed_at))
+		or (old.ended_at is not null and new.ended_at is distinct from old.ended_at) then
+		raise exception using errcode = 'HD006', message = 'NOT_PERMITTED';
+	end if;
+	if new.confirmed_by is distinct from old.confirmed_by and new.confirmed_by is distinct from app.actor() then
+		raise exception using errcode = 'HD006', message = 'SECOND_PERSON';
+	end if;
+	return new;
+end $$;
+create trigger keep_grant before insert or update on app.person_role for each row execute function app.keep_grant();
+
+-- The names of studies and sites, for who grants roles in them and by that sees nothing else of them.
+create function app.places() returns table (study_id uuid, study_code text, study_name text, site_id uuid, site_code text, site_name text)
+language sql stable security definer set search_path = pg_catalog as $$
+	select s.id, s.code, s.name, t.id, t.code, t.name from app.study s left join app.site t on t.study_id = s.id
+	where app.has_role(array['administrator'], null, null) order by s.code, t.code
+$$;
+
+-- True once: for who sets Heddle up. The first administrator is made in the same transaction.
+create function app.mark_set_up() returns boolean language plpgsql security definer set search_path = pg_catalog as $$
+begin
+	update app.installation set set_up_at = app.now() where set_up_at is null
+		and not exists (select from app.person_role where role = 'administrator');
+	return found;
+end $$;
+
+create aggregate app.folded(jsonb) (sfunc = jsonb_concat, stype = jsonb, initcond = '{}');
+
+-- Who held which role at an instant, told from the trail alone, so that later changes do not reach back.
+create function app.access_at(p_at timestamptz) returns table (
+	person_id uuid, name text, email text, active boolean, role text, study text, site text,
+	valid_from date, valid_to date, granted_by text, granted_at timestamptz, confirmed_by text, in_force boolean)
+language plpgsql stable security definer set search_path = pg_catalog as $$
+begin
+	if not app.has_role(array['administrator'], null, null) then
+		raise exception using errcode = 'HD006', message = 'NOT_PERMITTED';
+	end if;
+	return query
+	with told as (
+		select e.record, e.record_id, app.folded(e.after order by e.id) as v from audit.event e
+		where e.record in ('person', 'person_role') and e.action in ('create', 'change') and e.at <= p_at
+		group by e.record, e.record_id
+	), people as (select * from jsonb_populate_recordset(null::app.person, (select jsonb_agg(v) from told where record = 'person'))
+	), grants as (select * from jsonb_populate_recordset(null::app.person_role, (select jsonb_agg(v) from told where record = 'person_role')))
+	select p.id, p.name, p.email, p.active, g.role, s.code, t.code, g.valid_from, g.valid_to, by.name, g.granted_at, c.name,
+		coalesce(p.active and app.in_force(row(g.*)::app.person_role, (p_at at time zone 'UTC')::date), false)
+	from people p
+	left join grants g on g.person_id = p.id
+	left join app.study s on s.id = g.study_id left join app.site t on t.id = g.site_id
+	left join app.person by on by.id = g.granted_by left join app.person c on c.id = g.confirmed_by
+	where p.kind = 'person' order by lower(p.name), p.id, g.granted_at;
+end $$;
 
 create trigger person_version before update on app.person for each row execute function app.bump_version();
 create trigger person_role_version before update on app.person_role for each row execute function app.bump_version();

@@ -93,6 +93,9 @@ begin
 	if not exists (select from app.consent c where c.subject_id = s.id and c.signed_at <= at) then
 		raise exception using errcode = 'HD012', message = 'CONSENT_NEEDED';
 	end if;
+	if exists (select from app.study_exit e where e.subject_id = s.id) then
+		raise exception using errcode = 'HD014', message = 'LEFT_STUDY';
+	end if;
 	-- One at a time within a stratum, or two callers would see the same first free position.
 	perform pg_advisory_xact_lock(hashtextextended('allocate:' || s.study_id::text || s.stratum::text, 0));
 	select l.* into place from closed.list_position l

@@ -54,7 +54,11 @@ create policy of_the_actor on ${sql.raw(table)} to heddle_app using (${sql.raw(s
 	for (const table of byStudy) await lock(`app.${table}`, study('study_id'));
 	for (const table of bySite) await lock(`app.${table}`, site('site_id'));
 	// Rows that may belong to no study: seen by everyone whom the permission table lets ask for them.
-	await lock('app.job_run', `study_id is null or ${study('study_id')}`);
+	// The administrator keeps the machine running and sees every job, though not what it works on.
+	await lock(
+		'app.job_run',
+		`study_id is null or ${study('study_id')} or (select app.has_role(array['administrator'], null, null))`
+	);
 	await lock('app.mail', `study_id is null or ${study('study_id')}`);
 	await lock('app.feed', study('study_id'));
 	// Site rows of the trail are for those who see the site; rows of a study without a site, for the study's people.

@@ -56,6 +56,14 @@ export const refusals = {
 		say: (f) => `These roles may not meet in one person. ${f.why ?? ''}`.trim()
 	},
 	OWN_GRANT: { status: 403, say: () => 'Nobody grants a role to himself.' },
+	OWN_ACCOUNT: {
+		status: 403,
+		say: () => 'Nobody switches off the own account or administration: another administrator does.'
+	},
+	NO_INVITATION: {
+		status: 409,
+		say: () => 'This account needs no invitation: it has a password already, or is switched off.'
+	},
 	SECOND_PERSON: {
 		status: 403,
 		say: () => 'This needs a second person: somebody other than who began it.'

@@ -52,6 +52,7 @@ const table = {
 
 	'cut.make': ['data_manager', 'statistician'],
 	'cut.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],
+	'cut.export': ['data_manager', 'statistician', 'independent_statistician'],
 	'plan.sign': ['statistician'],
 	'look.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],
 	'look.pooled': ['statistician', 'independent_statistician'],
@@ -102,3 +103,15 @@ export function roleAllowing(
 
 export const may = (grants: readonly Grant[], capability: Capability, scope: Scope): boolean =>
 	roleAllowing(grants, capability, scope) !== null;
+
+/** The sites of the study at which these grants allow the capability; null: all of them. */
+export function sitesAllowing(
+	grants: readonly Grant[],
+	capability: Capability,
+	studyId: string
+): string[] | null {
+	const allowed: readonly Role[] = table[capability];
+	const here = grants.filter((grant) => allowed.includes(grant.role) && covers(grant, { studyId }));
+	if (here.some((grant) => grant.siteId === null)) return null;
+	return here.flatMap((grant) => grant.siteId ?? []);
+}

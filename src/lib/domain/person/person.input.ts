@@ -19,6 +19,11 @@ const id = z.uuid('Choose one of the list.');
 const date = z.string().refine(isPlainDate, 'Enter a date that exists.');
 const optionalDate = z.union([z.literal(''), date]).optional();
 const optionalId = z.union([z.literal(''), id]).optional();
+const version = z.coerce.number().int().min(1).max(1_000_000_000);
+// Length and guessability are the domain's to judge; this only bounds what is looked at.
+const password = z.string().min(1, 'Enter a password.').max(512, 'At most 256 characters.');
+const twice = { path: ['again'], message: 'The two entries are not the same.' };
+const same = (given: { password: string; again: string }) => given.password === given.again;
 
 export const signInInput = z.object({
 	email: z.string().trim().min(1, 'Enter your e-mail address.').max(254),
@@ -26,16 +31,19 @@ export const signInInput = z.object({
 	to: z.string().max(500).default('/')
 });
 export const inviteInput = z.object({ email, name });
-export const newPasswordInput = z.object({
-	password: z.string().max(256, 'At most 256 characters.'),
-	again: z.string().max(256)
-});
-export const setUpInput = z.object({
-	email,
-	name,
-	password: z.string().max(256, 'At most 256 characters.'),
-	again: z.string().max(256)
-});
+export const newPasswordInput = z
+	.object({ password, again: z.string().max(512) })
+	.refine(same, twice);
+export const changePasswordInput = z
+	.object({
+		current: z.string().min(1, 'Enter your password.').max(512),
+		password,
+		again: z.string().max(512)
+	})
+	.refine(same, twice);
+export const setUpInput = z
+	.object({ email, name, password, again: z.string().max(512) })
+	.refine(same, twice);
 export const forgottenInput = z.object({ email });
 export const grantInput = z.object({
 	role: z.enum(roles, 'Choose a role.'),
@@ -44,13 +52,24 @@ export const grantInput = z.object({
 	validFrom: date,
 	validTo: optionalDate
 });
-export const endGrantInput = z.object({
-	grantId: id,
-	version: z.coerce.number().int(),
-	validTo: date
+/** Without a day the grant ends at once. */
+export const endGrantInput = z.object({ grantId: id, version, validTo: optionalDate });
+export const confirmGrantInput = z.object({ grantId: id, version });
+export const activeInput = z.object({ active: z.enum(['yes', 'no']), version });
+export const endSessionInput = z.object({ sessionId: id });
+export const nothingInput = z.object({});
+
+export type GrantInput = z.output<typeof grantInput>;
+
+const personRow = z.object({
+	id: z.string(),
+	name: z.string(),
+	email: z.string(),
+	state: z.enum(['active', 'invited', 'off']),
+	roles: z.array(z.string())
 });
-export const confirmGrantInput = z.object({ grantId: id });
-export const activeInput = z.object({
-	active: z.enum(['yes', 'no']),
-	version: z.coerce.number().int()
+export const peopleOutput = z.object({
+	items: z.array(personRow),
+	nextCursor: z.string().nullable()
 });
+export type PersonRow = z.output<typeof personRow>;

@@ -1,6 +1,8 @@
 import type { Actor } from '$lib/server/actor';
-import { read, readOwn } from '$lib/server/change';
+import { read, readOwn, type Reader } from '$lib/server/change';
 import { Refusal } from '$lib/refusal';
+import type { StudyDefinition } from './definition';
+import { readDefinition } from './template';
 
 export interface StudyHead {
 	id: string;
@@ -58,4 +60,82 @@ export const findSites = (actor: Actor, studyId: string): Promise<SiteHead[]> =>
 			)
 			.orderBy('code')
 			.execute();
+	});
+
+export interface ProtocolVersion {
+	id: string;
+	number: number;
+	status: 'draft' | 'published';
+	publishedAt: Date | null;
+	publishedBy: string | null;
+	version: number;
+	definition: StudyDefinition;
+}
+
+function held(definition: unknown): StudyDefinition {
+	const read = readDefinition(definition);
+	if (!read.ok) throw new Error('A stored study definition does not hold.');
+	return read.definition;
+}
+
+/** Within a read or a change: the newest published version with its definition. */
+export async function findPublished(
+	reader: Reader,
+	studyId: string
+): Promise<{ id: string; number: number; definition: StudyDefinition } | undefined> {
+	const found = await reader
+		.selectFrom('protocol_version')
+		.select(['id', 'number', 'definition'])
+		.where('study_id', '=', studyId)
+		.where('status', '=', 'published')
+		.orderBy('number', 'desc')
+		.limit(1)
+		.executeTakeFirst();
+	return found && { ...found, definition: held(found.definition) };
+}
+
+/** Within a read or a change: the newest published version; refused where there is none. */
+export async function getPublished(reader: Reader, studyId: string) {
+	const found = await findPublished(reader, studyId);
+	if (!found) throw new Refusal('NOT_PUBLISHED');
+	return found;
+}
+
+/** Within a read or a change: one version's definition. */
+export async function getDefinition(
+	reader: Reader,
+	studyId: string,
+	protocolVersionId: string
+): Promise<StudyDefinition> {
+	const found = await reader
+		.selectFrom('protocol_version')
+		.select('definition')
+		.where('study_id', '=', studyId)
+		.where('id', '=', protocolVersionId)
+		.executeTakeFirst();
+	if (!found) throw new Refusal('NOT_FOUND');
+	return held(found.definition);
+}
+
+/** The newest protocol version, draft or published, with the sites as they stand. */
+export const getProtocol = (actor: Actor, studyId: string): Promise<ProtocolVersion> =>
+	read(actor, 'study.read', { studyId }, async (reader) => {
+		const found = await reader
+			.selectFrom('protocol_version')
+			.leftJoin('person', 'person.id', 'protocol_version.published_by')
+			.select([
+				'protocol_version.id',
+				'number',
+				'status',
+				'published_at as publishedAt',
+				'person.name as publishedBy',
+				'protocol_version.version',
+				'definition'
+			])
+			.where('study_id', '=', studyId)
+			.orderBy('number', 'desc')
+			.limit(1)
+			.executeTakeFirst();
+		if (!found) throw new Refusal('NOT_FOUND');
+		return { ...found, definition: held(found.definition) };
 	});

@@ -1,9 +1,10 @@
 import { hash, verify } from '@node-rs/argon2';
+import { normalisePassword } from '$lib/domain/person/password';
 
 /** Argon2id with OWASP's first-choice memory and time (19 MiB, 2 passes, 1 lane). */
 const cost = { memoryCost: 19_456, timeCost: 2, parallelism: 1 };
 
-const normal = (password: string) => password.normalize('NFKC');
+const normal = normalisePassword;
 
 export const hashPassword = (password: string): Promise<string> => hash(normal(password), cost);
 

@@ -5,7 +5,11 @@ import { database } from '../db/db';
 /** Five wrong tries for an account, a hundred from an address, then a quarter of an hour's rest (R-21: 5 to 10, never over 100). */
 const rules = {
 	account: { points: 5, duration: 15 * 60 },
-	address: { points: 100, duration: 15 * 60 }
+	address: { points: 100, duration: 15 * 60 },
+	/** Mails with a reset link to one address. */
+	reset: { points: 3, duration: 60 * 60 },
+	/** Whole exports by one person. */
+	export: { points: 30, duration: 15 * 60 }
 } as const;
 type Rule = keyof typeof rules;
 
@@ -25,7 +29,12 @@ function limiter(rule: Rule): RateLimiterPostgres {
 				keyPrefix,
 				...rules[keyPrefix]
 			});
-		made = { account: make('account'), address: make('address') };
+		made = {
+			account: make('account'),
+			address: make('address'),
+			reset: make('reset'),
+			export: make('export')
+		};
 		limiters.set(pool, made);
 	}
 	return made[rule];

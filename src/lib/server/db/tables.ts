@@ -48,6 +48,7 @@ interface AppointmentTable {
 	outside_reason: string | null;
 	calendar_uid: string;
 	calendar_sequence: Generated<number>;
+	changed_at: Generated<Timestamp>;
 	version: Generated<number>;
 }
 
@@ -266,6 +267,7 @@ interface MeasurementTable {
 	unit: string;
 	entered_value: Numeric | null;
 	entered_unit: string | null;
+	entered_readings: Numeric[] | null;
 	not_done_reason: string | null;
 	soft_answer: string | null;
 	comment: string | null;
@@ -309,6 +311,7 @@ interface PersonRoleTable {
 	granted_at: Generated<Timestamp>;
 	confirmed_by: string | null;
 	confirmed_at: Timestamp | null;
+	ended_at: Timestamp | null;
 	version: Generated<number>;
 }
 

@@ -1,8 +1,10 @@
 import { newId } from '$lib/id';
 import { Refusal } from '$lib/refusal';
+import { clock } from '$lib/time/clock';
 import type { Actor } from '../actor';
 import { systemActor } from '../actor';
 import { change, read, type Writer } from '../change';
+import { log } from '../log';
 import type { QueueName } from './queue';
 
 /** What a job tells while it works, and is told. Times are in milliseconds. */
@@ -82,7 +84,7 @@ export async function supervised<T>(
 	if (!before || before.status === 'done' || before.status === 'cancelled') return undefined;
 	const row = await set(id, {
 		status: 'running',
-		started_at: new Date(),
+		started_at: clock.now(),
 		attempts: before.attempts + 1,
 		error: null
 	});
@@ -105,22 +107,27 @@ export async function supervised<T>(
 	try {
 		if (asked) throw new Cancelled();
 		const result = await work(supervision, row.requested_by);
-		await set(id, { status: 'done', fraction: 1, message: 'Done.', finished_at: new Date() });
+		await set(id, { status: 'done', fraction: 1, message: 'Done.', finished_at: clock.now() });
 		return result;
 	} catch (thrown) {
 		if (thrown instanceof Cancelled) {
 			await set(id, {
 				status: 'cancelled',
 				message: 'Cancelled; nothing was kept of it.',
-				finished_at: new Date()
+				finished_at: clock.now()
 			});
 			return undefined;
 		}
-		const why = thrown instanceof Error ? thrown.message : String(thrown);
+		// A fault's own words may quote a row; the administrator's page holds no study data.
+		const why =
+			thrown instanceof Refusal
+				? thrown.message
+				: `A fault on our side. The log has it under ${id}.`;
+		if (!(thrown instanceof Refusal)) log.error({ err: thrown, jobRunId: id }, 'job fault');
 		await set(
 			id,
 			lastTry || thrown instanceof Refusal
-				? { status: 'failed', error: why.slice(0, 1000), finished_at: new Date() }
+				? { status: 'failed', error: why.slice(0, 1000), finished_at: clock.now() }
 				: {
 						status: 'waiting',
 						message: 'It failed and will be tried again.',

@@ -9,7 +9,12 @@ export const peopleRoutes: RouteTable = {
 	'/(app)/account': { GET: 'signed-in', POST: 'signed-in' },
 	'/(app)/people': { GET: 'person.manage', POST: 'person.manage' },
 	'/(app)/people/[person=id]': { GET: 'person.manage', POST: 'role.grant' },
+	'/(app)/people/access.csv': { GET: 'person.manage' },
+	'/api/people': { GET: 'person.manage' },
 	'/(app)/jobs': { GET: 'job.read', POST: 'job.read' },
+	'/api/jobs': { GET: 'job.read' },
+	'/api/jobs/[job=id]': { GET: 'signed-in' },
+	'/api/jobs/[job=id]/cancel': { POST: 'signed-in' },
 	'/(app)/studies/[study=id]/audit': { GET: 'audit.read' },
 	'/(app)/studies/[study=id]/audit/export.csv': { GET: 'audit.export' }
 };

@@ -1,0 +1,290 @@
+import { sql } from 'kysely';
+import { byOrder } from '$lib/domain/schedule/window';
+import { newId } from '$lib/id';
+import { Refusal } from '$lib/refusal';
+import type { Actor } from '$lib/server/actor';
+import { change, mustHaveChanged, type Writer } from '$lib/server/change';
+import { plainDateOf } from '$lib/time/dates';
+import { clock } from '$lib/time/clock';
+import { checkDefinition } from './check';
+import {
+	decimalsOfMeasure,
+	isRandomised,
+	unitOfMeasure,
+	type SiteDefinition,
+	type StudyDefinition
+} from './definition';
+import type { CreateStudyInput, EditVisitInput } from './study.input';
+import { readDefinition } from './template';
+import { findTemplate } from './templates.server';
+
+/** The template as the input changes it. Codes of sites follow their order: 01, 02, … */
+export function definitionFrom(
+	template: StudyDefinition,
+	input: CreateStudyInput
+): StudyDefinition {
+	const [first] = template.sites;
+	const sites = input.sites.map((site, at): SiteDefinition => {
+		const like = template.sites[at] ?? first;
+		return {
+			code: String(at + 1).padStart(2, '0'),
+			name: site.name,
+			zone: site.zone,
+			openingHours: like?.openingHours ?? [],
+			rooms:
+				site.rooms?.map((name, room) => ({ key: `room-${room + 1}`, name })) ?? like?.rooms ?? []
+		};
+	});
+	return {
+		...template,
+		code: input.code,
+		name: input.name,
+		masked: input.masked && isRandomised(template),
+		sites,
+		...(input.plannedSubjects ? { plannedSubjects: input.plannedSubjects } : {}),
+		consentVersions: template.consentVersions.map((version) => ({
+			...version,
+			from: input.consentApprovedOn ? plainDateOf(input.consentApprovedOn) : version.from
+		}))
+	};
+}
+
+/** A new study from one of the templates: the study, its draft, sites, rooms and consent versions. */
+export async function createStudy(
+	actor: Actor,
+	input: CreateStudyInput
+): Promise<{ studyId: string }> {
+	const template = findTemplate(input.template);
+	if (!template) throw new Refusal('INVALID', {}, { template: 'Choose a template of the list.' });
+	return createStudyFrom(actor, definitionFrom(template.definition, input), {
+		training: input.training
+	});
+}
+
+/** A new study from a whole definition: a template that was changed, or a file that somebody wrote. */
+export async function createStudyFrom(
+	actor: Actor,
+	definition: StudyDefinition,
+	{ training }: { training: boolean }
+): Promise<{ studyId: string }> {
+	const read = readDefinition(definition);
+	if (!read.ok)
+		throw new Refusal('DEFINITION', {
+			why: read.problems.map((each) => `${each.path}: ${each.problem.message}`).join(' ')
+		});
+	const studyId = newId();
+	return change(actor, 'study.create', {}, async (writer) => {
+		const taken = await writer
+			.selectFrom('study')
+			.select('id')
+			.where(sql`lower(code)`, '=', definition.code.toLowerCase())
+			.executeTakeFirst();
+		if (taken) throw codeTaken(definition.code);
+		await writer
+			.insertInto('study')
+			.values({
+				id: studyId,
+				code: definition.code,
+				name: definition.name,
+				masked: definition.masked,
+				training
+			})
+			.execute();
+		await writer
+			.insertInto('protocol_version')
+			.values({
+				id: newId(),
+				study_id: studyId,
+				number: 1,
+				definition: JSON.stringify(read.definition)
+			})
+			.execute();
+		await addSites(writer, studyId, read.definition);
+		return { studyId };
+	});
+}
+
+const codeTaken = (code: string) =>
+	new Refusal('CODE_TAKEN', { code }, { code: 'There is a study with this code already.' });
+
+async function addSites(writer: Writer, studyId: string, definition: StudyDefinition) {
+	for (const site of definition.sites) {
+		const siteId = newId();
+		await writer
+			.insertInto('site')
+			.values({
+				id: siteId,
+				study_id: studyId,
+				code: site.code,
+				name: site.name,
+				zone: site.zone,
+				opening: JSON.stringify(site.openingHours)
+			})
+			.execute();
+		if (site.rooms.length > 0)
+			await writer
+				.insertInto('room')
+				.values(
+					site.rooms.map((room) => ({
+						id: newId(),
+						study_id: studyId,
+						site_id: siteId,
+						name: room.name.slice(0, 80)
+					}))
+				)
+				.execute();
+	}
+	if (definition.consentVersions.length > 0)
+		await writer
+			.insertInto('consent_version')
+			.values(
+				definition.consentVersions.map((version) => ({
+					id: newId(),
+					study_id: studyId,
+					label: version.version,
+					approved_on: version.from
+				}))
+			)
+			.execute();
+}
+
+async function lockedDraft(writer: Writer, studyId: string) {
+	const draft = await writer
+		.selectFrom('protocol_version')
+		.select(['id', 'number', 'version', 'definition', 'status'])
+		.where('study_id', '=', studyId)
+		.orderBy('number', 'desc')
+		.limit(1)
+		.forUpdate()
+		.executeTakeFirst();
+	if (!draft) throw new Refusal('NOT_FOUND');
+	if (draft.status !== 'draft') throw new Refusal('NOT_DRAFT');
+	const read = readDefinition(draft.definition);
+	if (!read.ok) throw new Error(`The draft of study ${studyId} does not hold.`);
+	return { ...draft, definition: read.definition };
+}
+
+/** Changes a visit of the draft in place. */
+export const editDraftVisit = (
+	actor: Actor,
+	studyId: string,
+	input: EditVisitInput,
+	version: number
+): Promise<{ version: number }> =>
+	change(actor, 'study.edit', { studyId }, async (writer) => {
+		const draft = await lockedDraft(writer, studyId);
+		if (!draft.definition.visits.some((visit) => visit.key === input.key))
+			throw new Refusal('NOT_FOUND');
+		const definition: StudyDefinition = {
+			...draft.definition,
+			visits: draft.definition.visits.map((visit) =>
+				visit.key === input.key
+					? {
+							...visit,
+							name: input.name,
+							lengthMinutes: input.lengthMinutes,
+							before: { ...visit.before, amount: input.before },
+							after: { ...visit.after, amount: input.after }
+						}
+					: visit
+			)
+		};
+		const changed = await writer
+			.updateTable('protocol_version')
+			.set({ definition: JSON.stringify(definition) })
+			.where('id', '=', draft.id)
+			.where('version', '=', version)
+			.returning('version')
+			.execute();
+		mustHaveChanged(changed);
+		return { version: changed[0]?.version ?? version };
+	});
+
+/** The longest a visit can hold a room, as the table of bookings has it. */
+const longestMinutes = 720;
+
+/**
+ * Publishes the draft: it never changes again, its visits and measures become rows, and the study is open.
+ * Refused while the check before publishing finds something that stops.
+ */
+export const publishProtocol = (
+	actor: Actor,
+	studyId: string,
+	version: number
+): Promise<{ protocolVersionId: string; version: number }> =>
+	change(actor, 'study.publish', { studyId }, async (writer) => {
+		const draft = await lockedDraft(writer, studyId);
+		const { definition } = draft;
+		const stops = checkDefinition(definition).filter((finding) => finding.weight === 'stops');
+		const tooLong = definition.visits.find((visit) => visit.lengthMinutes > longestMinutes);
+		if (stops.length > 0)
+			throw new Refusal('DEFINITION', {
+				why: stops.map((finding) => finding.problem.message).join(' ')
+			});
+		if (tooLong)
+			throw new Refusal('DEFINITION', {
+				why: `“${tooLong.name}” is longer than ${longestMinutes} minutes.`
+			});
+		const changed = await writer
+			.updateTable('protocol_version')
+			.set({
+				status: 'published',
+				published_at: clock.now(),
+				published_by: actor.personId
+			})
+			.where('id', '=', draft.id)
+			.where('version', '=', version)
+			.returning(['id', 'version'])
+			.execute();
+		mustHaveChanged(changed);
+		await layOutSchedule(writer, studyId, draft.id, definition);
+		await writer
+			.updateTable('study')
+			.set({ status: 'open' })
+			.where('id', '=', studyId)
+			.where('status', '=', 'draft')
+			.execute();
+		return { protocolVersionId: draft.id, version: changed[0]?.version ?? version };
+	});
+
+/** The version's visits, measures and grid as rows; positions count from 1 in the schedule's order. */
+export async function layOutSchedule(
+	writer: Writer,
+	studyId: string,
+	protocolVersionId: string,
+	definition: StudyDefinition
+): Promise<void> {
+	const visits = byOrder(definition.visits).map((visit, at) => ({
+		id: newId(),
+		study_id: studyId,
+		protocol_version_id: protocolVersionId,
+		key: visit.key,
+		name: visit.name,
+		position: at + 1,
+		spec: JSON.stringify(visit),
+		length_minutes: visit.lengthMinutes
+	}));
+	const measures = definition.measures.map((measure, at) => ({
+		id: newId(),
+		study_id: studyId,
+		protocol_version_id: protocolVersionId,
+		key: measure.key,
+		name: measure.name,
+		unit: unitOfMeasure(measure) ?? '1',
+		decimals: decimalsOfMeasure(measure),
+		kind: measure.kind,
+		position: at + 1,
+		spec: JSON.stringify(measure)
+	}));
+	await writer.insertInto('planned_visit').values(visits).execute();
+	await writer.insertInto('measure').values(measures).execute();
+	const measureIds = new Map(measures.map((measure) => [measure.key, measure.id]));
+	const grid = visits.flatMap((visit) =>
+		(definition.schedule[visit.key] ?? []).map((key) => ({
+			planned_visit_id: visit.id,
+			measure_id: measureIds.get(key) as string,
+			study_id: studyId
+		}))
+	);
+	if (grid.length > 0) await writer.insertInto('planned_measure').values(grid).execute();
+}

@@ -1,0 +1,25 @@
+import type { StudyDefinition } from '../study/definition';
+
+type Criterion = StudyDefinition['eligibility'][number];
+export type Answers = Readonly<Record<string, 'yes' | 'no'>>;
+
+/** An inclusion criterion is met by yes, an exclusion criterion by no; null while it is not answered. */
+export function isMet(
+	criterion: Pick<Criterion, 'key' | 'kind'>,
+	answers: Answers
+): boolean | null {
+	const answer = answers[criterion.key];
+	if (answer === undefined) return null;
+	return (answer === 'yes') === (criterion.kind === 'inclusion');
+}
+
+/** Every criterion of the version in force that is unanswered or unmet: none may remain before somebody is enrolled. */
+export function standing(
+	definition: Pick<StudyDefinition, 'eligibility'>,
+	answers: Answers
+): { unanswered: Criterion[]; unmet: Criterion[] } {
+	return {
+		unanswered: definition.eligibility.filter((each) => isMet(each, answers) === null),
+		unmet: definition.eligibility.filter((each) => isMet(each, answers) === false)
+	};
+}

@@ -1,0 +1,225 @@
+import { sql } from 'kysely';
+import { newId } from '$lib/id';
+import { Refusal } from '$lib/refusal';
+import type { Actor } from '$lib/server/actor';
+import { change, mustHaveChanged, type Writer } from '$lib/server/change';
+import { clock } from '$lib/time/clock';
+import { plainDateOf, shortDateText } from '$lib/time/dates';
+import { dateInZone, instantFromLocal } from '$lib/time/zones';
+import { getPublished } from '../study/study.reads.server';
+import { getSite, siteOf } from './site.reads.server';
+import type { ConsentInput, EligibilityInput, ScreeningInput } from './subject.input';
+
+/** One at a time for a site and a purpose, or two callers would take the same next number. */
+export const takeTurn = (writer: Writer, what: string, siteId: string) =>
+	sql`select pg_advisory_xact_lock(hashtextextended(${`${what}:${siteId}`}, 0))`.execute(writer);
+
+/** Adds somebody who was considered to the site's screening log, under the log's next number. */
+export const addScreening = (
+	actor: Actor,
+	studyId: string,
+	input: ScreeningInput
+): Promise<{ id: string; number: number; version: number }> =>
+	change(actor, 'screening.edit', { studyId, siteId: input.siteId }, async (writer) => {
+		const site = await getSite(writer, studyId, input.siteId);
+		await getPublished(writer, studyId);
+		if (input.screenedOn > site.today)
+			throw new Refusal(
+				'FUTURE',
+				{ what: 'The day' },
+				{ screenedOn: 'This day has not come yet.' }
+			);
+		await takeTurn(writer, 'screening', site.id);
+		const last = await writer
+			.selectFrom('screening')
+			.select((e) => e.fn.max('number').as('number'))
+			.where('study_id', '=', studyId)
+			.where('site_id', '=', site.id)
+			.executeTakeFirst();
+		const id = newId();
+		const number = (last?.number ?? 0) + 1;
+		await writer
+			.insertInto('screening')
+			.values({ id, study_id: studyId, site_id: site.id, number, screened_on: input.screenedOn })
+			.execute();
+		return { id, number, version: 1 };
+	});
+
+/** The screening, held until the change is over; refused when it is closed already. */
+export async function openScreening(writer: Writer, studyId: string, siteId: string, id: string) {
+	const screening = await writer
+		.selectFrom('screening')
+		.select(['id', 'number', 'screened_on', 'outcome', 'eligibility', 'version'])
+		.where('study_id', '=', studyId)
+		.where('site_id', '=', siteId)
+		.where('id', '=', id)
+		.forUpdate()
+		.executeTakeFirst();
+	if (!screening) throw new Refusal('NOT_FOUND');
+	if (screening.outcome === 'entered') throw new Refusal('ALREADY_ENTERED');
+	if (screening.outcome === 'not entered')
+		throw new Refusal('CONFLICT', {
+			what: 'This screening is closed: the person was not entered. Begin a new one.'
+		});
+	return screening;
+}
+
+export async function answerEligibility(
+	actor: Actor,
+	studyId: string,
+	screeningId: string,
+	input: EligibilityInput,
+	version: number
+): Promise<{ version: number }> {
+	const siteId = await siteOf(actor, 'screening.edit', 'screening', studyId, screeningId);
+	return change(actor, 'screening.edit', { studyId, siteId }, async (writer) => {
+		const screening = await openScreening(writer, studyId, siteId, screeningId);
+		const published = await getPublished(writer, studyId);
+		const known = new Set(published.definition.eligibility.map((each) => each.key));
+		const strange = Object.keys(input.answers).find((key) => !known.has(key));
+		if (strange)
+			throw new Refusal(
+				'INVALID',
+				{},
+				{ [`answers.${strange}`]: 'This study has no such criterion.' }
+			);
+		const changed = await writer
+			.updateTable('screening')
+			.set({
+				eligibility: JSON.stringify({
+					answers: input.answers,
+					protocolVersion: published.number,
+					answeredBy: actor.personId,
+					answeredAt: clock.now().toISOString()
+				})
+			})
+			.where('id', '=', screening.id)
+			.where('version', '=', version)
+			.returning('version')
+			.execute();
+		mustHaveChanged(changed);
+		return { version: changed[0]?.version ?? version };
+	});
+}
+
+/** Closes a screening: the person was considered and not entered, and why. */
+export async function closeScreening(
+	actor: Actor,
+	studyId: string,
+	screeningId: string,
+	reason: string,
+	version: number
+): Promise<{ version: number }> {
+	const siteId = await siteOf(actor, 'screening.edit', 'screening', studyId, screeningId);
+	return change(actor, 'screening.edit', { studyId, siteId }, async (writer) => {
+		const screening = await openScreening(writer, studyId, siteId, screeningId);
+		const changed = await writer
+			.updateTable('screening')
+			.set({ outcome: 'not entered', reason })
+			.where('id', '=', screening.id)
+			.where('version', '=', version)
+			.returning('version')
+			.execute();
+		mustHaveChanged(changed);
+		return { version: changed[0]?.version ?? version };
+	});
+}
+
+/** Roles that may explain a study to somebody; whoever did must have held one at the site on that day. */
+const explaining = ['coordinator', 'investigator', 'nurse'] as const;
+
+/** Records a consent: which version, when by the site's clocks, who explained it, who signed, that a copy was given. */
+export async function recordConsent(
+	actor: Actor,
+	studyId: string,
+	screeningId: string,
+	input: ConsentInput
+): Promise<{ id: string; version: number }> {
+	const siteId = await siteOf(actor, 'consent.record', 'screening', studyId, screeningId);
+	return change(actor, 'consent.record', { studyId, siteId }, async (writer) => {
+		const screening = await openScreening(writer, studyId, siteId, screeningId);
+		const site = await getSite(writer, studyId, siteId);
+		const form = await writer
+			.selectFrom('consent_version')
+			.select(['id', 'approved_on'])
+			.where('study_id', '=', studyId)
+			.where('id', '=', input.consentVersionId)
+			.executeTakeFirst();
+		if (!form)
+			throw new Refusal(
+				'INVALID',
+				{},
+				{ consentVersionId: 'Choose one of this study’s versions.' }
+			);
+		const signedAt = instantFromLocal(plainDateOf(input.signedOn), input.signedTime, site.zone);
+		if (signedAt > clock.now())
+			throw new Refusal(
+				'FUTURE',
+				{ what: 'The consent' },
+				{ signedOn: 'A consent is recorded once it is signed.' }
+			);
+		if (input.signedOn < form.approved_on)
+			throw new Refusal(
+				'CONSENT_EARLY',
+				{ approved: shortDateText(plainDateOf(form.approved_on)) },
+				{ signedOn: 'This version was not approved yet.' }
+			);
+		await mustExplain(writer, studyId, siteId, input.explainedBy, input.signedOn);
+		const id = newId();
+		await writer
+			.insertInto('consent')
+			.values({
+				id,
+				study_id: studyId,
+				site_id: siteId,
+				screening_id: screening.id,
+				consent_version_id: form.id,
+				signed_at: signedAt,
+				signed_by: input.signedBy,
+				explained_by: input.explainedBy,
+				copy_given: input.copyGiven
+			})
+			.execute();
+		return { id, version: 1 };
+	});
+}
+
+async function mustExplain(
+	writer: Writer,
+	studyId: string,
+	siteId: string,
+	personId: string,
+	on: string
+): Promise<void> {
+	const held = await writer
+		.selectFrom('person_role')
+		.select('id')
+		.where('person_id', '=', personId)
+		.where('study_id', '=', studyId)
+		.where('role', 'in', explaining)
+		.where((e) => e.or([e('site_id', 'is', null), e('site_id', '=', siteId)]))
+		.where('valid_from', '<=', on)
+		.where((e) => e.or([e('valid_to', 'is', null), e('valid_to', '>=', on)]))
+		.executeTakeFirst();
+	if (!held)
+		throw new Refusal(
+			'INVALID',
+			{},
+			{ explainedBy: 'This person had no role at the site on that day.' }
+		);
+}
+
+/** The days of the consents given so far, on the site's calendar. */
+export async function consentDays(
+	writer: Writer,
+	screeningId: string,
+	zone: string
+): Promise<string[]> {
+	const given = await writer
+		.selectFrom('consent')
+		.select('signed_at')
+		.where('screening_id', '=', screeningId)
+		.where('copy_given', '=', true)
+		.execute();
+	return given.map((consent) => dateInZone(consent.signed_at, zone));
+}

@@ -1,0 +1,217 @@
+import { sql } from 'kysely';
+import { newId } from '$lib/id';
+import { Refusal, type FieldErrors } from '$lib/refusal';
+import type { Actor } from '$lib/server/actor';
+import { change, mustHaveChanged, type Writer } from '$lib/server/change';
+import { may } from '$lib/server/permission';
+import { getPublished } from '../study/study.reads.server';
+import { isRandomised } from '../study/definition';
+import { standing, type Answers } from './eligibility';
+import { mostSubjectsPerSite, subjectNumber } from './number';
+import { characteristicsOf, stratumOf } from './particulars';
+import { planSubjectVisits } from './plan-visits.server';
+import { consentDays, openScreening, takeTurn } from './screening.commands.server';
+import { getSite, siteOf, type SiteNow } from './site.reads.server';
+import type { ContactInput, EnrolInput } from './subject.input';
+
+/** The site's next free subject numbers. The site's turn is held to the end of the change, so that none is given twice. */
+export async function nextSubjectNumbers(
+	writer: Writer,
+	studyId: string,
+	site: Pick<SiteNow, 'id' | 'code'>,
+	count = 1
+): Promise<string[]> {
+	await takeTurn(writer, 'subject', site.id);
+	const { rows } = await sql<{ last: number | null }>`
+		select max(substring(number from 4 for 4)::int) as last from app.subject
+		where study_id = ${studyId}::uuid and site_id = ${site.id}::uuid
+			and number ~ ${`^${site.code}-[0-9]{4}-[0-9]$`}`.execute(writer);
+	const last = rows[0]?.last ?? 0;
+	if (last + count > mostSubjectsPerSite)
+		throw new Refusal('CONFLICT', { what: 'The site has no subject number left.' });
+	return Array.from({ length: count }, (_, at) => subjectNumber(site.code, last + 1 + at));
+}
+
+/** Answers as the screening holds them. */
+export const answersOf = (eligibility: unknown): Answers =>
+	(eligibility as { answers?: Answers } | null)?.answers ?? {};
+
+/**
+ * Enters a screened person into the study: with a consent on or before the day and every criterion of the version in
+ * force met. Gives the subject number and plans the visits counted from enrolment.
+ */
+export async function enrolSubject(
+	actor: Actor,
+	studyId: string,
+	screeningId: string,
+	input: EnrolInput,
+	version: number
+): Promise<{ id: string; number: string; version: number }> {
+	const siteId = await siteOf(actor, 'subject.enrol', 'screening', studyId, screeningId);
+	return change(actor, 'subject.enrol', { studyId, siteId }, async (writer) => {
+		const screening = await openScreening(writer, studyId, siteId, screeningId);
+		if (screening.version !== version) throw new Refusal('STALE');
+		const site = await getSite(writer, studyId, siteId);
+		const { id: protocolVersionId, definition } = await getPublished(writer, studyId);
+
+		if (input.enrolledOn > site.today)
+			throw new Refusal(
+				'FUTURE',
+				{ what: 'The day of enrolment' },
+				{ enrolledOn: 'This day has not come yet.' }
+			);
+		if (input.enrolledOn < screening.screened_on)
+			throw new Refusal(
+				'RULE',
+				{ why: 'The day of enrolment lies before the screening.' },
+				{ enrolledOn: 'Choose the day of the screening or a later one.' }
+			);
+		const consented = (await consentDays(writer, screening.id, site.zone)).some(
+			(day) => day <= input.enrolledOn
+		);
+		if (!consented) throw new Refusal('CONSENT_NEEDED');
+		const { unanswered, unmet } = standing(definition, answersOf(screening.eligibility));
+		if (unanswered.length + unmet.length > 0)
+			throw new Refusal('NOT_ELIGIBLE', {
+				which: [...unmet, ...unanswered].map((criterion) => criterion.text).join(' ')
+			});
+		const strata = stratumOf(definition, input.stratum, site.code);
+		const known = characteristicsOf(definition, input.characteristics, site.today);
+		const errors: FieldErrors = { ...strata.errors, ...known.errors };
+		if (Object.keys(errors).length > 0) throw new Refusal('INVALID', {}, errors);
+		if (input.contact && !may(actor.grants, 'contact.edit', { studyId, siteId }))
+			throw new Refusal('NOT_PERMITTED');
+
+		const [number = ''] = await nextSubjectNumbers(writer, studyId, site);
+		const id = newId();
+		await writer
+			.insertInto('subject')
+			.values({
+				id,
+				study_id: studyId,
+				site_id: siteId,
+				protocol_version_id: protocolVersionId,
+				number,
+				enrolled_on: input.enrolledOn,
+				stratum: JSON.stringify(strata.stratum),
+				characteristics: JSON.stringify(known.characteristics)
+			})
+			.execute();
+		await writer
+			.updateTable('screening')
+			.set({ outcome: 'entered', subject_id: id })
+			.where('id', '=', screening.id)
+			.execute();
+		await writer
+			.updateTable('consent')
+			.set({ subject_id: id })
+			.where('screening_id', '=', screening.id)
+			.execute();
+		if (input.contact) await insertContact(writer, studyId, siteId, id, input.contact);
+		await planSubjectVisits(writer, studyId, id);
+		return { id, number, version: 1 };
+	});
+}
+
+const blankIsNone = (text: string) => (text === '' ? null : text);
+
+const insertContact = (
+	writer: Writer,
+	studyId: string,
+	siteId: string,
+	subjectId: string,
+	contact: ContactInput
+) =>
+	writer
+		.insertInto('contact_details')
+		.values({
+			subject_id: subjectId,
+			study_id: studyId,
+			site_id: siteId,
+			name: contact.name,
+			email: blankIsNone(contact.email),
+			phone: blankIsNone(contact.phone),
+			language: contact.language
+		})
+		.execute();
+
+/** Keeps the subject's contact details; version 0 says that there are none yet. */
+export async function saveContactDetails(
+	actor: Actor,
+	studyId: string,
+	subjectId: string,
+	input: ContactInput,
+	version: number
+): Promise<{ version: number }> {
+	const siteId = await siteOf(actor, 'contact.edit', 'subject', studyId, subjectId);
+	return change(actor, 'contact.edit', { studyId, siteId }, async (writer) => {
+		if (version === 0) {
+			const there = await writer
+				.selectFrom('contact_details')
+				.select('version')
+				.where('subject_id', '=', subjectId)
+				.executeTakeFirst();
+			if (there) throw new Refusal('STALE');
+			await insertContact(writer, studyId, siteId, subjectId, input);
+			return { version: 1 };
+		}
+		const changed = await writer
+			.updateTable('contact_details')
+			.set({
+				name: input.name,
+				email: blankIsNone(input.email),
+				phone: blankIsNone(input.phone),
+				language: input.language
+			})
+			.where('study_id', '=', studyId)
+			.where('subject_id', '=', subjectId)
+			.where('version', '=', version)
+			.returning('version')
+			.execute();
+		mustHaveChanged(changed);
+		return { version: changed[0]?.version ?? version };
+	});
+}
+
+/**
+ * The subject's allocation, once: the closed side gives a kit number and nothing else, in open studies too. Visits
+ * counted from randomisation get their windows in the same change.
+ */
+export async function randomiseSubject(
+	actor: Actor,
+	studyId: string,
+	subjectId: string
+): Promise<{ kitNumber: string; version: number }> {
+	const siteId = await siteOf(actor, 'subject.randomise', 'subject', studyId, subjectId);
+	return change(actor, 'subject.randomise', { studyId, siteId }, async (writer) => {
+		const subject = await writer
+			.selectFrom('subject')
+			.select(['id', 'kit_number'])
+			.where('study_id', '=', studyId)
+			.where('id', '=', subjectId)
+			.forUpdate()
+			.executeTakeFirst();
+		if (!subject) throw new Refusal('NOT_FOUND');
+		if (subject.kit_number !== null) throw new Refusal('ALREADY_RANDOMISED');
+		const { definition } = await getPublished(writer, studyId);
+		if (!isRandomised(definition))
+			throw new Refusal('RULE', { why: 'This study has one arm: nobody is randomised.' });
+		const exits = await writer
+			.selectFrom('study_exit')
+			.select('kind')
+			.where('study_id', '=', studyId)
+			.where('subject_id', '=', subjectId)
+			.execute();
+		if (exits.length > 0) throw new Refusal('LEFT_STUDY');
+		const { rows } = await sql<{
+			kit: string;
+		}>`select closed.allocate(${subjectId}::uuid) as kit`.execute(writer);
+		await planSubjectVisits(writer, studyId, subjectId);
+		const after = await writer
+			.selectFrom('subject')
+			.select(['kit_number', 'version'])
+			.where('id', '=', subjectId)
+			.executeTakeFirstOrThrow();
+		return { kitNumber: rows[0]?.kit ?? '', version: after.version };
+	});
+}
