@@ -37,6 +37,8 @@ heddle demo               fills an empty installation with the demo
 heddle backup FOLDER      database, stored files and keys into a new folder
 heddle restore FOLDER     the same back, into an empty installation, whole or not at all
 heddle verify-audit       checks the audit trail's chain; status 1 when it is broken
+heddle seal               seals the audit trail up to now
+heddle setup-link         a one-time link for the first administrator
 heddle help               this
 
 It works on the installation that DATABASE_URL names (see .env.example), else on the local one in .heddle/.`;
@@ -63,10 +65,7 @@ const commands = {
 					throw new Trouble('There are data here already. `npm run reset` removes them.');
 				await fill(local, 'demo', async ({ env }) => {
 					await migrate(env);
-					const accounts = await makeDemo({
-						...env,
-						ORIGIN: process.env.ORIGIN ?? 'http://127.0.0.1:8470'
-					});
+					const accounts = await makeDemo(env);
 					printAccounts(accounts);
 					return accounts;
 				});
@@ -111,14 +110,9 @@ const commands = {
 		return commands['verify-audit']?.([]);
 	},
 
-	async 'verify-audit'() {
-		const verify = async (/** @type {Record<string, string | undefined>} */ env) => {
-			const { status, output } = await runProgram('admin', ['admin', 'verify-audit'], env);
-			print(output.trim());
-			return status === 0 ? 0 : 1;
-		};
-		return withBuild(() => (hosted() ? verify(process.env) : onData(verify)));
-	},
+	'verify-audit': () => admin('verify-audit'),
+	seal: () => admin('seal'),
+	'setup-link': () => admin('setup-link'),
 
 	help: async () => print(usage)
 };
@@ -155,6 +149,16 @@ async function restoreHosted(source, manifest) {
 			throw new Trouble(`The place for ${area.name} is not empty. Nothing was restored.`);
 	await restoreDatabase({ folder: source, manifest, databaseUrl });
 	for (const area of areas) await area.fillFrom(join(source, area.name));
+}
+
+/** One of the administrator's own commands. @param {string} command */
+function admin(command) {
+	const ask = async (/** @type {Record<string, string | undefined>} */ env) => {
+		const { status, output } = await runProgram('admin', ['admin', command], env);
+		print(output.trim());
+		return status === 0 ? 0 : 1;
+	};
+	return withBuild(() => (hosted() ? ask(process.env) : onData(ask)));
 }
 
 const hosted = () => Boolean(process.env.DATABASE_URL);

@@ -5,7 +5,7 @@ import { build, installDependencies } from './build.mjs';
 import { installCheckers } from './checkers.mjs';
 import { endRunning, execute } from './commands.mjs';
 import { takeLock } from './lock.mjs';
-import { folder, root } from './places.mjs';
+import { folder, readJson, root, writeJson } from './places.mjs';
 import { print, say, Trouble } from './say.mjs';
 import { describe, readResults, record, tally } from './results.mjs';
 import { removeTestCluster, testBuild, testCluster, testState } from './test-cluster.mjs';
@@ -188,12 +188,13 @@ export async function testRun(options, work) {
 	}
 }
 
-/** @param {string} path @param {import('./results.mjs').Result[]} all */
+/** Phases that did not run this time keep their last results. @param {string} path @param {import('./results.mjs').Result[]} all */
 function keepResults(path, all) {
-	writeFileSync(
-		path,
-		JSON.stringify({ finished: new Date().toISOString(), results: all }, null, '\t') + '\n'
-	);
+	const ran = new Set(all.map(({ phase }) => phase));
+	/** @type {import('./results.mjs').Result[]} */
+	const before = readJson(path)?.results ?? [];
+	const results = [...before.filter(({ phase }) => !ran.has(phase)), ...all];
+	writeJson(path, { finished: new Date().toISOString(), results }, 0o644);
 }
 
 /** The caller's own Heddle settings must not reach the tests. @param {NodeJS.ProcessEnv} env */

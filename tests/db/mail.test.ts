@@ -35,7 +35,12 @@ const link = 'https://heddle.test/invitation/a-secret-token-that-opens-something
 async function mailTo(email: string): Promise<string> {
 	const personId = await addPerson(db, { email, name: 'Mina Shuttle' });
 	return changeOwn(systemActor(newId()), 'test', (writer) =>
-		queueMail(writer, { kind: 'invitation', personId, facts: { expires: '8 June 2026, 09:00 UTC' }, secret: link })
+		queueMail(writer, {
+			kind: 'invitation',
+			personId,
+			facts: { expires: '8 June 2026, 09:00 UTC' },
+			secret: link
+		})
 	);
 }
 const row = async (id: string) =>
@@ -196,7 +201,12 @@ test('a name can add neither a header nor a recipient', async () => {
 		`insert into app.person (id, email, name) values ('${personId}', 'inject@example.org', E'Eve\r\nBcc: other@example.org\r\n\r\nhello')`
 	);
 	const id = await changeOwn(systemActor(newId()), 'test', (writer) =>
-		queueMail(writer, { kind: 'reset', personId, facts: { expires: '8 June 2026, 09:00 UTC' }, secret: link })
+		queueMail(writer, {
+			kind: 'reset',
+			personId,
+			facts: { expires: '8 June 2026, 09:00 UTC' },
+			secret: link
+		})
 	);
 	await send(id);
 	const mail = catcher.messages.find((m) => m.to.includes('inject@example.org'));
