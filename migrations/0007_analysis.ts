@@ -45,6 +45,12 @@ create table app.mail (
 create index mail_subject on app.mail (subject_id, created_at) where subject_id is not null;
 create index mail_waiting on app.mail (created_at) where status in ('waiting', 'sending');
 
+-- How many mails are in which state, for the administrator, who may not see whom they go to.
+create function app.mail_state() returns table (status text, mails bigint)
+language sql stable security definer set search_path = pg_catalog as $$
+	select m.status, count(*) from app.mail m where app.has_role(array['administrator'], null, null) group by m.status
+$$;
+
 create table app.feed (
 	id uuid primary key,
 	person_id uuid not null references app.person (id),
@@ -224,6 +230,8 @@ grant select on app.allocation_record to heddle_app, heddle_unmasked;
 grant insert on app.allocation_record to heddle_unmasked;
 grant select on app.cut, app.monitoring_plan, app.look, app.report, app.release to heddle_unmasked;
 grant select, update on app.job_run to heddle_unmasked;
+-- A copy made on the closed side is announced by the ordinary, neutral mail.
+grant insert on app.mail to heddle_unmasked;
 grant update (status, error, engine_version, finished_at, version) on app.look to heddle_unmasked;
 grant update (status, sha256, pages, error, made_at, version) on app.report to heddle_unmasked;
 grant update (status, sha256, version) on app.release to heddle_unmasked;

@@ -96,7 +96,7 @@ describe('the allocation list', () => {
 	test('R-45: is made once by the look worker, with method, hash and count on record; a second time is refused', async () => {
 		const jobRunId = await makeList(db, scene);
 		end = useAs(db.appUrl);
-		const [[record], positions, letters, [job]] = await db.sql(
+		const [[record] = [], positions, letters, [job] = []] = await db.sql(
 			`select method, hash, count, asked_by from app.allocation_record where study_id = '${scene.studyId}'`,
 			`select stratum, position, arm_key, kit_number from closed.list_position where study_id = '${scene.studyId}'`,
 			`select arm_key, letter from closed.arm_letter where study_id = '${scene.studyId}' order by letter`,
@@ -139,7 +139,7 @@ describe('the allocation list', () => {
 	});
 
 	test('follows from its recorded seed and sizes, and each stratum is balanced block by block', async () => {
-		const [[list], positions] = await db.sql(
+		const [[list] = [], positions] = await db.sql(
 			`select seed, block_sizes, hash from closed.allocation_list where study_id = '${scene.studyId}'`,
 			`select stratum, position, arm_key as arm, kit_number as kit from closed.list_position
 				where study_id = '${scene.studyId}' order by position`
@@ -192,7 +192,7 @@ describe('the allocation list', () => {
 	});
 
 	test('neither seed, sizes of blocks, arms of kits nor unused kits stand anywhere in the open tables', async () => {
-		const [[list], unused, tables] = await db.sql(
+		const [[list] = [], unused, tables] = await db.sql(
 			`select seed, block_sizes from closed.allocation_list where study_id = '${scene.studyId}'`,
 			`select kit_number from closed.list_position where study_id = '${scene.studyId}' and subject_id is null`,
 			`select table_schema as s, table_name as t from information_schema.tables
@@ -224,7 +224,7 @@ describe('randomising', () => {
 		await expect(
 			randomiseSubject(scene.coordinator, scene.studyId, subject.id)
 		).rejects.toMatchObject({ code: 'ALREADY_RANDOMISED' });
-		const [[row], visits, used, events] = await db.sql(
+		const [[row] = [], visits, used, events] = await db.sql(
 			`select kit_number, randomised_on::text from app.subject where id = '${subject.id}'`,
 			`select name, target::text from app.visit where subject_id = '${subject.id}' order by position`,
 			`select position from closed.list_position where subject_id = '${subject.id}'`,

@@ -204,7 +204,7 @@ describe('enrolment', () => {
 			contact: { name: 'Ada Reed', email: 'ada@example.org', phone: '', language: 'en' }
 		});
 		expect(readSubjectNumber(made.number).ok).toBe(true);
-		const [visits, [contact], [screening], [consent], [subject]] = await db.sql(
+		const [visits, [contact] = [], [screening] = [], [consent] = [], [subject] = []] = await db.sql(
 			`select name, earliest::text, target::text, latest::text, status from app.visit where subject_id = '${made.id}'`,
 			`select name, email, phone from app.contact_details where subject_id = '${made.id}'`,
 			`select outcome from app.screening where id = '${id}'`,
@@ -289,7 +289,7 @@ describe('contact details', () => {
 		await expect(
 			saveContactDetails(scene.coordinator, scene.studyId, subject.id, contact, 1)
 		).rejects.toMatchObject({ code: 'STALE' });
-		const [[kept], events] = await db.sql(
+		const [[kept] = [], events] = await db.sql(
 			`select email, version from app.contact_details where subject_id = '${subject.id}'`,
 			`select personal from audit.event where record = 'contact_details' and subject_id = '${subject.id}'`
 		);

@@ -141,6 +141,23 @@ const sentences = {
 	LOOKS_LIKE_ALLOCATION: (f) =>
 		`“${f.column}” looks like the allocation, and this study is masked. The independent statistician loads it. If it is something else, rename the column.`,
 
+	SITE_UNKNOWN: (f) => `“${f.text}” is not a site of this study. Its sites: ${f.sites}.`,
+	SITE_EMPTY: () => 'The site is empty.',
+	VISIT_TWICE: (f) =>
+		`${f.subject} already has a row for the visit “${f.visit}”: row ${f.first}. A planned visit takes place once.`,
+	VISITS_TOO_MANY: (f) =>
+		`The file has ${f.count} different ${f.what}; ${f.limit} are allowed. Map a column of visit labels.`,
+	LEVELS_WRONG: (f) =>
+		`“${f.name}” has ${f.count} different values; a characteristic in words has 2 to ${f.limit}.`,
+	LEVEL_UNKNOWN: (f) => `“${f.text}” is not one of the choices of “${f.name}” in this study.`,
+	CHARACTERISTICS_TOO_MANY: (f) => `${f.count} characteristics are mapped; ${f.limit} are allowed.`,
+	MEASURE_DIFFERS: (f) =>
+		`“${f.name}” is measured in ${f.unit} with ${f.decimals} decimals in this study.`,
+	TIME_UNIT_DIFFERS: (f) => `This study counts time in ${f.unit}s. Give the file’s time in them.`,
+	IMPORTED_BEFORE: (f) => `${f.subject} already has a visit at this time in the study.`,
+	SUBJECT_DIFFERS: (f) => `${f.subject} stands in the study with another value of “${f.name}”.`,
+	SITE_FULL: (f) => `The site ${f.site} has no room for ${f.count} more subject numbers.`,
+
 	// Calendar files
 	CALENDAR_TEXT: (f) => `The ${f.field} holds a line break or a character that cannot be sent.`,
 	CALENDAR_TIMES: () => 'The end is not later than the start.',

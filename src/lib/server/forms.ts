@@ -53,3 +53,11 @@ export async function submit<S extends Schema>(
 		return fail(thrown.status, { form });
 	}
 }
+
+/** A form that goes back to the page carries no password with it. */
+export function withoutSecrets<R>(answer: R): R {
+	const held = answer as { form?: { data: object }; data?: { form?: { data: object } } };
+	const data = (held.form ?? held.data?.form)?.data as Record<string, unknown> | undefined;
+	for (const name of ['password', 'again', 'current']) if (data && name in data) data[name] = '';
+	return answer;
+}

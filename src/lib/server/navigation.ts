@@ -14,6 +14,7 @@ const places: Place[] = [
 	{ label: 'Subjects', path: '/subjects', capability: 'subject.read' },
 	{ label: 'Screening', path: '/screening', capability: 'screening.edit' },
 	{ label: 'Schedule', path: '/schedule', capability: 'study.read' },
+	{ label: 'Allocation', path: '/allocation', capability: 'allocation.make' },
 	{ label: 'Import', path: '/import', capability: 'import.run' },
 	{ label: 'Data cuts', path: '/cuts', capability: 'cut.read' },
 	{ label: 'Looks', path: '/looks', capability: 'look.read' },

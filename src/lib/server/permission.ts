@@ -52,6 +52,7 @@ const table = {
 
 	'cut.make': ['data_manager', 'statistician'],
 	'cut.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],
+	'cut.export': ['data_manager', 'statistician', 'independent_statistician'],
 	'plan.sign': ['statistician'],
 	'look.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],
 	'look.pooled': ['statistician', 'independent_statistician'],

@@ -103,7 +103,7 @@ export function checkMapping(
 				mapping.allocation,
 				problem('ALLOCATION_IN_MASKED_STUDY', { column: mapping.allocation })
 			);
-		for (const each of [mapping.characteristic, ...mapping.covariates])
+		for (const each of [mapping.characteristic, ...mapping.covariates, ...mapping.measures])
 			if (each && (looksLikeAllocation(each.column) || looksLikeAllocation(each.name)))
 				add(each.column, problem('LOOKS_LIKE_ALLOCATION', { column: each.column }));
 	}

@@ -40,7 +40,7 @@ export type CheckedRows = {
 	timeUnit: 'day' | 'week' | 'month' | 'year';
 };
 
-const mostProblems = 1000;
+const usualProblems = 1000;
 const mostMagnitude = 1e12;
 const shown = (text: string) => (text.length > 40 ? `${text.slice(0, 40)}…` : text);
 
@@ -51,7 +51,7 @@ const shown = (text: string) => (text.length > 40 ? `${text.slice(0, 40)}…` : 
 export function checkRows(
 	table: Table,
 	mapping: ImportMapping,
-	options: { masked: boolean }
+	options: { masked: boolean; mostProblems?: number }
 ): CheckedRows {
 	const problems = checkMapping(table.header, mapping, options);
 	const result: CheckedRows = {
@@ -64,7 +64,7 @@ export function checkRows(
 		timeUnit: mapping.time.kind === 'number' ? mapping.time.unit : 'day'
 	};
 	if (problems.length > 0) return result;
-	new Checker(table, mapping, result).run();
+	new Checker(table, mapping, result, options.mostProblems ?? usualProblems).run();
 	return result;
 }
 
@@ -81,7 +81,12 @@ class Checker {
 	private readonly fixed: ImportMapping['covariates'];
 	private readonly varying: ImportMapping['covariates'];
 
-	constructor(table: Table, mapping: ImportMapping, result: CheckedRows) {
+	constructor(
+		table: Table,
+		mapping: ImportMapping,
+		result: CheckedRows,
+		private readonly mostProblems: number
+	) {
 		this.table = table;
 		this.mapping = mapping;
 		this.result = result;
@@ -99,7 +104,7 @@ class Checker {
 
 	private report(row: number, column: string | null, reason: Problem): null {
 		this.result.problemCount += 1;
-		if (this.result.problems.length < mostProblems)
+		if (this.result.problems.length < this.mostProblems)
 			this.result.problems.push({ row, column, problem: reason });
 		return null;
 	}

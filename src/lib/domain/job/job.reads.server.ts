@@ -1,7 +1,9 @@
+import { sql } from 'kysely';
 import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { pageOf, type Page, type PageQuery } from '$lib/server/api/page';
 import { read, readOwn, type Reader } from '$lib/server/change';
+import { config } from '$lib/server/config';
 import { may } from '$lib/server/permission';
 import { isOver, type JobProgress, type JobRow } from './job';
 
@@ -92,4 +94,33 @@ export const getJob = (actor: Actor, jobId: string): Promise<JobProgress> =>
 			job
 		);
 		return { id, title, status, fraction, message, error, cancelAsked, mayCancel };
+	});
+
+export interface MailState {
+	/** Whether a mail server is set up at all. */
+	set: boolean;
+	waiting: number;
+	sent: number;
+	failed: number;
+	doubtful: number;
+}
+
+/** How many mails are in which state; to whom they go is not the administrator's business. */
+export const mailState = (actor: Actor): Promise<MailState> =>
+	read(actor, 'job.read', {}, async (reader) => {
+		const { rows } = await sql<{
+			status: string;
+			mails: string;
+		}>`select * from app.mail_state()`.execute(reader);
+		const of = (...statuses: string[]) =>
+			rows
+				.filter((row) => statuses.includes(row.status))
+				.reduce((sum, row) => sum + Number(row.mails), 0);
+		return {
+			set: config().mail !== null,
+			waiting: of('waiting', 'sending'),
+			sent: of('sent'),
+			failed: of('failed', 'no address'),
+			doubtful: of('doubtful')
+		};
 	});

@@ -120,11 +120,8 @@ async function sendReset(address: string, requestId: string): Promise<void> {
 	if (!person)
 		return recordRefusal(systemActor(requestId), 'password.reset', {}, { code: 'UNKNOWN_ACCOUNT' });
 	await changeOwn(self(person, requestId), 'password.reset', async (writer) => {
-		await queueMail(writer, {
-			kind: 'reset',
-			personId: person.id,
-			secret: await newLink(writer, person.id, 'reset')
-		});
+		const { secret, expires } = await newLink(writer, person.id, 'reset');
+		await queueMail(writer, { kind: 'reset', personId: person.id, facts: { expires }, secret });
 	});
 }
 
@@ -183,6 +180,6 @@ export async function setUpLink(requestId: string): Promise<string | null> {
 			])
 			.executeTakeFirstOrThrow();
 		if (done.set_up_at !== null || done.has_administrator) return null;
-		return newLink(writer, null, 'set-up');
+		return (await newLink(writer, null, 'set-up')).secret;
 	});
 }

@@ -15,18 +15,20 @@ import { config } from '$lib/server/config';
 import { queueMail } from '$lib/server/mail/queue-mail';
 import { tokenHash } from '$lib/server/secret';
 import { clock } from '$lib/time/clock';
+import { instantText } from '$lib/time/zones';
 import { checkPassword } from './password';
 
 const hourMs = 3_600_000;
 export const linkHours = { invitation: 7 * 24, reset: 1, 'set-up': 24 } as const;
 
-/** A new link of this purpose; older ones of the same person stop working. Gives the address with the secret in it. */
+/** A new link of this purpose; older ones of the same person stop working. The address holds the secret. */
 export async function newLink(
 	writer: Writer,
 	personId: string | null,
 	purpose: keyof typeof linkHours
-): Promise<string> {
+): Promise<{ secret: string; expires: string }> {
 	const now = clock.now();
+	const expiresAt = new Date(now.getTime() + linkHours[purpose] * hourMs);
 	await voidLinks(writer, personId, purpose);
 	const token = newToken();
 	await writer
@@ -36,11 +38,13 @@ export async function newLink(
 			person_id: personId,
 			purpose,
 			token_hash: tokenHash(token),
-			expires_at: new Date(now.getTime() + linkHours[purpose] * hourMs)
+			expires_at: expiresAt
 		})
 		.execute();
-	const path = { invitation: 'invitation', reset: 'reset', 'set-up': 'set-up' }[purpose];
-	return `${config().origin}/${path}/${token}`;
+	return {
+		secret: `${config().origin}/${purpose}/${token}`,
+		expires: instantText(expiresAt, 'UTC')
+	};
 }
 
 export async function voidLinks(
@@ -83,12 +87,10 @@ export const invitePerson = (
 		return id;
 	});
 
-const sendInvitation = async (writer: Writer, personId: string) =>
-	queueMail(writer, {
-		kind: 'invitation',
-		personId,
-		secret: await newLink(writer, personId, 'invitation')
-	});
+async function sendInvitation(writer: Writer, personId: string): Promise<void> {
+	const { secret, expires } = await newLink(writer, personId, 'invitation');
+	await queueMail(writer, { kind: 'invitation', personId, facts: { expires }, secret });
+}
 
 /** For an invitation that was lost or grew too old. Whoever has a password asks for a reset himself. */
 export const inviteAgain = (actor: Actor, personId: string): Promise<void> =>

@@ -235,7 +235,7 @@ export const studyDefinition = z
 		baselineVisit: keySchema,
 		primaryMeasure: keySchema,
 		timeUnit: z
-			.enum(['day', 'month', 'year'])
+			.enum(['day', 'week', 'month', 'year'])
 			.meta({ description: 'Unit of time in the analysis.' }),
 		consentVersions: z
 			.array(z.strictObject({ version: line(20), name: line(200), from: plainDate }))

@@ -248,7 +248,7 @@ export const publishProtocol = (
 	});
 
 /** The version's visits, measures and grid as rows; positions count from 1 in the schedule's order. */
-async function layOutSchedule(
+export async function layOutSchedule(
 	writer: Writer,
 	studyId: string,
 	protocolVersionId: string,

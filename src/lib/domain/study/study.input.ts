@@ -16,7 +16,7 @@ const zone = z
 	.trim()
 	.max(64, 'Choose a time zone of the list.')
 	.refine(isZone, 'Give a time zone by its name, such as Europe/Berlin.');
-const date = z.string().refine(isPlainDate, 'Enter a date that exists.');
+const date = z.string().refine((text): boolean => isPlainDate(text), 'Enter a date that exists.');
 const code = z
 	.string()
 	.trim()

@@ -31,7 +31,8 @@ export const queueSettings: Record<
 	{ retryLimit: number; retryDelay?: number; retryBackoff?: boolean }
 > = {
 	mail: { ...retry, retryLimit: 8 },
-	import: once,
+	// All of it or nothing, so that a worker that died may be followed by another.
+	import: { ...retry, retryLimit: 1 },
 	look: { ...retry, retryLimit: 2 },
 	report: { ...retry, retryLimit: 2 },
 	release: retry,

@@ -23,7 +23,8 @@ const good: { [Name in MailName]: MailData<Name> } = {
 	'password-reset': { link, expires },
 	'visit-invitation': { ...visit, minutes: 30 },
 	'visit-moved': { ...visit, minutes: 30, before: 'Mon 8 June 2026, 09:30 Europe/Berlin (+02:00)' },
-	'visit-cancelled': visit
+	'visit-cancelled': visit,
+	'report-released': { link, since: expires }
 };
 
 const pageOf = (html: string): Document => new JSDOM(html).window.document;

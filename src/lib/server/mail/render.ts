@@ -33,7 +33,8 @@ const mails = {
 	'password-reset': account,
 	'visit-invitation': z.strictObject({ ...visit, minutes }),
 	'visit-moved': z.strictObject({ ...visit, minutes, before: line(120) }),
-	'visit-cancelled': z.strictObject(visit)
+	'visit-cancelled': z.strictObject(visit),
+	'report-released': z.strictObject({ link, since: line(100) })
 } as const;
 
 export type MailName = keyof typeof mails;

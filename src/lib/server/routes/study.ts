@@ -1,14 +1,31 @@
 import type { RouteTable } from './table';
 
+const study = '/(app)/studies/[study=id]';
+const api = '/api/studies/[study=id]';
+
 /** Setting a study up, and a subject’s way in and out. */
 export const studyRoutes: RouteTable = {
 	'/(app)/studies/new': { GET: 'study.create', POST: 'study.create' },
-	'/(app)/studies/[study=id]/schedule': { GET: 'study.read', POST: 'study.publish' },
-	'/(app)/studies/[study=id]/screening': { GET: 'screening.edit', POST: 'screening.edit' },
-	'/(app)/studies/[study=id]/screening/[screening=id]': {
-		GET: 'screening.edit',
-		POST: 'subject.enrol'
-	},
-	'/(app)/studies/[study=id]/subjects': { GET: 'subject.read' },
-	'/(app)/studies/[study=id]/subjects/[subject=id]': { GET: 'subject.read', POST: 'subject.exit' }
+	[`${study}/schedule`]: { GET: 'study.read', POST: 'study.publish' },
+	[`${study}/allocation`]: { GET: 'study.read', POST: 'allocation.make' },
+	[`${study}/screening`]: { GET: 'screening.edit', POST: 'screening.edit' },
+	[`${study}/screening/[screening=id]`]: { GET: 'screening.edit', POST: 'subject.enrol' },
+	[`${study}/subjects`]: { GET: 'subject.read' },
+	[`${study}/subjects/[subject=id]`]: { GET: 'subject.read', POST: 'subject.exit' },
+
+	'/api/studies': { POST: 'study.create' },
+	[`${api}/protocol`]: { GET: 'study.read', PATCH: 'study.edit' },
+	[`${api}/protocol/publication`]: { POST: 'study.publish' },
+	[`${api}/allocation-list`]: { GET: 'study.read', POST: 'allocation.make' },
+	[`${api}/screenings`]: { GET: 'screening.edit', POST: 'screening.edit' },
+	[`${api}/screenings/[screening=id]`]: { GET: 'screening.edit' },
+	[`${api}/screenings/[screening=id]/eligibility`]: { PUT: 'screening.edit' },
+	[`${api}/screenings/[screening=id]/closing`]: { POST: 'screening.edit' },
+	[`${api}/screenings/[screening=id]/consents`]: { POST: 'consent.record' },
+	[`${api}/screenings/[screening=id]/enrolment`]: { POST: 'subject.enrol' },
+	[`${api}/subjects`]: { GET: 'subject.read' },
+	[`${api}/subjects/[subject=id]`]: { GET: 'subject.read' },
+	[`${api}/subjects/[subject=id]/randomisation`]: { POST: 'subject.randomise' },
+	[`${api}/subjects/[subject=id]/contact-details`]: { PUT: 'contact.edit' },
+	[`${api}/subjects/[subject=id]/exits`]: { POST: 'subject.exit' }
 };

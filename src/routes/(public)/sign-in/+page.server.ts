@@ -17,6 +17,7 @@ export const load: PageServerLoad = async ({ locals, url }) => {
 			errors: false
 		}),
 		refused: url.searchParams.has('error'),
+		done: url.searchParams.get('done'),
 		sso: config().oidc !== null
 	};
 };

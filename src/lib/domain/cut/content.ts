@@ -1,0 +1,80 @@
+import type { Characteristic, StudyDefinition } from '../study/definition';
+import type { UnitCode } from '../../units/units';
+
+/**
+ * What a data cut holds: the study as it stood at the cut-off, subject by subject. No allocation and no kit number is
+ * in it. Everything is plain JSON in a fixed order, so that one state of the data has one fingerprint.
+ */
+export interface CutMeasure {
+	key: string;
+	name: string;
+	kind: 'number' | 'repeated' | 'derived' | 'choice' | 'date' | 'text';
+	unit: UnitCode | null;
+	decimals: number;
+}
+
+export interface CutValue {
+	value: number | null;
+	text: string | null;
+	readings: number[] | null;
+	unit: string;
+	notDone: string | null;
+	takenAt: string | null;
+	enteredAt: string;
+	source: 'form' | 'import' | 'derived';
+}
+
+export interface CutVisit {
+	/** The planned visit's key; null for one that was not planned. */
+	key: string | null;
+	name: string;
+	position: number;
+	status: string;
+	happenedOn: string | null;
+	/** As the imported file gave it, in `studyTimeUnit`. */
+	studyTime: number | null;
+	values: Record<string, CutValue>;
+}
+
+export interface CutSubject {
+	id: string;
+	number: string;
+	importedAs: string | null;
+	site: string;
+	enrolledOn: string;
+	randomisedOn: string | null;
+	stratum: Record<string, string | number | null>;
+	characteristics: Record<string, string | number | null>;
+	exits: { kind: string; on: string }[];
+	visits: CutVisit[];
+}
+
+export interface CutContent {
+	format: 'heddle.cut/1';
+	study: string;
+	cutOffAt: string;
+	protocolVersion: number;
+	/** What days are counted from. */
+	anchor: 'enrolment' | 'randomisation';
+	timeUnit: StudyDefinition['timeUnit'];
+	baselineVisit: string;
+	measures: CutMeasure[];
+	characteristics: Characteristic[];
+	sites: { code: string; name: string }[];
+	subjects: CutSubject[];
+}
+
+/** Values that count as measurements: what was measured, not what was left out. */
+export const isMeasured = (value: CutValue): boolean => value.value !== null || value.text !== null;
+
+export function measurementsIn(content: Pick<CutContent, 'subjects'>): number {
+	let total = 0;
+	for (const subject of content.subjects)
+		for (const visit of subject.visits)
+			for (const value of Object.values(visit.values)) if (isMeasured(value)) total++;
+	return total;
+}
+
+/** Whether visits carry the time as a number from the file they came from. */
+export const hasStudyTime = (content: Pick<CutContent, 'subjects'>): boolean =>
+	content.subjects.some((subject) => subject.visits.some((visit) => visit.studyTime !== null));

@@ -1,0 +1,435 @@
+import { Refusal } from '$lib/refusal';
+import type { Actor } from '$lib/server/actor';
+import { read, type Reader } from '$lib/server/change';
+import { may } from '$lib/server/permission';
+import { plainDateOf, shortDateText } from '$lib/time/dates';
+import { dateInZone, instantText, timeInZone } from '$lib/time/zones';
+import { windowText } from '../schedule/window';
+import { isRandomised, type StudyDefinition } from '../study/definition';
+import { getDefinition } from '../study/study.reads.server';
+import { windowOfRow } from '../visit/visit.reads.server';
+import { exitMeanings, type ExitKind } from './exit';
+import { measurementsOf, type MeasurementLine } from './record-values.server';
+import { getSite, siteOf, type SiteNow } from './site.reads.server';
+import type { ThreadRow } from './thread';
+import { threadOf } from './threads.reads.server';
+
+/** One thing that happened to a subject, as the Thread page tells it. */
+export interface RecordItem {
+	id: string;
+	kind:
+		| 'screening'
+		| 'consent'
+		| 'enrolment'
+		| 'randomisation'
+		| 'visit'
+		| 'contact'
+		| 'deviation'
+		| 'exit'
+		| 'mail';
+	/** In words, with the zone where it is an instant. */
+	when: string;
+	/** For sorting: the site's own day and time. */
+	key: string;
+	title: string;
+	lines: string[];
+	visitId?: string;
+	measurements?: MeasurementLine[];
+}
+
+export interface VisitAhead {
+	id: string;
+	name: string;
+	window: string;
+	earliest: string | null;
+	target: string | null;
+	latest: string | null;
+	status: ThreadRow['visits'][number]['status'];
+	booked: string | null;
+	bookedOn: string | null;
+}
+
+export interface ContactDetails {
+	name: string;
+	email: string | null;
+	phone: string | null;
+	language: string;
+	version: number;
+}
+
+export interface SubjectRecord {
+	subject: {
+		id: string;
+		number: string;
+		importedAs: string | null;
+		version: number;
+		enrolledOn: string;
+		kitNumber: string | null;
+		facts: { name: string; value: string }[];
+	};
+	site: SiteNow;
+	thread: ThreadRow;
+	items: RecordItem[];
+	ahead: VisitAhead[];
+	exits: ExitKind[];
+	randomised: boolean;
+	/** Null without the permission to read them; the permission of their own is asked in a read of its own. */
+	contact: ContactDetails | 'none' | null;
+	may: { randomise: boolean; exit: boolean; editContact: boolean };
+}
+
+/** The whole record of one subject in the order of time. */
+export async function getSubjectRecord(
+	actor: Actor,
+	studyId: string,
+	subjectId: string
+): Promise<SubjectRecord> {
+	const siteId = await siteOf(actor, 'subject.read', 'subject', studyId, subjectId);
+	const scope = { studyId, siteId };
+	const record = await read(actor, 'subject.read', scope, async (reader) => {
+		const row = await reader
+			.selectFrom('subject')
+			.select([
+				'id',
+				'number',
+				'imported_as',
+				'version',
+				'enrolled_on',
+				'kit_number',
+				'randomised_at',
+				'protocol_version_id',
+				'stratum',
+				'characteristics'
+			])
+			.where('study_id', '=', studyId)
+			.where('id', '=', subjectId)
+			.executeTakeFirst();
+		if (!row) throw new Refusal('NOT_FOUND');
+		const site = await getSite(reader, studyId, siteId);
+		const definition = await getDefinition(reader, studyId, row.protocol_version_id);
+		const visits = await visitsOf(reader, studyId, subjectId, site);
+		const items = [
+			...(await wayIn(reader, subjectId, site, row)),
+			...visits.items,
+			...(await alongTheWay(reader, studyId, subjectId, site))
+		].sort((a, b) => (a.key < b.key ? -1 : a.key > b.key ? 1 : 0));
+		const exits = await reader
+			.selectFrom('study_exit')
+			.select('kind')
+			.where('study_id', '=', studyId)
+			.where('subject_id', '=', subjectId)
+			.execute();
+		return {
+			subject: {
+				id: row.id,
+				number: row.number,
+				importedAs: row.imported_as,
+				version: row.version,
+				enrolledOn: shortDateText(plainDateOf(row.enrolled_on)),
+				kitNumber: row.kit_number,
+				facts: factsOf(definition, row.characteristics, row.stratum)
+			},
+			site,
+			thread: await threadOf(reader, studyId, subjectId),
+			items,
+			ahead: visits.ahead,
+			exits: exits.map((exit) => exit.kind as ExitKind),
+			randomised: isRandomised(definition)
+		};
+	});
+	return {
+		...record,
+		contact: may(actor.grants, 'contact.read', scope)
+			? await getContact(actor, studyId, siteId, subjectId)
+			: null,
+		may: {
+			randomise: may(actor.grants, 'subject.randomise', scope),
+			exit: may(actor.grants, 'subject.exit', scope),
+			editContact: may(actor.grants, 'contact.edit', scope)
+		}
+	};
+}
+
+const getContact = (actor: Actor, studyId: string, siteId: string, subjectId: string) =>
+	read(actor, 'contact.read', { studyId, siteId }, async (reader) => {
+		const found = await reader
+			.selectFrom('contact_details')
+			.select(['name', 'email', 'phone', 'language', 'version'])
+			.where('study_id', '=', studyId)
+			.where('subject_id', '=', subjectId)
+			.executeTakeFirst();
+		return found ?? ('none' as const);
+	});
+
+function factsOf(definition: StudyDefinition, characteristics: unknown, stratum: unknown) {
+	const known = (characteristics ?? {}) as Record<string, string | number>;
+	const levels = (stratum ?? {}) as Record<string, string>;
+	const facts = definition.characteristics.flatMap((each) => {
+		const value = known[each.key];
+		if (value === undefined) return [];
+		const said =
+			each.kind === 'choice'
+				? (each.choices.find((choice) => choice.key === value)?.name ?? String(value))
+				: String(value);
+		return [{ name: each.name, value: said }];
+	});
+	// A characteristic that an import brought and no definition names is shown by its own name.
+	for (const [key, value] of Object.entries(known))
+		if (!definition.characteristics.some((each) => each.key === key))
+			facts.push({ name: key, value: String(value) });
+	for (const factor of definition.strata) {
+		const level = factor.levels.find((each) => each.key === levels[factor.key]);
+		if (level) facts.push({ name: factor.name, value: level.name });
+	}
+	return facts;
+}
+
+const dayKey = (date: string, rank = '') => `${date}${rank ? ` ${rank}` : ''}`;
+const instantKey = (at: Date, zone: string) => `${dateInZone(at, zone)} ${timeInZone(at, zone)}`;
+const dayWords = (date: string) => shortDateText(plainDateOf(date));
+
+async function wayIn(
+	reader: Reader,
+	subjectId: string,
+	site: SiteNow,
+	subject: {
+		id: string;
+		enrolled_on: string;
+		randomised_at: Date | null;
+		kit_number: string | null;
+		imported_as: string | null;
+	}
+): Promise<RecordItem[]> {
+	const screenings = await reader
+		.selectFrom('screening')
+		.select(['id', 'number', 'screened_on'])
+		.where('subject_id', '=', subjectId)
+		.execute();
+	const consents = await reader
+		.selectFrom('consent as c')
+		.innerJoin('consent_version as v', 'v.id', 'c.consent_version_id')
+		.innerJoin('person as p', 'p.id', 'c.explained_by')
+		.select(['c.id', 'v.label', 'c.signed_at', 'c.signed_by', 'p.name'])
+		.where('c.subject_id', '=', subjectId)
+		.execute();
+	const items: RecordItem[] = screenings.map((each) => ({
+		id: each.id,
+		kind: 'screening',
+		when: dayWords(each.screened_on),
+		key: dayKey(each.screened_on),
+		title: 'Screened',
+		lines: [`Number ${each.number} of the site’s screening log.`]
+	}));
+	for (const each of consents)
+		items.push({
+			id: each.id,
+			kind: 'consent',
+			when: instantText(each.signed_at, site.zone),
+			key: instantKey(each.signed_at, site.zone),
+			title: `Consent, version ${each.label}`,
+			lines: [
+				`Signed by the ${each.signed_by === 'participant' ? 'participant' : 'legally acceptable representative'}; explained by ${each.name}; a copy was given.`
+			]
+		});
+	items.push({
+		id: subject.id,
+		kind: 'enrolment',
+		when: dayWords(subject.enrolled_on),
+		// After a consent of the same day, before the first visit.
+		key: dayKey(subject.enrolled_on, '~1'),
+		title: 'Enrolled',
+		lines: subject.imported_as
+			? [`Taken over from a file, where the subject is “${subject.imported_as}”.`]
+			: []
+	});
+	if (subject.randomised_at)
+		items.push({
+			id: `${subject.id}-randomised`,
+			kind: 'randomisation',
+			when: instantText(subject.randomised_at, site.zone),
+			key: dayKey(dateInZone(subject.randomised_at, site.zone), '~2'),
+			title: 'Randomised',
+			lines: [`Kit ${subject.kit_number ?? ''}.`]
+		});
+	return items;
+}
+
+async function visitsOf(
+	reader: Reader,
+	studyId: string,
+	subjectId: string,
+	site: SiteNow
+): Promise<{ items: RecordItem[]; ahead: VisitAhead[] }> {
+	const visits = await reader
+		.selectFrom('visit as v')
+		.leftJoin('appointment as a', (join) =>
+			join.onRef('a.visit_id', '=', 'v.id').on('a.status', '=', 'booked')
+		)
+		.leftJoin('room as r', 'r.id', 'a.room_id')
+		.leftJoin('person as f', 'f.id', 'v.finished_by')
+		.select([
+			'v.id',
+			'v.name',
+			'v.position',
+			'v.status',
+			'v.earliest',
+			'v.target',
+			'v.latest',
+			'v.happened_on',
+			'v.study_time',
+			'v.missed_reason',
+			'v.finished_at',
+			'f.name as finished_by',
+			'a.starts_at',
+			'r.name as room'
+		])
+		.where('v.study_id', '=', studyId)
+		.where('v.subject_id', '=', subjectId)
+		.orderBy('v.position')
+		.execute();
+	const values = await measurementsOf(reader, studyId, subjectId);
+	const items: RecordItem[] = [];
+	const ahead: VisitAhead[] = [];
+	for (const visit of visits) {
+		const window = windowOfRow(visit);
+		const windowWords = window
+			? `Window ${windowText(window)}, target ${shortDateText(window.target)}.`
+			: '';
+		if (visit.status === 'planned' || visit.status === 'booked') {
+			ahead.push({
+				id: visit.id,
+				name: visit.name,
+				window: window ? windowText(window) : 'not known yet',
+				earliest: visit.earliest,
+				target: visit.target,
+				latest: visit.latest,
+				status: visit.status,
+				booked: visit.starts_at
+					? `${instantText(visit.starts_at, site.zone)}${visit.room ? `, ${visit.room}` : ''}`
+					: null,
+				bookedOn: visit.starts_at ? dateInZone(visit.starts_at, site.zone) : null
+			});
+			continue;
+		}
+		const day = visit.happened_on ?? visit.latest;
+		items.push({
+			id: visit.id,
+			kind: 'visit',
+			when: visit.happened_on
+				? dayWords(visit.happened_on)
+				: visit.study_time !== null
+					? `study time ${visit.study_time}`
+					: window
+						? windowText(window)
+						: '',
+			// Visits without a date stand after the enrolment, by their order.
+			key: day ? dayKey(day, '~3') : dayKey('9999', String(visit.position).padStart(4, '0')),
+			title: `${visit.name}: ${visit.status}`,
+			lines: [
+				windowWords,
+				visit.missed_reason ? `Reason: ${visit.missed_reason}` : '',
+				visit.finished_at && visit.finished_by
+					? `Finished ${instantText(visit.finished_at, site.zone)} by ${visit.finished_by}.`
+					: ''
+			].filter(Boolean),
+			visitId: visit.id,
+			measurements: values.get(visit.id) ?? []
+		});
+	}
+	return { items, ahead };
+}
+
+const mailWords: Record<string, string> = {
+	'visit-invitation': 'Invitation to a visit',
+	'visit-moved': 'A visit was moved',
+	'visit-cancelled': 'A visit was cancelled'
+};
+
+async function alongTheWay(
+	reader: Reader,
+	studyId: string,
+	subjectId: string,
+	site: SiteNow
+): Promise<RecordItem[]> {
+	const contacts = await reader
+		.selectFrom('contact_attempt as c')
+		.innerJoin('person as p', 'p.id', 'c.by')
+		.leftJoin('visit as v', 'v.id', 'c.visit_id')
+		.select([
+			'c.id',
+			'c.at',
+			'c.way',
+			'c.outcome',
+			'c.next_step',
+			'c.try_again_on',
+			'p.name as by',
+			'v.name as visit'
+		])
+		.where('c.study_id', '=', studyId)
+		.where('c.subject_id', '=', subjectId)
+		.execute();
+	const deviations = await reader
+		.selectFrom('deviation')
+		.select(['id', 'category', 'detail', 'important', 'found_at'])
+		.where('study_id', '=', studyId)
+		.where('subject_id', '=', subjectId)
+		.execute();
+	const exits = await reader
+		.selectFrom('study_exit')
+		.select(['id', 'kind', 'happened_on', 'reason'])
+		.where('study_id', '=', studyId)
+		.where('subject_id', '=', subjectId)
+		.execute();
+	const mails = await reader
+		.selectFrom('mail')
+		.select(['id', 'kind', 'status', 'created_at', 'sent_at'])
+		.where('study_id', '=', studyId)
+		.where('subject_id', '=', subjectId)
+		.execute();
+	const items: RecordItem[] = [];
+	for (const each of contacts)
+		items.push({
+			id: each.id,
+			kind: 'contact',
+			when: instantText(each.at, site.zone),
+			key: instantKey(each.at, site.zone),
+			title: `Contact by ${each.way}: ${each.outcome}`,
+			lines: [
+				each.visit ? `About ${each.visit}.` : '',
+				each.next_step ? `Next step: ${each.next_step}` : '',
+				each.try_again_on ? `Try again on ${dayWords(each.try_again_on)}.` : '',
+				`By ${each.by}.`
+			].filter(Boolean)
+		});
+	for (const each of deviations)
+		items.push({
+			id: each.id,
+			kind: 'deviation',
+			when: instantText(each.found_at, site.zone),
+			key: instantKey(each.found_at, site.zone),
+			title: `Deviation: ${each.category}${each.important ? ', important' : ''}`,
+			lines: [each.detail]
+		});
+	for (const each of exits)
+		items.push({
+			id: each.id,
+			kind: 'exit',
+			when: dayWords(each.happened_on),
+			key: dayKey(each.happened_on, '~4'),
+			title: each.kind.charAt(0).toUpperCase() + each.kind.slice(1),
+			lines: [
+				exitMeanings[each.kind as ExitKind],
+				each.reason ? `Said: ${each.reason}` : ''
+			].filter(Boolean)
+		});
+	for (const each of mails)
+		items.push({
+			id: each.id,
+			kind: 'mail',
+			when: instantText(each.sent_at ?? each.created_at, site.zone),
+			key: instantKey(each.sent_at ?? each.created_at, site.zone),
+			title: mailWords[each.kind] ?? each.kind,
+			lines: [each.status === 'sent' ? 'Sent by e-mail.' : `E-mail: ${each.status}.`]
+		});
+	return items;
+}

@@ -1,0 +1,14 @@
+/** The public face of the statistics: import from here, not from the files behind it. */
+export { ENGINE_VERSION } from './engine.js';
+export { StatsError, statsErrorCodes, type StatsErrorCode } from './errors.js';
+export { analyseGrowth } from './growth/analyse-growth.js';
+export { buildDesign, type Design } from './design/design.js';
+export { fitMixed, type Fit, type FitOptions } from './fit/fit-mixed.js';
+export { precisionRule, type PrecisionRule } from './inference/degrees-of-freedom.js';
+export { testContrast } from './inference/contrast.js';
+export { effectiveSampleSize, intraclassCorrelation } from './inference/effective-size.js';
+export { varianceIntervals } from './inference/variance-intervals.js';
+export { subjectEffects } from './prediction/subject-effects.js';
+export { fittedLines } from './prediction/lines.js';
+export { marginalResiduals, residualPoints } from './prediction/residuals.js';
+export type * from './types.js';

@@ -1,0 +1,40 @@
+import { z } from 'zod';
+import {
+	askForList,
+	getAllocationState
+} from '$lib/domain/randomisation/allocation.commands.server';
+import { endpoint } from '$lib/server/api/endpoint';
+
+export const GET = endpoint({
+	summary: 'Whether there is an allocation list: its method, hash and count, never what it holds.',
+	response: z.object({
+		record: z
+			.object({
+				method: z.string(),
+				hash: z.string(),
+				count: z.number(),
+				madeAt: z.iso.datetime(),
+				askedBy: z.string()
+			})
+			.nullable(),
+		job: z
+			.object({
+				id: z.uuid(),
+				status: z.string(),
+				fraction: z.number(),
+				message: z.string()
+			})
+			.nullable()
+	}),
+	handle: async ({ actor, params }) => {
+		const { record, job } = await getAllocationState(actor, params.study as string);
+		return { record: record && { ...record, madeAt: record.madeAt.toISOString() }, job };
+	}
+});
+
+export const POST = endpoint({
+	summary: 'Asks for the allocation list, once.',
+	response: z.object({ jobRunId: z.uuid() }),
+	status: 201,
+	handle: ({ actor, params }) => askForList(actor, params.study as string)
+});

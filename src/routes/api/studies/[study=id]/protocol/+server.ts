@@ -1,0 +1,50 @@
+import { z } from 'zod';
+import { checkDefinition } from '$lib/domain/study/check';
+import { editDraftVisit } from '$lib/domain/study/study.commands.server';
+import { editVisitInput } from '$lib/domain/study/study.input';
+import { getProtocol } from '$lib/domain/study/study.reads.server';
+import { endpoint } from '$lib/server/api/endpoint';
+
+export const GET = endpoint({
+	summary:
+		'The newest protocol version: its definition, and what the check before publishing finds.',
+	response: z.object({
+		id: z.uuid(),
+		number: z.number(),
+		status: z.enum(['draft', 'published']),
+		publishedAt: z.iso.datetime().nullable(),
+		version: z.number(),
+		definition: z.record(z.string(), z.unknown()),
+		findings: z.array(
+			z.object({ weight: z.enum(['stops', 'warns']), path: z.string(), message: z.string() })
+		)
+	}),
+	handle: async ({ actor, params }) => {
+		const { id, number, status, publishedAt, version, definition } = await getProtocol(
+			actor,
+			params.study as string
+		);
+		return {
+			id,
+			number,
+			status,
+			publishedAt: publishedAt?.toISOString() ?? null,
+			version,
+			definition,
+			findings: checkDefinition(definition).map(({ weight, path, problem }) => ({
+				weight,
+				path,
+				message: problem.message
+			}))
+		};
+	}
+});
+
+export const PATCH = endpoint({
+	summary: 'Changes a visit of the draft.',
+	body: editVisitInput,
+	response: z.object({ version: z.number() }),
+	needsVersion: true,
+	handle: ({ actor, params, body, version }) =>
+		editDraftVisit(actor, params.study as string, body, version)
+});
