@@ -1,4 +1,10 @@
-import { error, redirect, type Handle, type HandleServerError } from '@sveltejs/kit';
+import {
+	error,
+	redirect,
+	type Handle,
+	type HandleServerError,
+	type ServerInit
+} from '@sveltejs/kit';
 import { sequence } from '@sveltejs/kit/hooks';
 import { newId } from '$lib/id';
 import { Refusal } from '$lib/refusal';
@@ -8,9 +14,16 @@ import { countTry } from '$lib/server/auth/throttle';
 import { problem } from '$lib/server/api/problem';
 import { recordRefusal } from '$lib/server/change';
 import { config } from '$lib/server/config';
+import { database } from '$lib/server/db/db';
 import { log } from '$lib/server/log';
 import { accessOf, mayEnter } from '$lib/server/routes';
 import { clock } from '$lib/time/clock';
+
+/** A wrong environment stops the start with its own sentence; requests in hand end before the database is let go. */
+export const init: ServerInit = () => {
+	config();
+	process.on('sveltekit:shutdown', () => void database().close());
+};
 
 const reading = new Set(['GET', 'HEAD', 'OPTIONS']);
 
