@@ -130,6 +130,35 @@ begin
 	return coalesce(new, old);
 end $$;
 
+-- The same for rows that come in by the thousand: one statement's new rows, each with its own event. For tables that hold
+-- no secret and name no person.
+create function audit.record_inserts() returns trigger language plpgsql security definer set search_path = pg_catalog as $$
+declare
+	who uuid := nullif(current_setting('heddle.actor', true), '')::uuid;
+	acting text := coalesce(nullif(current_setting('heddle.role', true), ''), 'none');
+	request text := coalesce(nullif(current_setting('heddle.request', true), ''), 'none');
+	why text := nullif(current_setting('heddle.reason', true), '');
+	told timestamptz := app.now();
+	wall timestamptz := clock_timestamp();
+	kind text := tg_table_name;
+begin
+	if who is null then
+		raise exception using errcode = 'HD001', message = 'A change needs an actor: none is set for this transaction.';
+	end if;
+	insert into audit.event (at, wall_at, actor, role, request_id, action, record, record_id, study_id, site_id,
+		subject_id, personal, before, after, reason, digest)
+	select told, wall, who, acting, request, 'create', kind, e.record_id, e.study_id, e.site_id, e.subject_id, false, null,
+		e.after, why, audit.digest_of(row(null, told, wall, null, who, acting, request, 'create', kind, e.record_id,
+			e.study_id, e.site_id, e.subject_id, false, null, e.after, why, null)::audit.event)
+	from (
+		select j as after, j ->> 'id' as record_id, (j ->> 'study_id')::uuid as study_id, (j ->> 'site_id')::uuid as site_id,
+			(case when kind = 'subject' then j ->> 'id' else j ->> 'subject_id' end)::uuid as subject_id
+		-- Each row is turned into JSON once: without the offsets it would be at every mention.
+		from (select to_jsonb(f) as j from fresh f offset 0) as rows offset 0
+	) as e;
+	return null;
+end $$;
+
 -- An act that changes no row but must stand in the trail: a download, an export, a reading of closed material.
 create function audit.act(p_record text, p_record_id text, p_study uuid, p_site uuid, p_subject uuid, p_detail jsonb)
 returns bigint language sql security definer set search_path = pg_catalog as

@@ -85,7 +85,8 @@ create trigger contact_details_version before update on app.contact_details for 
 create trigger screening_version before update on app.screening for each row execute function app.bump_version();
 create trigger consent_version before update on app.consent for each row execute function app.bump_version();
 create trigger study_exit_version before update on app.study_exit for each row execute function app.bump_version();
-create trigger subject_audit after insert or update or delete on app.subject for each row execute function audit.record_change();
+create trigger subject_begun after insert on app.subject referencing new table as fresh for each statement execute function audit.record_inserts();
+create trigger subject_audit after update or delete on app.subject for each row execute function audit.record_change();
 create trigger contact_details_audit after insert or update or delete on app.contact_details for each row execute function audit.record_change('', 'personal');
 create trigger screening_audit after insert or update or delete on app.screening for each row execute function audit.record_change();
 create trigger consent_audit after insert or update or delete on app.consent for each row execute function audit.record_change();

@@ -134,11 +134,13 @@ create trigger appointment_version before update on app.appointment for each row
 create trigger contact_attempt_version before update on app.contact_attempt for each row execute function app.bump_version();
 create trigger deviation_version before update on app.deviation for each row execute function app.bump_version();
 create trigger measurement_version before update on app.measurement for each row execute function app.bump_version();
-create trigger visit_audit after insert or update or delete on app.visit for each row execute function audit.record_change();
+create trigger visit_begun after insert on app.visit referencing new table as fresh for each statement execute function audit.record_inserts();
+create trigger visit_audit after update or delete on app.visit for each row execute function audit.record_change();
 create trigger appointment_audit after insert or update or delete on app.appointment for each row execute function audit.record_change();
 create trigger contact_attempt_audit after insert or update or delete on app.contact_attempt for each row execute function audit.record_change();
 create trigger deviation_audit after insert or update or delete on app.deviation for each row execute function audit.record_change();
-create trigger measurement_audit after insert or update or delete on app.measurement for each row execute function audit.record_change();
+create trigger measurement_begun after insert on app.measurement referencing new table as fresh for each statement execute function audit.record_inserts();
+create trigger measurement_audit after update or delete on app.measurement for each row execute function audit.record_change();
 
 grant select, insert, update on app.visit, app.appointment, app.contact_attempt, app.deviation, app.measurement to heddle_app;
 grant select on app.visit, app.measurement, app.deviation to heddle_unmasked;

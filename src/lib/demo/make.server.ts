@@ -32,7 +32,16 @@ import { addDays, plainDateOf, type PlainDate } from '$lib/time/dates';
 import { aldermere, aldermereSites } from './aldermere';
 import { larkfieldFile } from './larkfield';
 import { Trial, type Cast, type SiteCast } from './play-aldermere.server';
-import { acting, at, demoPassword, give, join, postMail } from './stage.server';
+import {
+	acting,
+	at,
+	demoPassword,
+	give,
+	join,
+	leaveStage,
+	postMail,
+	takeStage
+} from './stage.server';
 
 /** The two sides of the database: the demo stands in for all three processes. */
 export interface Sides {
@@ -379,6 +388,7 @@ export async function makeDemo(sides: Sides, tell: Tell): Promise<DemoAccount[]>
 	clock.reset();
 	const now = clock.now();
 	const today = plainDateOf(now.toISOString().slice(0, 10));
+	takeStage();
 	tell(0.01, 'Inviting the people of the demo');
 	at(new Date(`${addDays(today, -470)}T08:00:00Z`));
 	const ids = await people();
@@ -394,7 +404,7 @@ export async function makeDemo(sides: Sides, tell: Tell): Promise<DemoAccount[]>
 	await cohort(ids, sides, today);
 	tell(0.95, 'Posting the mail');
 	await postMail();
-	clock.reset();
+	leaveStage();
 	return accounts();
 }
 

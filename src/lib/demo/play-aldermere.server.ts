@@ -26,7 +26,7 @@ import {
 	type StoryVisit
 } from './aldermere';
 import { Places, workingDay } from './calendar';
-import { at } from './stage.server';
+import { at, besideOthers } from './stage.server';
 
 export interface SiteCast {
 	id: string;
@@ -60,31 +60,40 @@ interface Act {
 	run: () => Promise<void>;
 }
 
-/** Acts sorted by day; an act may add later ones. */
+/** Acts by site and day; an act may add later ones. Within a day the sites act side by side, as sites do. */
 class Diary {
 	private readonly days = new Map<string, Act[]>();
-	constructor(private readonly now: Date) {}
+	constructor(
+		private readonly now: Date,
+		private readonly sites: number
+	) {}
 
-	add(when: Date, run: () => Promise<void>): void {
+	add(site: number, when: Date, run: () => Promise<void>): void {
 		// What has not come yet is left to whoever tries the demo.
 		if (when >= this.now) return;
-		const day = when.toISOString().slice(0, 10);
-		const acts = this.days.get(day);
+		const key = `${site}|${when.toISOString().slice(0, 10)}`;
+		const acts = this.days.get(key);
 		if (acts) acts.push({ when, run });
-		else this.days.set(day, [{ when, run }]);
+		else this.days.set(key, [{ when, run }]);
 	}
 
 	async play(from: PlainDate, to: PlainDate, each: (share: number) => void): Promise<void> {
 		const whole = daysBetween(from, to) + 1;
 		for (let day = from, n = 0; day <= to; day = addDays(day, 1), n++) {
-			const acts = this.days.get(day) ?? [];
-			while (acts.length > 0) {
-				acts.sort((a, b) => a.when.getTime() - b.when.getTime());
-				const act = acts.shift() as Act;
-				at(act.when);
-				await act.run();
-			}
+			await Promise.all(
+				Array.from({ length: this.sites }, (_, site) => besideOthers(() => this.playDay(site, day)))
+			);
 			each((n + 1) / whole);
+		}
+	}
+
+	private async playDay(site: number, day: PlainDate): Promise<void> {
+		const acts = this.days.get(`${site}|${day}`) ?? [];
+		while (acts.length > 0) {
+			acts.sort((a, b) => a.when.getTime() - b.when.getTime());
+			const act = acts.shift() as Act;
+			at(act.when);
+			await act.run();
 		}
 	}
 }
@@ -114,7 +123,7 @@ export class Trial {
 		private readonly now: Date,
 		private readonly today: PlainDate
 	) {
-		this.diary = new Diary(now);
+		this.diary = new Diary(now, cast.sites.length);
 	}
 
 	private site = (number: number) => this.cast.sites[number] as SiteCast;
@@ -127,10 +136,10 @@ export class Trial {
 			const hour = 8 + (number % 4);
 			const time = `${String(hour).padStart(2, '0')}:${number % 2 ? '10' : '40'}`;
 			const arrives = this.local(subject.site, subject.enrolsOn, time);
-			this.diary.add(arrives, () => this.enrol(subject, arrives));
+			this.diary.add(subject.site, arrives, () => this.enrol(subject, arrives));
 		});
 		for (const failure of aldermereFailures(this.today))
-			this.diary.add(this.local(failure.site, failure.on, '15:20'), () =>
+			this.diary.add(failure.site, this.local(failure.site, failure.on, '15:20'), () =>
 				this.turnAway(failure.site, failure.on, failure.reason)
 			);
 		const first = people[0]?.enrolsOn ?? this.today;
@@ -201,7 +210,7 @@ export class Trial {
 		if (subject.leaves) {
 			const day = addDays(subject.enrolsOn, subject.leaves.afterDays);
 			const { kind } = subject.leaves;
-			this.diary.add(this.local(subject.site, day, '16:00'), async () => {
+			this.diary.add(subject.site, this.local(subject.site, day, '16:00'), async () => {
 				if (kind === 'lost to follow-up')
 					for (const outcome of ['no answer', 'message left'] as const)
 						await logContact(coordinator, studyId, visits[1]?.id ?? '', {
@@ -251,7 +260,9 @@ export class Trial {
 	): void {
 		if (number === 0) {
 			// The baseline is measured on the day of enrolment itself.
-			this.diary.add(notBefore, () => this.measure(subject, slows, visit, story, notBefore));
+			this.diary.add(subject.site, notBefore, () =>
+				this.measure(subject, slows, visit, story, notBefore)
+			);
 			return;
 		}
 		const { site } = subject;
@@ -282,7 +293,9 @@ export class Trial {
 		const bookedAt = booking > notBefore ? booking : minutesLater(notBefore, 90);
 		const outside =
 			story.fate === 'kept' ? '' : story.fate === 'late' ? 'Away until then.' : 'Away afterwards.';
-		this.diary.add(bookedAt, () => this.book(subject, slows, visit, story, day, outside));
+		this.diary.add(subject.site, bookedAt, () =>
+			this.book(subject, slows, visit, story, day, outside)
+		);
 	}
 
 	private async book(
@@ -322,7 +335,7 @@ export class Trial {
 		}
 		const nurse = pairs[place.pair]?.nurse as Actor;
 		const starts = this.local(subject.site, day, place.time);
-		this.diary.add(starts, () =>
+		this.diary.add(subject.site, starts, () =>
 			this.measure(subject, slows, { ...visit, version: booked.visitVersion }, story, starts, nurse)
 		);
 	}
@@ -374,7 +387,7 @@ export class Trial {
 		const { coordinator } = this.site(subject.site);
 		if (gone && visit.latest >= gone) return;
 		const call = (day: PlainDate, outcome: 'no answer' | 'message left', nextStep: string) =>
-			this.diary.add(this.local(subject.site, day, '11:20'), async () => {
+			this.diary.add(subject.site, this.local(subject.site, day, '11:20'), async () => {
 				await logContact(coordinator, studyId, visit.id, {
 					way: 'telephone',
 					outcome,
@@ -384,10 +397,14 @@ export class Trial {
 			});
 		call(addDays(visit.latest, -2), 'no answer', 'Call again in the evening.');
 		call(addDays(visit.latest, 3), 'message left', 'Wait for the call back.');
-		this.diary.add(this.local(subject.site, addDays(visit.latest, 18), '10:05'), async () => {
-			await declareMissed(coordinator, studyId, visit.id, visit.version, {
-				reason: 'Could not be reached before the window closed.'
-			});
-		});
+		this.diary.add(
+			subject.site,
+			this.local(subject.site, addDays(visit.latest, 18), '10:05'),
+			async () => {
+				await declareMissed(coordinator, studyId, visit.id, visit.version, {
+					reason: 'Could not be reached before the window closed.'
+				});
+			}
+		);
 	}
 }

@@ -1,3 +1,4 @@
+import { AsyncLocalStorage } from 'node:async_hooks';
 import { newId } from '$lib/id';
 import type { Actor } from '$lib/server/actor';
 import { systemActor } from '$lib/server/actor';
@@ -13,8 +14,26 @@ import { clock } from '$lib/time/clock';
 import { plainDateOf } from '$lib/time/dates';
 import { config } from '$lib/server/config';
 
+/** Sites act side by side, each at its own moment of the same day. */
+const moments = new AsyncLocalStorage<{ instant: Date | null }>();
+const shared: { instant: Date | null } = { instant: null };
+
+/** The clock follows the demo until `leaveStage`. */
+export const takeStage = (): void => clock.follow(() => (moments.getStore() ?? shared).instant);
+
+export function leaveStage(): void {
+	shared.instant = null;
+	clock.follow(null);
+}
+
 /** Sets the clock for what follows; each act of the demo happens when it says it does. */
-export const at = (instant: Date): void => clock.set(instant);
+export function at(instant: Date): void {
+	(moments.getStore() ?? shared).instant = instant;
+}
+
+/** Runs `work` with a moment of its own. */
+export const besideOthers = <T>(work: () => Promise<T>): Promise<T> =>
+	moments.run({ instant: shared.instant }, work);
 
 /** One password for every account of the demo: long, and of no use anywhere else. */
 export const demoPassword = 'linen warp and weft';

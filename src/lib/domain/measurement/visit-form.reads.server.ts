@@ -42,6 +42,7 @@ function keptOf(row: MeasurementRow, names: ReadonlyMap<string, string>, zone: s
 		notDone: row.not_done_reason,
 		softAnswer: row.soft_answer,
 		comment: row.comment,
+		takenAt: row.taken_at?.toISOString() ?? null,
 		takenOn: row.taken_at ? dateInZone(row.taken_at, zone) : null,
 		takenTime: row.taken_at ? timeInZone(row.taken_at, zone) : null,
 		takenText: row.taken_at ? instantText(row.taken_at, zone) : null,

@@ -17,6 +17,8 @@ export interface KeptValue {
 	notDone: string | null;
 	softAnswer: string | null;
 	comment: string | null;
+	/** ISO, for sending back unchanged. */
+	takenAt: string | null;
 	takenOn: string | null;
 	takenTime: string | null;
 	takenText: string | null;

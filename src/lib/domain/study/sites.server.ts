@@ -1,5 +1,5 @@
 import type { Actor } from '$lib/server/actor';
-import type { Reader } from '$lib/server/change';
+import { read, type Reader } from '$lib/server/change';
 import { rolesFor, type Capability } from '$lib/server/permission';
 
 export interface SiteHead {
@@ -31,3 +31,10 @@ export async function sitesFor(
 		.orderBy('code')
 		.execute();
 }
+
+export const findSitesWhere = (
+	actor: Actor,
+	studyId: string,
+	capability: Capability
+): Promise<SiteHead[]> =>
+	read(actor, capability, { studyId }, (reader) => sitesFor(reader, actor, studyId, capability));
