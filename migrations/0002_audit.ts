@@ -191,6 +191,7 @@ end $$;
 -- One row for each break found; no row means that the whole trail holds.
 create function audit.verify() returns table (seal bigint, event_id bigint, what text)
 language plpgsql security definer set search_path = pg_catalog as $$
+#variable_conflict use_column
 begin
 	return query
 		select s.seal, e.id, 'the row was altered after it was written' from audit.event e

@@ -46,6 +46,7 @@ create table app.appointment (
 	outside_reason text check (outside_reason is null or length(btrim(outside_reason)) between 1 and 500),
 	calendar_uid uuid not null unique,
 	calendar_sequence integer not null default 0 check (calendar_sequence >= 0),
+	changed_at timestamptz not null default app.now(),
 	version integer not null default 1,
 	check (ends_at > starts_at and ends_at <= starts_at + interval '12 hours'),
 	constraint room_taken exclude using gist (room_id with =, tstzrange(starts_at, ends_at) with &&) where (status = 'booked'),

@@ -73,6 +73,7 @@ create table closed.released_copy (
 create trigger allocation_list_audit after insert or update or delete on closed.allocation_list for each row execute function audit.record_change('seed');
 -- The list's own row carries the hash of every position; only the use of a position is an event.
 create trigger list_position_audit after update or delete on closed.list_position for each row execute function audit.record_change();
+create trigger arm_letter_audit after insert or update or delete on closed.arm_letter for each row execute function audit.record_change();
 create trigger look_request_audit after insert or update or delete on closed.look_request for each row execute function audit.record_change();
 create trigger look_result_audit after insert or update or delete on closed.look_result for each row execute function audit.record_change('result');
 create trigger closed_report_audit after insert or update or delete on closed.closed_report for each row execute function audit.record_change('file_key');

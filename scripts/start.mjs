@@ -96,6 +96,12 @@ async function startHosted(args) {
 		throw new Trouble(
 			'--empty is for the local start; DATABASE_URL is set, so no demo is made anyway.'
 		);
+	const unset = ['ORIGIN', 'AUTH_SECRET', 'HEDDLE_KEY'].filter((name) => !env[name]);
+	if (!env.STORAGE_DIR && !env.S3_BUCKET) unset.push('STORAGE_DIR or S3_BUCKET');
+	if (unset.length > 0)
+		throw new Trouble(
+			`DATABASE_URL is set, so this is an installation of its own; it also needs ${unset.join(', ')} (see .env.example).`
+		);
 	if (env.DATABASE_OWNER_URL) await migrate(env);
 	const processes = new Processes({ logs: null, say });
 	undo.push(() => processes.stop());

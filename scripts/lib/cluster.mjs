@@ -5,6 +5,7 @@ import {
 	existsSync,
 	mkdirSync,
 	readFileSync,
+	readdirSync,
 	renameSync,
 	rmSync,
 	statSync,
@@ -81,11 +82,11 @@ export async function openCluster({ state, port, passwords, throwAway = false, s
 		throw new Trouble(
 			`${data} is there but is no PostgreSQL cluster (PG_VERSION is missing). Nothing was touched: put it back from a backup, or move it away.`
 		);
-	const fresh = `${data}.new`;
-	if (existsSync(fresh)) {
+	// A name of its own: the programs of a killed run may live on for a moment and write into theirs.
+	const fresh = `${data}.new-${process.pid}`;
+	for (const name of readdirSync(home).filter((entry) => entry.startsWith('data.new'))) {
 		say('An earlier run was stopped while it made the database cluster: making it afresh');
-		await stopCluster({ ...cluster, data: fresh });
-		rmSync(fresh, { recursive: true, force: true });
+		rmSync(join(home, name), { recursive: true, force: true, maxRetries: 5 });
 	}
 	say(`Making a private PostgreSQL ${version} cluster in ${home.replace(`${root}/`, '')}`);
 	// initdb cannot read the password from a child's stdin, which is a socket.
@@ -186,7 +187,7 @@ export async function startCluster(cluster) {
 		);
 	throw new Trouble(
 		explain({ message: said }) ??
-			`The database did not start; the data are untouched. It said:\n${said.trim().split('\n').slice(-12).join('\n')}`
+			`The database did not start; the data are untouched.\n${said.trim().split('\n').slice(-12).join('\n')}`.trim()
 	);
 }
 

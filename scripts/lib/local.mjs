@@ -20,7 +20,7 @@ import {
 } from './databases.mjs';
 import { environmentFor } from './environment.mjs';
 import { folder, readJson, root, writeJson } from './places.mjs';
-import { anyFreePort } from './ports.mjs';
+import { anyFreePort, usualPorts } from './ports.mjs';
 import { Trouble, explain, say } from './say.mjs';
 import { secrets } from './secrets.mjs';
 
@@ -86,6 +86,10 @@ export async function withLocal(work) {
 /** @param {Local} local @param {string} [name] */
 export const localUrls = ({ cluster, keys }, name = database) => urls(cluster, keys, name);
 
+/** The address the web server has, or had when it last ran. */
+const localOrigin = () =>
+	process.env.ORIGIN ?? `http://127.0.0.1:${readJson(at('ports.json'))?.web ?? usualPorts.web}`;
+
 /** Everything the local processes may be given; each gets its own part. @param {Local} local @param {string} [name] @param {string} [suffix] */
 export function localEnvironment(local, name = database, suffix = '') {
 	const all = localUrls(local, name);
@@ -93,6 +97,7 @@ export function localEnvironment(local, name = database, suffix = '') {
 		DATABASE_URL: all.appUrl,
 		DATABASE_OWNER_URL: all.ownerUrl,
 		DATABASE_UNMASKED_URL: all.unmaskedUrl,
+		ORIGIN: localOrigin(),
 		AUTH_SECRET: local.keys.AUTH_SECRET,
 		HEDDLE_KEY: local.keys.HEDDLE_KEY,
 		CLOSED_KEY: local.keys.CLOSED_KEY,

@@ -62,8 +62,12 @@ export async function choosePorts({ state, fixed = {}, say, free = isFree }) {
 	const saved = readJson(file) ?? {};
 	/** @type {Set<number>} */
 	const taken = new Set();
+	// One part's neighbour must not push the others along, so that addresses stay what they were.
+	const wish = (/** @type {keyof Ports} */ part) =>
+		fixed[part] ?? (Number.isInteger(saved[part]) ? saved[part] : usualPorts[part]);
 	const chosen = { ...usualPorts };
-	for (const part of /** @type {(keyof Ports)[]} */ (Object.keys(usualPorts))) {
+	const parts = /** @type {(keyof Ports)[]} */ (Object.keys(usualPorts));
+	for (const part of parts) {
 		const asked = fixed[part];
 		if (asked !== undefined) {
 			if (taken.has(asked) || !(await free(asked)))
@@ -72,8 +76,12 @@ export async function choosePorts({ state, fixed = {}, say, free = isFree }) {
 				);
 			chosen[part] = asked;
 		} else {
-			const wanted = Number.isInteger(saved[part]) ? saved[part] : usualPorts[part];
-			chosen[part] = await firstFree(wanted, taken, free);
+			const wanted = wish(part);
+			const others = parts.filter((other) => other !== part).map(wish);
+			chosen[part] =
+				!taken.has(wanted) && (await free(wanted))
+					? wanted
+					: await firstFree(wanted + 1, new Set([...taken, ...others]), free);
 			if (chosen[part] !== wanted)
 				say(
 					`Port ${wanted} (${names[part]}) is taken by another program: using ${chosen[part]}.` +

@@ -4,6 +4,12 @@ const started = process.hrtime.bigint();
 const elapsed = () =>
 	`${(Number(process.hrtime.bigint() - started) / 1e9).toFixed(1)} s`.padStart(8);
 
+// Whoever reads may stop reading (`npm run trace | head`): that is no fault.
+process.stdout.on('error', (error) => {
+	if (/** @type {NodeJS.ErrnoException} */ (error).code === 'EPIPE') process.exit();
+	throw error;
+});
+
 /** A line with the time since the start. @param {string} line */
 export function say(line) {
 	process.stdout.write(`${elapsed()}  ${line}\n`);

@@ -99,7 +99,12 @@ async function prepare(state, { throwAway, withDemo, say }) {
 	await ensureRoles(superUrl, passwords);
 	const file = join(state, 'cluster.json');
 	const before = readJson(file) ?? {};
-	const stamp = stampOf(root, ['migrations', 'src/lib/server/db', 'src/lib/server/jobs/queue.ts', 'package-lock.json']);
+	const stamp = stampOf(root, [
+		'migrations',
+		'src/lib/server/db',
+		'src/lib/server/jobs/queue.ts',
+		'package-lock.json'
+	]);
 	if (before.stamp !== stamp || !(await databaseExists(superUrl, migrated))) {
 		await build({ ...testBuild, say, web: false });
 		await dropDatabase(superUrl, `${migrated}_new`);

@@ -60,10 +60,10 @@ if (!office) {
 } else {
 	try {
 		process.exitCode = await office();
+		await database().close();
 	} catch (error) {
 		console.error(error instanceof Error ? error.message : String(error));
-		process.exitCode = 1;
-	} finally {
-		await database().close();
+		// Whatever is still open must not keep the program waiting.
+		process.exit(1);
 	}
 }

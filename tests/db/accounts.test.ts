@@ -25,9 +25,10 @@ import { openDatabase, useDatabase, type Database } from '../../src/lib/server/d
 import { forgetSender } from '../../src/lib/server/jobs/queue';
 import { unwrap } from '../../src/lib/server/secret';
 import { clock } from '../../src/lib/time/clock';
+import { plainDateOf } from '../../src/lib/time/dates';
 import { freshDatabase, useEnvironment, type FreshDatabase } from '../support/database';
 import { addPerson, addRole, asOwner } from '../support/people';
-import { actorFrom, addBareStudy, grant, type BareStudy } from '../support/scene';
+import { actorFrom, addBareStudy, grant, type BareStudy } from '../support/bare-scene';
 
 const password = 'linen warp and weft';
 let db: FreshDatabase;
@@ -269,8 +270,8 @@ describe('roles', () => {
 			role,
 			studyId: more.studyId ?? '',
 			siteId: more.siteId ?? '',
-			validFrom: more.validFrom ?? today(),
-			validTo: more.validTo ?? ''
+			validFrom: plainDateOf(more.validFrom ?? today()),
+			validTo: more.validTo ? plainDateOf(more.validTo) : ''
 		});
 	const grantsOf = async (personId: string) => {
 		const [rows] = await db.sql(`select id, name, email from app.person where id = '${personId}'`);

@@ -204,7 +204,7 @@ describe('enrolment', () => {
 			contact: { name: 'Ada Reed', email: 'ada@example.org', phone: '', language: 'en' }
 		});
 		expect(readSubjectNumber(made.number).ok).toBe(true);
-		const [visits, [contact], [screening], [consent], [subject]] = await db.sql(
+		const [visits, [contact] = [], [screening] = [], [consent] = [], [subject] = []] = await db.sql(
 			`select name, earliest::text, target::text, latest::text, status from app.visit where subject_id = '${made.id}'`,
 			`select name, email, phone from app.contact_details where subject_id = '${made.id}'`,
 			`select outcome from app.screening where id = '${id}'`,

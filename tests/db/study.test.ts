@@ -51,7 +51,7 @@ describe('a new study', () => {
 	let studyId: string;
 	test('comes from its template with sites, rooms and consent versions', async () => {
 		({ studyId } = await createStudy(manager, input({ consentApprovedOn: '2025-02-03' })));
-		const [[study], sites, rooms, consents] = await db.sql(
+		const [[study] = [], sites, rooms, consents] = await db.sql(
 			`select code, masked, training, status from app.study where id = '${studyId}'`,
 			`select code, name, zone from app.site where study_id = '${studyId}' order by code`,
 			`select name from app.room where study_id = '${studyId}' order by name`,
@@ -127,7 +127,7 @@ describe('a new study', () => {
 	test('is published once: the schedule becomes rows, the study is open, the version is frozen', async () => {
 		const draft = await getProtocol(manager, studyId);
 		await publishProtocol(manager, studyId, draft.version);
-		const [visits, measures, grid, [study]] = await db.sql(
+		const [visits, measures, grid, [study] = []] = await db.sql(
 			`select key, name, position, length_minutes from app.planned_visit where study_id = '${studyId}' order by position`,
 			`select key, unit, decimals, kind from app.measure where study_id = '${studyId}' order by position`,
 			`select v.key as visit, m.key as measure from app.planned_measure g

@@ -15,7 +15,8 @@ function importsOf(file: string): string[] {
 		.map((match) => match[1] as string)
 		.flatMap((name) => {
 			if (name.startsWith('$lib/')) return [name.slice('$lib/'.length)];
-			if (name.startsWith('.')) return [relative(root, join(root, file, '..', name)).replaceAll('\\', '/')];
+			if (name.startsWith('.'))
+				return [relative(root, join(root, file, '..', name)).replaceAll('\\', '/')];
 			return [];
 		});
 }
@@ -28,13 +29,22 @@ const offending = (from: (file: string) => boolean, to: (name: string) => boolea
 	);
 
 test('the statistics import nothing of the rest', () => {
-	expect(offending((file) => file.startsWith('stats/'), (name) => !name.startsWith('stats'))).toEqual([]);
+	expect(
+		offending(
+			(file) => file.startsWith('stats/'),
+			(name) => !name.startsWith('stats')
+		)
+	).toEqual([]);
 });
 
 test('rules, units and time reach neither the server nor a component', () => {
 	const isRule = (file: string) =>
-		/^(domain|units|time|report)\//.test(file) && !file.includes('.server.') && !file.endsWith('.svelte');
-	expect(offending(isRule, (name) => name.startsWith('server') || name.startsWith('components/ui'))).toEqual([]);
+		/^(domain|units|time|report)\//.test(file) &&
+		!file.includes('.server.') &&
+		!file.endsWith('.svelte');
+	expect(
+		offending(isRule, (name) => name.startsWith('server') || name.startsWith('components/ui'))
+	).toEqual([]);
 	expect(offending(isRule, (name) => name.includes('.server'))).toEqual([]);
 });
 

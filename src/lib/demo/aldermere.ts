@@ -24,6 +24,8 @@ export interface StoryVisit {
 	bookedAhead: number;
 	/** Moved once before it took place. */
 	moved: boolean;
+	/** Nobody has got round to it: matters only if its window closes about now. */
+	waits: boolean;
 	notDone: 'potassium' | 'weight' | null;
 	noise: { egfr: number; systolic: number; diastolic: number; weight: number; potassium: number };
 }
@@ -118,13 +120,14 @@ function visitStory(draw: Chance, number: number): StoryVisit {
 	// The first visit is the day of enrolment; later ones are missed or late now and then.
 	const u = draw.next();
 	const fate: Fate =
-		number === 0 ? 'kept' : u < 0.05 ? 'missed' : u < 0.095 ? 'late' : u < 0.105 ? 'early' : 'kept';
+		number === 0 ? 'kept' : u < 0.07 ? 'missed' : u < 0.115 ? 'late' : u < 0.125 ? 'early' : 'kept';
 	return {
 		fate,
 		place: Math.max(-0.95, Math.min(0.95, draw.normal(0.05, 0.45))),
 		beyond: draw.whole(1, fate === 'early' ? 3 : 9),
-		bookedAhead: draw.whole(6, 24),
+		bookedAhead: draw.whole(4, 16),
 		moved: draw.happens(0.08),
+		waits: draw.happens(0.35),
 		notDone: draw.happens(0.03) ? 'potassium' : draw.happens(0.01) ? 'weight' : null,
 		noise: {
 			egfr: draw.normal(0, 2.6),
@@ -156,7 +159,7 @@ export function aldermere(today: PlainDate, subjects = 240, seed = 20_260_609): 
 			sex: female ? 'female' : 'male',
 			birthDate: addDays(enrolsOn, -Math.round(365.25 * clamp(draw.normal(58, 10), 32, 79))),
 			name: `${draw.pick(givenNames)} ${draw.pick(familyNames)}`,
-			email: draw.happens(0.7),
+			email: draw.happens(0.25),
 			egfr: clamp(draw.normal(48, 9), 27, 73),
 			slope: draw.normal(-4.2, 1.6),
 			systolic: draw.normal(136, 11),

@@ -4,6 +4,7 @@
  */
 let offsetMs = 0;
 let fixedMs: number | null = null;
+let told: (() => Date | null) | null = null;
 
 function milliseconds(instant: Date | string | number): number {
 	const value = new Date(instant).getTime();
@@ -14,7 +15,12 @@ function milliseconds(instant: Date | string | number): number {
 export const clock = {
 	/** This moment: the platform's, shifted by an offset if one is set, or the fixed one. */
 	now(): Date {
-		return new Date(fixedMs ?? Date.now() + offsetMs);
+		return told?.() ?? new Date(fixedMs ?? Date.now() + offsetMs);
+	},
+
+	/** For a program that does several things at once, each at a time of its own: `source` says which, or null. */
+	follow(source: (() => Date | null) | null): void {
+		told = source;
 	},
 
 	/** Stands still at `instant` until set again, advanced or reset. */
@@ -36,10 +42,11 @@ export const clock = {
 
 	/** Whether `now` is anything but the platform's own time. */
 	get moved(): boolean {
-		return fixedMs !== null || offsetMs !== 0;
+		return fixedMs !== null || offsetMs !== 0 || (told?.() ?? null) !== null;
 	},
 
 	reset(): void {
+		told = null;
 		offsetMs = 0;
 		fixedMs = null;
 	}

@@ -12,6 +12,7 @@ export const roles = [
 	'board_member'
 ] as const;
 export type Role = (typeof roles)[number];
+export const isRole = (text: string): text is Role => (roles as readonly string[]).includes(text);
 
 export const roleNames: Record<Role, string> = {
 	administrator: 'administrator',

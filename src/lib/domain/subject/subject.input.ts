@@ -42,8 +42,18 @@ export const consentInput = z.strictObject({
 		.refine((given) => given, 'Give a copy of what was signed, then record the consent.')
 });
 export type ConsentInput = z.output<typeof consentInput>;
-/** A box that is not ticked is not sent: it means no. */
-export const consentForm = consentInput.extend({
+/** A choice of which a form must not take the first by itself. */
+const chosen = (of: readonly string[], said: string) =>
+	z
+		.string()
+		.max(60)
+		.default('')
+		.refine((text): boolean => of.includes(text), said);
+
+/** The same as a form says it: a box that is not ticked is not sent, and means no. */
+export const consentForm = z.object({
+	...consentInput.shape,
+	signedBy: chosen(['participant', 'representative'], 'Say who signed.'),
 	copyGiven: z
 		.boolean()
 		.default(false)
@@ -101,6 +111,10 @@ export const exitInput = z.strictObject({
 	reason: z.string().trim().max(500, 'At most 500 characters.').default('')
 });
 export type ExitInput = z.output<typeof exitInput>;
+export const exitForm = z.object({
+	...exitInput.shape,
+	kind: chosen(exitKinds, 'Choose what happened.')
+});
 
 export const threadsQuery = z.object({
 	site: z.union([z.literal(''), z.uuid()]).optional(),

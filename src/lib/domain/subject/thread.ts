@@ -90,7 +90,7 @@ export function linePieces(
 	frame: Pick<ThreadFrame, 'from' | 'to'>
 ): [number, number][] {
 	const gap = (frame.to - frame.from) * 0.009;
-	const places = row.visits.flatMap((visit) => [visit.took ?? visit.target ?? []].flat());
+	const places = row.visits.flatMap((visit) => visit.took ?? visit.target ?? []);
 	const took = row.visits.flatMap((visit) => visit.took ?? []);
 	const first = Math.min(0, ...places.slice(0, 1), ...took);
 	const start = Math.max(frame.from, first - gap * 1.4);

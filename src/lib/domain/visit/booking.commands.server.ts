@@ -3,12 +3,13 @@ import { Refusal, type RefusalCode } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { change, mustHaveChanged, type Reader, type Writer } from '$lib/server/change';
 import { clock } from '$lib/time/clock';
-import { plainDateOf, shortDateText, type PlainDate } from '$lib/time/dates';
+import { isoWeekday, plainDateOf, shortDateText, type PlainDate } from '$lib/time/dates';
 import { dateInZone, instantFromLocal, localTimeKind } from '$lib/time/zones';
 import { checkOpening, openingText, spanOf, type TimeSpan } from '../schedule/booking';
 import { inWindow } from '../schedule/window';
-import { isoWeekday } from '$lib/time/dates';
+import { takeTurn } from '../subject/screening.commands.server';
 import { staffOn } from './booking.reads.server';
+import { tellSubject } from './visit-mail.server';
 import { refuseStale, refuseStep } from './steps.server';
 import type { BookVisitInput, CancelAppointmentInput, MoveAppointmentInput } from './visit.input';
 import { holdVisit, refuseIfLeft, scopeOfVisit, type VisitRow } from './visit.reads.server';
@@ -65,6 +66,7 @@ export async function bookVisit(
 				.returning('version')
 				.execute();
 			mustHaveChanged(changed);
+			await tellSubject(writer, 'visit-invitation', id);
 			return {
 				appointmentId: id,
 				version: appointment.version,
@@ -102,13 +104,15 @@ export async function moveAppointment(
 					ends_at: span.end,
 					zone: visit.site.zone,
 					outside_reason: reasonOutside(visit, span, input),
-					calendar_sequence: open.calendar_sequence + 1
+					calendar_sequence: open.calendar_sequence + 1,
+					changed_at: clock.now()
 				})
 				.where('id', '=', open.id)
 				.where('version', '=', version)
 				.returning('version')
 				.execute();
 			mustHaveChanged(changed);
+			await tellSubject(writer, 'visit-moved', open.id, open.starts_at);
 			return {
 				appointmentId: open.id,
 				version: changed[0]?.version ?? version + 1,
@@ -189,18 +193,30 @@ async function openAppointment(reader: Reader, visitId: string): Promise<OpenApp
 export async function closeAppointment(writer: Writer, open: OpenAppointment): Promise<number> {
 	const changed = await writer
 		.updateTable('appointment')
-		.set({ status: 'cancelled', calendar_sequence: open.calendar_sequence + 1 })
+		.set({
+			status: 'cancelled',
+			calendar_sequence: open.calendar_sequence + 1,
+			changed_at: clock.now()
+		})
 		.where('id', '=', open.id)
 		.where('version', '=', open.version)
 		.returning('version')
 		.execute();
 	mustHaveChanged(changed);
+	// What is over already needs no taking back.
+	if (open.starts_at > clock.now()) await tellSubject(writer, 'visit-cancelled', open.id);
 	return changed[0]?.version ?? open.version + 1;
+}
+
+/** For whoever settles a visit in another way: its open appointment, if any, will not be kept. */
+export async function closeOpenAppointment(writer: Writer, visitId: string): Promise<void> {
+	const open = await findOpenAppointment(writer, visitId);
+	if (open) await closeAppointment(writer, open);
 }
 
 /** The span the form means, once everything but who else is there at the time has been checked. */
 async function checkPlace(
-	reader: Reader,
+	writer: Writer,
 	visit: VisitRow,
 	input: BookVisitInput
 ): Promise<TimeSpan> {
@@ -228,7 +244,9 @@ async function checkPlace(
 		const sentence = new Refusal('OUTSIDE_WINDOW', facts).message;
 		throw new Refusal('OUTSIDE_WINDOW', facts, { outsideReason: sentence });
 	}
-	await checkRoomAndStaff(reader, visit, input, date);
+	await checkRoomAndStaff(writer, visit, input, date);
+	// One at a time at a site: two that meet would otherwise wait for each other. The constraints still decide.
+	await takeTurn(writer, 'booking', visit.site.id);
 	return span;
 }
 

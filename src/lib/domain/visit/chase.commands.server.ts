@@ -4,7 +4,7 @@ import type { Actor } from '$lib/server/actor';
 import { change, mustHaveChanged } from '$lib/server/change';
 import { clock } from '$lib/time/clock';
 import { windowText } from '../schedule/window';
-import { closeAppointment, findOpenAppointment } from './booking.commands.server';
+import { closeOpenAppointment } from './booking.commands.server';
 import { addDeviation } from './conduct.commands.server';
 import { refuseStale, refuseStep } from './steps.server';
 import type { DeclareMissedInput, LogContactInput } from './visit.input';
@@ -85,8 +85,7 @@ export async function declareMissed(
 				throw new Refusal('RULE', {
 					why: 'This visit has no window yet, so it cannot have been missed.'
 				});
-			const open = await findOpenAppointment(writer, visitId);
-			if (open) await closeAppointment(writer, open);
+			await closeOpenAppointment(writer, visitId);
 			const changed = await writer
 				.updateTable('visit')
 				.set({ status: 'missed', missed_reason: input.reason })

@@ -8,11 +8,10 @@ import { dateInZone } from '$lib/time/zones';
 import { deriveAtVisit } from '../measurement/derived.server';
 import { plannedMeasures, valuesAtVisit } from '../measurement/measurement.reads.server';
 import { placementOf, windowText } from '../schedule/window';
+import { planSubjectVisits } from '../subject/plan-visits.server';
 import { closeAppointment, findOpenAppointment } from './booking.commands.server';
-import { moveDependentWindows } from './windows.server';
 import { refuseStale, refuseStep } from './steps.server';
 import {
-	definitionOf,
 	holdVisit,
 	refuseIfLeft,
 	refuseWithoutConsent,
@@ -93,12 +92,8 @@ export async function finishVisit(
 			visit.happenedOn,
 			open?.outside_reason ?? null
 		);
-		if (visit.key !== null && visit.protocolVersionId !== null)
-			await moveDependentWindows(
-				writer,
-				visit,
-				await definitionOf(writer, visit.protocolVersionId)
-			);
+		// Windows counted from this visit follow the day it took place.
+		if (visit.key !== null) await planSubjectVisits(writer, studyId, visit.subjectId);
 		return { version: changed[0]?.version ?? version + 1, deviation };
 	});
 }

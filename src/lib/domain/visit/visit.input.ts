@@ -75,6 +75,17 @@ export const logContactInput = z.strictObject({
 });
 export type LogContactInput = z.output<typeof logContactInput>;
 
+/** As a form says it: day and time by the site’s own clocks. */
+export const logContactForm = logContactInput
+	.omit({ at: true })
+	.extend({ onDate: date, onTime: time });
+
+export const freeTimesQuery = z.object({
+	date,
+	roomId: z.uuid('Choose a room.').optional(),
+	staffId: z.uuid('Choose a person.').optional()
+});
+
 const versioned = { version };
 export const bookVisitForm = bookVisitInput.extend(versioned);
 export const moveAppointmentForm = moveAppointmentInput.extend(versioned);

@@ -156,18 +156,32 @@ export const scopeOfVisit = (
 		return { studyId, siteId: row.site_id };
 	});
 
+/**
+ * A published version never changes, so reading its definition once serves everybody who may see a visit that follows it;
+ * checking it anew for each value entered took longer than keeping the value.
+ */
+const publishedDefinitions = new Map<string, StudyDefinition>();
+const mostKept = 200;
+
 /** The protocol version the visit was planned by, as it was published. */
 export async function definitionOf(
 	reader: Reader,
 	protocolVersionId: string
 ): Promise<StudyDefinition> {
+	const kept = publishedDefinitions.get(protocolVersionId);
+	if (kept) return kept;
 	const row = await reader
 		.selectFrom('protocol_version')
-		.select('definition')
+		.select(['definition', 'status'])
 		.where('id', '=', protocolVersionId)
 		.executeTakeFirst();
 	if (!row) throw new Refusal('NOT_FOUND');
-	return studyDefinition.parse(row.definition);
+	const definition = studyDefinition.parse(row.definition);
+	if (row.status === 'published') {
+		if (publishedDefinitions.size >= mostKept) publishedDefinitions.clear();
+		publishedDefinitions.set(protocolVersionId, definition);
+	}
+	return definition;
 }
 
 const endings = [

@@ -41,6 +41,10 @@ function versionOf(event: RequestEvent): number {
 	return Number(match[1]);
 }
 
+/** For what is made and changed at one address: the version named, or null where none is. */
+export const versionIfGiven = (event: RequestEvent): number | null =>
+	event.request.headers.get('if-match') === null ? null : versionOf(event);
+
 function parsed<S extends z.ZodType>(schema: S, value: unknown): z.output<S> {
 	const result = schema.safeParse(value);
 	if (!result.success) throw new Refusal('INVALID', {}, fieldErrors(result.error));

@@ -48,6 +48,7 @@ interface AppointmentTable {
 	outside_reason: string | null;
 	calendar_uid: string;
 	calendar_sequence: Generated<number>;
+	changed_at: Generated<Timestamp>;
 	version: Generated<number>;
 }
 

@@ -3,6 +3,7 @@ import type { Reader } from '../change';
 import type { MailKind, Tables } from '../db/tables';
 import { invitationContent, resetContent } from './account-content';
 import { releasedContent } from './released-content';
+import { visitContent } from './visit-content';
 
 export type MailRow = Selectable<Tables['mail']>;
 
@@ -23,5 +24,6 @@ export type ContentMaker = (mail: MailRow, reader: Reader) => Promise<MailConten
 export const mailContent: Partial<Record<MailKind, ContentMaker>> = {
 	invitation: invitationContent,
 	reset: resetContent,
-	'report-released': releasedContent
+	'report-released': releasedContent,
+	...visitContent
 };

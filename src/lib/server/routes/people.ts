@@ -15,6 +15,9 @@ export const peopleRoutes: RouteTable = {
 	'/api/jobs': { GET: 'job.read' },
 	'/api/jobs/[job=id]': { GET: 'signed-in' },
 	'/api/jobs/[job=id]/cancel': { POST: 'signed-in' },
+	'/api/studies/[study=id]/audit': { GET: 'audit.read' },
+	'/api/studies/[study=id]/history': { GET: 'subject.read' },
+	'/(app)/studies/[study=id]/history': { GET: 'subject.read' },
 	'/(app)/studies/[study=id]/audit': { GET: 'audit.read' },
 	'/(app)/studies/[study=id]/audit/export.csv': { GET: 'audit.export' }
 };

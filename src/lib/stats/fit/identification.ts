@@ -8,6 +8,9 @@ import { meanPart } from './weighted.js';
 const WITHIN_TOLERANCE = 1e-9;
 /** Residual sum of squares ÷ sum of squares about the mean, below which rounding is all that is left. */
 const NOTHING_LEFT = 1e-24;
+/** Variances of the outcome whose third power can still be held. */
+const SMALLEST = 1e-80;
+const LARGEST = 1e80;
 
 /**
  * Refuses a model that these data cannot carry, whatever the numbers turn out to be.
@@ -15,7 +18,7 @@ const NOTHING_LEFT = 1e-24;
  * A lasting offset needs more rows than subjects and coefficients together can absorb, and more subjects
  * than there are coefficients that vary between subjects only (the intercept among them).
  * Errors: `one-observation-per-subject`, `too-few-subjects`, `too-few-observations`, `perfect-fit`,
- * `no-residual-variation`.
+ * `out-of-range`.
  */
 export function refuseUnidentified(
 	design: Design,
@@ -27,6 +30,12 @@ export function refuseUnidentified(
 	for (const r of products.residual) left += r * r;
 	const mean = design.y.reduce((sum, y) => sum + y, 0) / n;
 	const spread = design.y.reduce((sum, y) => sum + (y - mean) ** 2, 0);
+	if (!(spread / n > SMALLEST && spread / n < LARGEST)) {
+		throw new StatsError(
+			'out-of-range',
+			'The outcomes are too large or too small to be squared safely. Put them in a unit nearer to 1.'
+		);
+	}
 	const size = Math.abs(mean) * Number.EPSILON;
 	if (left <= NOTHING_LEFT * spread + n * size * size) {
 		throw new StatsError(

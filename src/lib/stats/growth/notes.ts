@@ -29,19 +29,16 @@ export function notesOf(fit: Fit, model: ModelDescription, askedTimes: readonly 
 		);
 	}
 	if (counts.droppedOutcomes > 0 || counts.droppedRows > 0) {
+		const missing = counts.missingByVariable.map((m) => `“${m.name}”`).join(' or ');
 		const why = [
-			...(counts.droppedOutcomes > 0
-				? [`${count(counts.droppedOutcomes, 'row')} without an outcome`]
-				: []),
+			...(counts.droppedOutcomes > 0 ? [`${counts.droppedOutcomes} without an outcome`] : []),
 			...(counts.droppedRows > 0
-				? [
-						`${count(counts.droppedRows, 'row')} without ${counts.missingByVariable.map((m) => `“${m.name}”`).join(' or ')}`
-					]
+				? [`${counts.droppedRows} with an outcome but without ${missing}`]
 				: [])
 		];
 		add(
 			'rows-dropped',
-			`Of ${count(counts.rows, 'row')}, ${why.join(' and ')} left out; ${counts.observations} used. The model takes what is missing as missing at random.`
+			`Of ${count(counts.rows, 'row')}, ${counts.observations} were used. Left out: ${why.join(', ')}. The model takes what is missing as missing at random.`
 		);
 	}
 	if (counts.droppedSubjects > 0) {

@@ -37,6 +37,17 @@ test('X = QR with orthonormal Q, even for a column of milliseconds since 1970', 
 		}
 });
 
+test('Q stays orthonormal to the last digits when a column nearly repeats another', () => {
+	const time = [0.1, 1.3, 2.2, 3.7, 4.9, 6.1];
+	const nearly = time.map((t, i) => t + 1e-7 * Math.sin(5 * i + 1));
+	const { q } = basisOf(columns([1, 1, 1, 1, 1, 1], time, nearly), 6, 3);
+	for (const earlier of [0, 1]) {
+		let dot = 0;
+		for (let i = 0; i < 6; i++) dot += q[earlier * 6 + i]! * q[2 * 6 + i]!;
+		expect(Math.abs(dot)).toBeLessThan(1e-14);
+	}
+});
+
 test('the first aliased column is named with those that determine it', () => {
 	const x = columns([1, 1, 1, 1], [0, 1, 2, 3], [5, 5, 0, 1], [3, 5, 7, 9]);
 	expect(orthonormalise(x, 4, 4)).toEqual({ alias: { column: 3, of: [0, 1] } });

@@ -34,7 +34,8 @@ export function subjectEffects(fit: Fit): SubjectEffect[] {
 		const h = Array.from(basisSums.subarray(s * p, (s + 1) * p), (q) => q * perVisit);
 		const conditional = variance / (1 + m * at.ratio);
 		return {
-			offset: perVisit * residualSums[s]!,
+			// Adding zero keeps a zero offset from being written as −0.
+			offset: perVisit * residualSums[s]! + 0,
 			conditionalStandardError: Math.sqrt(conditional),
 			predictionStandardError: Math.sqrt(conditional + form(h, fit.curvature.covariance))
 		};

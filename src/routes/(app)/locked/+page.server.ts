@@ -1,6 +1,6 @@
 import { fail, redirect } from '@sveltejs/kit';
 import { Refusal } from '$lib/refusal';
-import { unlockSession } from '$lib/server/auth/session';
+import { endSession, unlockSession } from '$lib/server/auth/session';
 import type { Actions, PageServerLoad } from './$types';
 
 const ownPath = (to: string | null) => (to && /^\/(?![/\\])/.test(to) ? to : '/');
@@ -12,7 +12,13 @@ export const load: PageServerLoad = ({ locals, url }) => {
 };
 
 export const actions: Actions = {
-	default: async ({ request, locals, url }) => {
+	/** Whoever finds somebody else's locked screen can leave it, but not open it. */
+	signOut: async ({ locals }) => {
+		const actor = locals.lockedActor ?? locals.actor;
+		if (actor) await endSession(actor, actor.sessionId ?? '');
+		redirect(303, '/sign-in?done=out');
+	},
+	unlock: async ({ request, locals, url }) => {
 		if (!locals.lockedActor) redirect(303, '/');
 		const password = (await request.formData()).get('password');
 		try {

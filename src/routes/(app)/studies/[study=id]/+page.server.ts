@@ -1,0 +1,52 @@
+import {
+	countScreenings,
+	getSiteCounts,
+	getStudyState,
+	getWorkAtSites,
+	rolesIn
+} from '$lib/domain/visit/today.reads.server';
+import { windowsQuery } from '$lib/domain/visit/windows.input';
+import { findWindows } from '$lib/domain/visit/windows.reads.server';
+import { may } from '$lib/server/permission';
+import { actorOf, serve } from '$lib/server/serve';
+import { clock } from '$lib/time/clock';
+import { dateText } from '$lib/time/dates';
+import { dateInZone } from '$lib/time/zones';
+import type { PageServerLoad } from './$types';
+import { pointersFor } from './pointers';
+
+/** Each role finds its own day here; somebody with several roles finds each of them. */
+export const load: PageServerLoad = async ({ locals, params }) => {
+	const actor = actorOf({ locals });
+	const studyId = params.study;
+	const roles = rolesIn(actor, studyId);
+	const has = (...wanted: Parameters<typeof roles.has>[0][]) =>
+		wanted.some((role) => roles.has(role));
+	return serve(async () => {
+		const atSites = has('coordinator', 'nurse', 'investigator');
+		const coordinator = roles.has('coordinator');
+		const [work, windows, counts, screenings, state] = await Promise.all([
+			atSites ? getWorkAtSites(actor, studyId) : null,
+			coordinator
+				? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
+				: null,
+			has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
+			has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
+			roles.has('data_manager') ? getStudyState(actor, studyId) : null
+		]);
+		return {
+			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
+			work,
+			windows,
+			counts,
+			screenings,
+			state,
+			may: {
+				book: coordinator,
+				chase: coordinator,
+				measure: may(actor.grants, 'visit.measure', { studyId })
+			},
+			pointers: pointersFor(roles, studyId, state, screenings)
+		};
+	});
+};
