@@ -1,6 +1,7 @@
 import { Refusal } from '$lib/refusal';
 
 const usual = 256 * 1024;
+const patience = 1024 * 1024;
 
 /** The body as JSON. NUL characters are refused here once for all: PostgreSQL holds no text with them. */
 export async function readJson(request: Request, limit = usual): Promise<unknown> {
@@ -27,12 +28,12 @@ async function readText(request: Request, limit: number): Promise<string> {
 		const { done, value } = await reader.read();
 		if (done) break;
 		size += value.length;
-		if (size > limit) {
-			await reader.cancel();
-			throw new Refusal('TOO_LARGE', { limit: `${Math.floor(limit / 1024)} KiB` });
-		}
-		parts.push(value);
+		// Read on for a while without keeping it: whoever is still sending could not hear the refusal.
+		if (size > limit + patience) await reader.cancel();
+		if (size <= limit) parts.push(value);
+		else if (size > limit + patience) break;
 	}
+	if (size > limit) throw new Refusal('TOO_LARGE', { limit: `${Math.floor(limit / 1024)} KiB` });
 	return Buffer.concat(parts).toString('utf8');
 }
 
