@@ -45,9 +45,7 @@ async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): P
 		site,
 		windows: Object.fromEntries(keys.slice(0, 2).map((key) => [key, around('2026-06-09')]))
 	});
-	const [visit = '', booked = ''] = keys
-		.map((key) => subject.visits[key])
-		.filter(Boolean) as string[];
+	const visit = subject.visits[keys[0] ?? ''] ?? '';
 	const made: Things = {
 		study: scene.studyId,
 		subject: subject.id,
