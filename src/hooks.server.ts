@@ -1,16 +1,23 @@
-import { error, redirect, type Handle, type HandleServerError } from '@sveltejs/kit';
+import type { Handle, HandleServerError, ServerInit } from '@sveltejs/kit';
 import { sequence } from '@sveltejs/kit/hooks';
 import { newId } from '$lib/id';
 import { Refusal } from '$lib/refusal';
 import { authHandle } from '$lib/server/auth/auth';
 import { findSession, noteSeen } from '$lib/server/auth/session';
 import { countTry } from '$lib/server/auth/throttle';
-import { problem } from '$lib/server/api/problem';
 import { recordRefusal } from '$lib/server/change';
 import { config } from '$lib/server/config';
+import { database } from '$lib/server/db/db';
 import { log } from '$lib/server/log';
 import { accessOf, mayEnter } from '$lib/server/routes';
+import { sendTo, turnAway } from '$lib/server/turn-away';
 import { clock } from '$lib/time/clock';
+
+/** A wrong environment stops the start with its own sentence; requests in hand end before the database is let go. */
+export const init: ServerInit = () => {
+	config();
+	process.on('sveltekit:shutdown', () => void database().close());
+};
 
 const reading = new Set(['GET', 'HEAD', 'OPTIONS']);
 
@@ -62,13 +69,12 @@ const personOf = (locals: App.Locals) => locals.session?.personId;
 const sameOrigin: Handle = async ({ event, resolve }) => {
 	if (!reading.has(event.request.method)) {
 		const origin = event.request.headers.get('origin');
-		if (origin !== config().origin)
-			return problem(new Refusal('CROSS_SITE'), event.locals.requestId);
+		if (origin !== config().origin) return turnAway(event, new Refusal('CROSS_SITE'));
 		if (event.url.pathname.startsWith('/auth/callback/') || event.url.pathname === '/sign-in') {
 			try {
 				await countTry('address', event.getClientAddress());
 			} catch (refused) {
-				if (refused instanceof Refusal) return problem(refused, event.locals.requestId);
+				if (refused instanceof Refusal) return turnAway(event, refused);
 				throw refused;
 			}
 		}
@@ -80,10 +86,7 @@ const sameOrigin: Handle = async ({ event, resolve }) => {
 const guard: Handle = async ({ event, resolve }) => {
 	const { locals, route, request, params } = event;
 	const api = event.url.pathname.startsWith('/api/');
-	const refuse = (refusal: Refusal) => {
-		if (api) return problem(refusal, locals.requestId);
-		error(refusal.status, { message: refusal.message, code: refusal.code });
-	};
+	const refuse = (refusal: Refusal) => turnAway(event, refusal);
 	if (route.id === null) return resolve(event);
 	const access = accessOf(route.id, request.method);
 	if (access === undefined) return refuse(new Refusal('NOT_FOUND'));
@@ -109,13 +112,16 @@ const guard: Handle = async ({ event, resolve }) => {
 	if (access === 'public') return resolve(event);
 	if (!session) {
 		if (api || !reading.has(request.method)) return refuse(new Refusal('NOT_SIGNED_IN'));
-		redirect(303, `/sign-in?to=${encodeURIComponent(event.url.pathname + event.url.search)}`);
+		return sendTo(
+			event,
+			`/sign-in?to=${encodeURIComponent(event.url.pathname + event.url.search)}`
+		);
 	}
 	if (session.locked) {
 		const unlocking = route.id === '/(app)/locked' || route.id.startsWith('/api/session');
 		if (unlocking) return resolve(event);
 		if (api || !reading.has(request.method)) return refuse(new Refusal('LOCKED'));
-		redirect(303, `/locked?to=${encodeURIComponent(event.url.pathname + event.url.search)}`);
+		return sendTo(event, `/locked?to=${encodeURIComponent(event.url.pathname + event.url.search)}`);
 	}
 	const studyId = params.study ?? null;
 	if (!mayEnter(session.actor.grants, access, studyId)) {

@@ -8,7 +8,7 @@ import { testBuild } from '../../scripts/lib/test-cluster.mjs';
 import { newId } from '../../src/lib/id';
 import { freshDatabase, type FreshDatabase } from '../support/database';
 import { addPerson, addRole, asOwner } from '../support/people';
-import { addBareStudy } from '../support/scene';
+import { addBareStudy } from '../support/bare-scene';
 
 const system = '00000000-0000-7000-8000-000000000001';
 let db: FreshDatabase;

@@ -58,7 +58,10 @@ export async function makeScene(
 ): Promise<Scene> {
 	const tag = `${++made}`;
 	const account = async (name: string) =>
-		addPerson(db, { email: `${name.toLowerCase()}-${newId()}@example.org`, name: `${name} ${tag}` });
+		addPerson(db, {
+			email: `${name.toLowerCase()}-${newId()}@example.org`,
+			name: `${name} ${tag}`
+		});
 	const managerId = await account('Mara');
 	await addRole(db, managerId, 'data_manager');
 	const manager = await actorFor(managerId, 'scene');

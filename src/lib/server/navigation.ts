@@ -12,7 +12,7 @@ const places: Place[] = [
 	{ label: 'Today', path: '', capability: 'study.read' },
 	{ label: 'Windows', path: '/windows', capability: 'visit.book' },
 	{ label: 'Subjects', path: '/subjects', capability: 'subject.read' },
-	{ label: 'Screening', path: '/screening', capability: 'screening.edit' },
+	{ label: 'Screening', path: '/screening', capability: 'screening.read' },
 	{ label: 'Schedule', path: '/schedule', capability: 'study.read' },
 	{ label: 'Allocation', path: '/allocation', capability: 'allocation.make' },
 	{ label: 'Import', path: '/import', capability: 'import.run' },

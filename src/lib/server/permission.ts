@@ -39,6 +39,7 @@ const table = {
 	'subject.read': ['data_manager', 'coordinator', 'nurse', 'investigator', 'monitor', 'auditor'],
 	'contact.read': ['coordinator', 'investigator'],
 	'contact.edit': ['coordinator'],
+	'screening.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
 	'screening.edit': ['coordinator', 'investigator'],
 	'consent.record': ['coordinator', 'investigator'],
 	'subject.enrol': ['coordinator', 'investigator'],

@@ -3,22 +3,13 @@ import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { pageOf, type Page } from '$lib/server/api/page';
 import { read, type Reader } from '$lib/server/change';
-import { may, rolesFor, type Capability } from '$lib/server/permission';
+import { may, sitesAllowing } from '$lib/server/permission';
 import { addDays, plainDateOf } from '$lib/time/dates';
 import { instantText, isoWithOffset } from '$lib/time/zones';
 import type { AuditEvent, AuditFilter } from './audit.input';
 import { auditRoleName, changesOf, recordName, sentence, type historyRecords } from './words';
 
-/** The sites at which the actor holds the capability; null: all sites of the study. */
-function sitesFor(actor: Actor, capability: Capability, studyId: string): string[] | null {
-	const here = actor.grants.filter(
-		(g) => rolesFor(capability).includes(g.role) && (g.studyId === null || g.studyId === studyId)
-	);
-	if (actor.system || here.some((g) => g.siteId === null)) return null;
-	return here.map((g) => g.siteId as string);
-}
-
-const events = (reader: Reader, studyId: string, sites: string[] | null) =>
+const events = (reader: Reader, studyId: string, sites: readonly string[] | null) =>
 	reader
 		.selectFrom('audit.event as e')
 		.innerJoin('person as p', 'p.id', 'e.actor')
@@ -49,7 +40,7 @@ const events = (reader: Reader, studyId: string, sites: string[] | null) =>
 			q.where((eb) =>
 				eb.or([
 					eb('e.site_id', 'is', null),
-					...((sites as string[]).length > 0 ? [eb('e.site_id', 'in', sites as string[])] : [])
+					...(sites && sites.length > 0 ? [eb('e.site_id', 'in', sites)] : [])
 				])
 			)
 		);
@@ -155,7 +146,7 @@ export const listEvents = (
 ): Promise<Page<AuditEvent>> =>
 	read(actor, 'audit.read', { studyId }, async (reader) => {
 		const rows = await filtered(
-			events(reader, studyId, sitesFor(actor, 'audit.read', studyId)),
+			events(reader, studyId, sitesAllowing(actor.grants, 'audit.read', studyId)),
 			filter
 		)
 			.$if(page.cursor !== undefined, (q) => q.where('e.id', '<', page.cursor as string))
@@ -175,7 +166,7 @@ export const eventsAfter = (
 ): Promise<AuditEvent[]> =>
 	read(actor, 'audit.export', { studyId }, async (reader) => {
 		const rows = await filtered(
-			events(reader, studyId, sitesFor(actor, 'audit.export', studyId)),
+			events(reader, studyId, sitesAllowing(actor.grants, 'audit.export', studyId)),
 			filter
 		)
 			.where('e.id', '>', stretch.after)
@@ -194,7 +185,7 @@ export const getHistory = (
 	id: string
 ): Promise<AuditEvent[]> =>
 	read(actor, 'subject.read', { studyId }, async (reader) => {
-		const rows = await events(reader, studyId, sitesFor(actor, 'subject.read', studyId))
+		const rows = await events(reader, studyId, sitesAllowing(actor.grants, 'subject.read', studyId))
 			.where('e.record', '=', record)
 			.where('e.record_id', '=', id)
 			.orderBy('e.id')

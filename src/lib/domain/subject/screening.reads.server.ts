@@ -33,8 +33,8 @@ export const findScreenings = (
 	studyId: string,
 	query: ScreeningsQuery
 ): Promise<ScreeningPage> =>
-	read(actor, 'screening.edit', { studyId }, async (reader) => {
-		const sites = sitesAllowing(actor.grants, 'screening.edit', studyId);
+	read(actor, 'screening.read', { studyId }, async (reader) => {
+		const sites = sitesAllowing(actor.grants, 'screening.read', studyId);
 		const rows = await reader
 			.selectFrom('screening as c')
 			.innerJoin('site as p', 'p.id', 'c.site_id')
@@ -106,6 +106,7 @@ export interface ScreeningDetail {
 	consentVersions: { id: string; label: string; approvedOn: string }[];
 	/** Who may have explained the study: people with a role at the site. */
 	explainers: { id: string; name: string }[];
+	mayEdit: boolean;
 	mayContact: boolean;
 }
 
@@ -114,8 +115,8 @@ export async function getScreening(
 	studyId: string,
 	screeningId: string
 ): Promise<ScreeningDetail> {
-	const siteId = await siteOf(actor, 'screening.edit', 'screening', studyId, screeningId);
-	return read(actor, 'screening.edit', { studyId, siteId }, async (reader) => {
+	const siteId = await siteOf(actor, 'screening.read', 'screening', studyId, screeningId);
+	return read(actor, 'screening.read', { studyId, siteId }, async (reader) => {
 		const row = await reader
 			.selectFrom('screening as c')
 			.leftJoin('subject as s', 's.id', 'c.subject_id')
@@ -199,6 +200,7 @@ export async function getScreening(
 			randomised: isRandomised(definition),
 			consentVersions,
 			explainers,
+			mayEdit: may(actor.grants, 'screening.edit', { studyId, siteId }),
 			mayContact: may(actor.grants, 'contact.edit', { studyId, siteId })
 		};
 	});
@@ -206,8 +208,9 @@ export async function getScreening(
 
 /** The sites where the actor may screen, with the day it is there. */
 export const findScreeningSites = (actor: Actor, studyId: string): Promise<SiteNow[]> =>
-	read(actor, 'screening.edit', { studyId }, async (reader) => {
+	read(actor, 'screening.read', { studyId }, async (reader) => {
 		const allowed = sitesAllowing(actor.grants, 'screening.edit', studyId);
+		if (allowed?.length === 0) return [];
 		const sites = await reader
 			.selectFrom('site')
 			.select('id')

@@ -1,0 +1,158 @@
+import { hashPassword } from '../../src/lib/server/auth/password';
+import { openDatabase, useDatabase, type Database } from '../../src/lib/server/db/db';
+import { forgetSender } from '../../src/lib/server/jobs/queue';
+import { newId } from '../../src/lib/id';
+import type { Role } from '../../src/lib/domain/person/roles';
+import { useEnvironment } from './database';
+import { addPerson, addRole, asOwner, signIn, type Visitor } from './people';
+import type { RunningServer } from './server';
+import { addSubject, around, visitScene, type Scene } from './visit-scene';
+
+const password = 'linen warp and weft';
+const siteRoles: Role[] = ['coordinator', 'nurse', 'investigator', 'monitor'];
+const studyRoles: Role[] = [
+	'data_manager',
+	'auditor',
+	'statistician',
+	'independent_statistician',
+	'board_member'
+];
+
+/** What a study holds one of each of, by the name of the parameter that names it in an address. */
+export type Things = Record<string, string>;
+
+export interface Crowd {
+	database: Database;
+	scene: Scene;
+	things: Things;
+	/** Another study with the same things in it. */
+	foreign: { scene: Scene; things: Things };
+	/** The same at the study's other site. */
+	otherSite: Things;
+	/** By role; at the first site where the role has one. */
+	by: Record<string, Visitor>;
+	/** Signs a person in again, for tests that end sessions. */
+	again(who: string): Promise<Visitor>;
+	close(): Promise<void>;
+}
+
+/** One of everything in a study, put there by its owner: what matters is that it is there. */
+async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): Promise<Things> {
+	const { database } = server;
+	const site = scene.sites[siteIndex];
+	const keys = Object.keys(scene.plannedVisits);
+	const subject = await addSubject(database, scene, {
+		site,
+		windows: Object.fromEntries(keys.slice(0, 2).map((key) => [key, around('2026-06-09')]))
+	});
+	const [visit = '', booked = ''] = keys
+		.map((key) => subject.visits[key])
+		.filter(Boolean) as string[];
+	const made: Things = {
+		study: scene.studyId,
+		subject: subject.id,
+		visit,
+		measure: Object.values(scene.measures)[0] ?? '',
+		screening: newId(),
+		measurement: newId(),
+		appointment: newId(),
+		batch: newId(),
+		job: newId(),
+		cut: newId(),
+		look: newId(),
+		report: newId(),
+		release: newId(),
+		person: site.nurse.id,
+		site: site.id,
+		token: 'a-token-that-opens-nothing-at-all-000000000'
+	};
+	const at = (n: number) => 10 * siteIndex + n;
+	await asOwner(database, async (client) => {
+		const insert = (text: string, values: unknown[]) => client.query(text, values);
+		const by = scene.manager.id;
+		await insert(
+			`insert into app.screening (id, study_id, site_id, number, screened_on) values ($1, $2, $3, $4, '2026-01-05')`,
+			[made.screening, scene.studyId, site.id, 900 + siteIndex]
+		);
+		await insert(
+			`insert into app.measurement (id, study_id, site_id, subject_id, visit_id, measure_id, value, unit, taken_by, source)
+			values ($1, $2, $3, $4, $5, $6, 71.5, 'kg', $7, 'import')`,
+			[made.measurement, scene.studyId, site.id, subject.id, visit, made.measure, site.nurse.id]
+		);
+		await insert(
+			`insert into app.job_run (id, queue, title, study_id, requested_by) values ($1, 'import', 'An import', $2, $3)`,
+			[made.job, scene.studyId, by]
+		);
+		await insert(
+			`insert into app.import_batch (id, study_id, file_name, storage_key, sha256, bytes, headers, uploaded_by)
+			values ($1, $2, 'file.csv', 'imports/none', repeat('0', 64), 10, '["subject","time"]', $3)`,
+			[made.batch, scene.studyId, by]
+		);
+		await insert(
+			`insert into app.cut (id, study_id, number, label, cut_off_at, extracted_at, made_by, subjects, measurements, fingerprint, content)
+			values ($1, $2, $3, 'A cut', now(), now(), $4, 0, 0, repeat('0', 64), '{}')`,
+			[made.cut, scene.studyId, at(1), by]
+		);
+		await insert(
+			`insert into app.look (id, study_id, cut_id, number, kind, requested_by) values ($1, $2, $3, $4, 'pooled', $5)`,
+			[made.look, scene.studyId, made.cut, at(1), by]
+		);
+		await insert(
+			`insert into app.report (id, study_id, look_id, kind, made_by) values ($1, $2, $3, 'open', $4)`,
+			[made.report, scene.studyId, made.look, by]
+		);
+	});
+	return made;
+}
+
+/** A running server with a study full of things and one person signed in for each role. */
+export async function crowd(server: RunningServer): Promise<Crowd> {
+	useEnvironment(server.database, { ORIGIN: server.origin });
+	const database = openDatabase(server.database.appUrl, 3);
+	useDatabase(database);
+	forgetSender();
+	const passwordHash = await hashPassword(password);
+	const scene = await visitScene(server.database, { code: 'WLK-1', passwordHash });
+	const other = await visitScene(server.database, { code: 'FGN-2', passwordHash });
+	const things = await furnish(server, scene, 0);
+	const otherSite = await furnish(server, scene, 1);
+	const foreign = { scene: other, things: await furnish(server, other, 0) };
+
+	const emails: Record<string, string> = {};
+	const add = async (who: string, ...grants: [Role, string | null, string | null][]) => {
+		const email = `${who.replaceAll(/[^a-z]+/g, '-')}@walk.example`;
+		emails[who] = email;
+		const id = await addPerson(server.database, { email, name: `The ${who}`, passwordHash });
+		for (const grant of grants) await addRole(server.database, id, ...grant);
+	};
+	for (const role of siteRoles) {
+		await add(role, [role, scene.studyId, scene.sites[0].id]);
+		await add(`${role} elsewhere`, [role, scene.studyId, scene.sites[1].id]);
+	}
+	for (const role of studyRoles) await add(role, [role, scene.studyId, null]);
+	await add('data_manager everywhere', ['data_manager', null, null]);
+	await add('administrator', ['administrator', null, null]);
+	await add('nobody');
+	await add(
+		'stranger',
+		...(['data_manager', 'coordinator', 'nurse', 'monitor', 'auditor'] as Role[]).map(
+			(role): [Role, string, null] => [role, other.studyId, null]
+		)
+	);
+	const by: Record<string, Visitor> = {};
+	const again = async (who: string) => {
+		await server.database.sql('delete from app.rate_limit');
+		return (by[who] = await signIn(server, emails[who] as string, password));
+	};
+	for (const who of Object.keys(emails)) await again(who);
+	return {
+		database,
+		scene,
+		things,
+		otherSite,
+		foreign,
+		by,
+		again,
+		close: () => database.close()
+	};
+}
