@@ -36,11 +36,9 @@ export const lookOutput = z.union([
 	openLook.extend({
 		cut: cutOutput,
 		spec: lookSpec,
-		result: z
-			.unknown()
-			.meta({
-				description: 'Estimates, variances, lines, residuals, notes; null until it is done.'
-			}),
+		result: z.unknown().meta({
+			description: 'Estimates, variances, lines, residuals, notes; null until it is done.'
+		}),
 		inputHash: z.string().nullable(),
 		engineVersion: z.string().nullable(),
 		finishedAt: z.iso.datetime().nullable()
