@@ -1,4 +1,4 @@
-import type { Handle, HandleServerError } from '@sveltejs/kit';
+import type { Handle, HandleServerError, ServerInit } from '@sveltejs/kit';
 import { sequence } from '@sveltejs/kit/hooks';
 import { newId } from '$lib/id';
 import { Refusal } from '$lib/refusal';
@@ -7,10 +7,17 @@ import { findSession, noteSeen } from '$lib/server/auth/session';
 import { countTry } from '$lib/server/auth/throttle';
 import { recordRefusal } from '$lib/server/change';
 import { config } from '$lib/server/config';
+import { database } from '$lib/server/db/db';
 import { log } from '$lib/server/log';
 import { accessOf, mayEnter } from '$lib/server/routes';
 import { sendTo, turnAway } from '$lib/server/turn-away';
 import { clock } from '$lib/time/clock';
+
+/** A wrong environment stops the start with its own sentence; requests in hand end before the database is let go. */
+export const init: ServerInit = () => {
+	config();
+	process.on('sveltekit:shutdown', () => void database().close());
+};
 
 const reading = new Set(['GET', 'HEAD', 'OPTIONS']);
 

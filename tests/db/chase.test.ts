@@ -191,7 +191,7 @@ describe('windows', () => {
 		expect(await mine()).toMatchObject({
 			status: 'booked',
 			bookedOn: '2026-06-11',
-			lastStep: 'booked 11 Jun 2026, 14:00'
+			lastStep: 'booked Thu 11 Jun, 14:00'
 		});
 	});
 });

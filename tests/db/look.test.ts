@@ -28,6 +28,7 @@ import {
 	releaseJob,
 	reportJob
 } from '../../src/lib/server/looks/report-jobs';
+import { plainDateOf } from '../../src/lib/time/dates';
 import { forgetStorage } from '../../src/lib/server/storage/storage';
 import { estimateCells } from '../../src/lib/report';
 import {
@@ -255,7 +256,7 @@ describe('a pooled look', () => {
 			reportId: id,
 			advice: 'continue unchanged' as const,
 			reason: 'Nothing stands against it.',
-			meetingOn: '2026-01-15',
+			meetingOn: plainDateOf('2026-01-15'),
 			attendees: 'Two members'
 		};
 		await expect(recommend(other, scene.studyId, advice)).rejects.toMatchObject({

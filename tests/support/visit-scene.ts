@@ -3,10 +3,8 @@ import { join } from 'node:path';
 import { root } from '../../scripts/lib/places.mjs';
 import type { Role } from '../../src/lib/domain/person/roles';
 import type { StudyDefinition } from '../../src/lib/domain/study/definition';
-import { createStudyFrom, publishProtocol } from '../../src/lib/domain/study/study.commands.server';
 import { newId } from '../../src/lib/id';
 import type { Actor } from '../../src/lib/server/actor';
-import { actorFor } from '../../src/lib/server/auth/actor';
 import { addDays, plainDateOf, type PlainDate } from '../../src/lib/time/dates';
 import type { FreshDatabase } from './database';
 import { addPerson, addRole, asOwner } from './people';
@@ -14,6 +12,8 @@ import { addPerson, addRole, asOwner } from './people';
 export interface Person {
 	id: string;
 	email: string;
+	name: string;
+	/** For calling commands in this process; a browser's test signs in instead. */
 	actor: Actor;
 }
 
@@ -55,7 +55,92 @@ export async function addActor(
 	const email = `${name.toLowerCase().replaceAll(' ', '.')}@example.org`;
 	const id = await addPerson(database, { email, name, passwordHash });
 	await addRole(database, id, role, studyId, siteId);
-	return { id, email, actor: await actorFor(id, 'test') };
+	const { actorFor } = passwordHash
+		? { actorFor: async () => null as unknown as Actor }
+		: await import('../../src/lib/server/auth/actor');
+	return { id, email, name, actor: await actorFor(id, 'test') };
+}
+
+/** The study as publishing lays it out, by statements: a browser's test runs without the program's own modules. */
+async function publish(database: FreshDatabase, definition: StudyDefinition): Promise<string> {
+	const studyId = newId();
+	const versionId = newId();
+	await asOwner(database, async (client) => {
+		const put = (table: string, row: Record<string, unknown>) =>
+			client.query(
+				`insert into app.${table} (${Object.keys(row).join(', ')}) values (${Object.keys(row)
+					.map((_, at) => `$${at + 1}`)
+					.join(', ')})`,
+				Object.values(row)
+			);
+		const { code, name, masked } = definition;
+		await put('study', { id: studyId, code, name, masked, status: 'open' });
+		await put('protocol_version', {
+			id: versionId,
+			study_id: studyId,
+			number: 1,
+			definition: JSON.stringify(definition),
+			status: 'published',
+			published_at: '2025-01-10T09:00:00Z'
+		});
+		for (const site of definition.sites) {
+			const siteId = newId();
+			await put('site', {
+				id: siteId,
+				study_id: studyId,
+				code: site.code,
+				name: site.name,
+				zone: site.zone,
+				opening: JSON.stringify(site.openingHours)
+			});
+			for (const room of site.rooms)
+				await put('room', { id: newId(), study_id: studyId, site_id: siteId, name: room.name });
+		}
+		for (const consent of definition.consentVersions)
+			await put('consent_version', {
+				id: newId(),
+				study_id: studyId,
+				label: consent.version,
+				approved_on: '2025-01-05'
+			});
+		const measures = new Map<string, string>();
+		for (const [at, measure] of definition.measures.entries()) {
+			const id = newId();
+			measures.set(measure.key, id);
+			await put('measure', {
+				id,
+				study_id: studyId,
+				protocol_version_id: versionId,
+				key: measure.key,
+				name: measure.name,
+				unit: 'unit' in measure ? measure.unit : '1',
+				decimals: 'decimals' in measure ? measure.decimals : 0,
+				kind: measure.kind,
+				position: at + 1,
+				spec: JSON.stringify(measure)
+			});
+		}
+		for (const [at, visit] of definition.visits.entries()) {
+			const id = newId();
+			await put('planned_visit', {
+				id,
+				study_id: studyId,
+				protocol_version_id: versionId,
+				key: visit.key,
+				name: visit.name,
+				position: at + 1,
+				spec: JSON.stringify(visit),
+				length_minutes: visit.lengthMinutes
+			});
+			for (const key of definition.schedule[visit.key] ?? [])
+				await put('planned_measure', {
+					planned_visit_id: id,
+					measure_id: measures.get(key),
+					study_id: studyId
+				});
+		}
+	});
+	return studyId;
 }
 
 /** A published trial at two sites with their people; nobody is enrolled yet. */
@@ -72,16 +157,12 @@ export async function visitScene(
 		null,
 		passwordHash
 	);
-	const { studyId } = await createStudyFrom(
-		manager.actor,
-		{ ...template(), code, name: 'Aldermere' },
-		{ training: false }
-	);
-	await publishProtocol(manager.actor, studyId, 1);
+	const definition: StudyDefinition = { ...template(), code, name: 'Aldermere' };
+	const studyId = await publish(database, definition);
 	const [siteRows, roomRows, versionRows, measureRows, visitRows] = await database.sql(
 		`select id, zone from app.site where study_id = '${studyId}' order by code`,
 		`select id, site_id from app.room where study_id = '${studyId}' order by name`,
-		`select id, definition from app.protocol_version where study_id = '${studyId}'`,
+		`select id from app.protocol_version where study_id = '${studyId}'`,
 		`select id, key from app.measure where study_id = '${studyId}'`,
 		`select id, key from app.planned_visit where study_id = '${studyId}'`
 	);
@@ -107,7 +188,7 @@ export async function visitScene(
 	};
 	return {
 		studyId,
-		definition: versionRows?.[0].definition,
+		definition,
 		protocolVersionId: versionRows?.[0].id,
 		sites: [
 			await siteAt(0, ['Cora Brandt', 'Nils Ohm']),

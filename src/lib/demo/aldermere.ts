@@ -24,6 +24,8 @@ export interface StoryVisit {
 	bookedAhead: number;
 	/** Moved once before it took place. */
 	moved: boolean;
+	/** Nobody has got round to it: matters only if its window closes about now. */
+	waits: boolean;
 	notDone: 'potassium' | 'weight' | null;
 	noise: { egfr: number; systolic: number; diastolic: number; weight: number; potassium: number };
 }
@@ -123,8 +125,9 @@ function visitStory(draw: Chance, number: number): StoryVisit {
 		fate,
 		place: Math.max(-0.95, Math.min(0.95, draw.normal(0.05, 0.45))),
 		beyond: draw.whole(1, fate === 'early' ? 3 : 9),
-		bookedAhead: draw.whole(6, 24),
+		bookedAhead: draw.whole(4, 16),
 		moved: draw.happens(0.08),
+		waits: draw.happens(0.35),
 		notDone: draw.happens(0.03) ? 'potassium' : draw.happens(0.01) ? 'weight' : null,
 		noise: {
 			egfr: draw.normal(0, 2.6),

@@ -142,6 +142,17 @@ export class Trial {
 			this.diary.add(failure.site, this.local(failure.site, failure.on, '15:20'), () =>
 				this.turnAway(failure.site, failure.on, failure.reason)
 			);
+		// Somebody is always in screening.
+		for (const [site, cast] of this.cast.sites.entries()) {
+			const day = workingDay(addDays(this.today, -2 - site), (each) => each < this.today);
+			if (!day) continue;
+			this.diary.add(site, this.local(site, day, '14:10'), async () => {
+				await addScreening(cast.coordinator, this.cast.studyId, {
+					siteId: cast.id,
+					screenedOn: day
+				});
+			});
+		}
 		const first = people[0]?.enrolsOn ?? this.today;
 		await this.diary.play(addDays(first, -2), addDays(this.today, 1), each);
 	}
@@ -270,7 +281,9 @@ export class Trial {
 			subject.leaves && subject.leaves.kind !== 'intervention discontinued'
 				? addDays(subject.enrolsOn, subject.leaves.afterDays)
 				: null;
-		if (story.fate === 'missed') {
+		const closesNow =
+			addDays(this.today, -12) <= visit.latest && visit.latest <= addDays(this.today, 4);
+		if (story.fate === 'missed' || (story.waits && closesNow)) {
 			this.chase(subject, visit, gone);
 			return;
 		}

@@ -116,6 +116,7 @@ export function instantText(instant: Date, zone: string): string {
 
 /** 'Europe/Berlin (+02:00)' */
 export function zoneText(instant: Date, zone: string): string {
+	if (zone === 'UTC') return zone;
 	return `${zone.replaceAll('_', ' ')} (${offsetText(instant, zone).replace('-', '−')})`;
 }
 

@@ -102,6 +102,8 @@ export interface MailState {
 	waiting: number;
 	sent: number;
 	failed: number;
+	/** Nobody to send to: these are called or written to. */
+	noAddress: number;
 	doubtful: number;
 }
 
@@ -120,7 +122,8 @@ export const mailState = (actor: Actor): Promise<MailState> =>
 			set: config().mail !== null,
 			waiting: of('waiting', 'sending'),
 			sent: of('sent'),
-			failed: of('failed', 'no address'),
+			failed: of('failed'),
+			noAddress: of('no address'),
 			doubtful: of('doubtful')
 		};
 	});

@@ -1,5 +1,7 @@
+import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { read } from '$lib/server/change';
+import { may } from '$lib/server/permission';
 import { boardOf } from './report.commands.server';
 
 export interface ReleaseHead {
@@ -123,3 +125,15 @@ export const findWaitingReleases = (actor: Actor, studyId: string) =>
 			mine: row.asker_id === actor.personId
 		}));
 	});
+
+/** The same for the API: a look's report, or nothing there. A closed one is for those who may see by arm. */
+export async function getReport(
+	actor: Actor,
+	studyId: string,
+	lookId: string
+): Promise<ReportHead> {
+	const { report } = await findReport(actor, studyId, lookId);
+	if (!report || (report.kind === 'closed' && !may(actor.grants, 'look.by-arm', { studyId })))
+		throw new Refusal('NOT_FOUND');
+	return report;
+}

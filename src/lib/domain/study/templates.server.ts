@@ -14,11 +14,13 @@ const files = import.meta.glob<string>('../../../../templates/studies/*.json', {
 	eager: true
 });
 
+const several = (count: number, what: string) => `${count} ${what}${count === 1 ? '' : 's'}`;
+
 const summary = (definition: StudyDefinition): string =>
 	[
 		isRandomised(definition) ? `${definition.arms.length} arms` : 'one arm',
-		`${definition.visits.length} visits`,
-		`${definition.measures.length} measures`
+		several(definition.visits.length, 'visit'),
+		several(definition.measures.length, 'measure')
 	].join(', ');
 
 /** The studies to begin from: one for each file of the templates folder. A file that does not hold is a fault. */

@@ -40,6 +40,11 @@ export async function tellSubject(
 		.where('kind', '=', 'died')
 		.executeTakeFirst();
 	if (died) return;
+	const contact = await writer
+		.selectFrom('contact_details')
+		.select('email')
+		.where('subject_id', '=', row.subject_id)
+		.executeTakeFirst();
 	const facts: VisitFacts = {
 		uid: row.calendar_uid,
 		sequence: row.calendar_sequence,
@@ -56,6 +61,7 @@ export async function tellSubject(
 		siteId: row.site_id,
 		subjectId: row.subject_id,
 		appointmentId,
-		facts
+		facts,
+		noAddress: !contact?.email
 	});
 }

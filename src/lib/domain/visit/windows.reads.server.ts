@@ -4,7 +4,7 @@ import type { Actor } from '$lib/server/actor';
 import { read, type Reader } from '$lib/server/change';
 import type { Capability } from '$lib/server/permission';
 import { clock } from '$lib/time/clock';
-import { addDays, plainDateOf, shortDateText } from '$lib/time/dates';
+import { addDays, dateText, plainDateOf, shortDateText, type PlainDate } from '$lib/time/dates';
 import { dateInZone, timeInZone } from '$lib/time/zones';
 import { closingWithinDays, timeLeft } from '../schedule/window';
 import { sitesFor, type SiteHead } from '../study/sites.server';
@@ -149,10 +149,14 @@ function rowOf(row: Found, site: SiteHead, now: Date): WindowRow {
 	};
 }
 
-/** 'booked 12 Jun 2026 11:00', 'telephone: no answer, 8 Jun 2026; try again 11 Jun 2026', 'not booked' */
+/** 'Fri 12 Jun' */
+const dayOf = (date: PlainDate) =>
+	`${dateText(date).slice(0, 3)} ${shortDateText(date).slice(0, -5)}`;
+
+/** 'booked Fri 12 Jun, 11:00', 'telephone: no answer, 8 Jun 2026; try again 11 Jun 2026', 'not booked' */
 function lastStepOf(row: Found, zone: string): string {
 	if (row.starts_at)
-		return `booked ${shortDateText(dateInZone(row.starts_at, zone))}, ${timeInZone(row.starts_at, zone)}`;
+		return `booked ${dayOf(dateInZone(row.starts_at, zone))}, ${timeInZone(row.starts_at, zone)}`;
 	if (row.contact_at) {
 		const again = row.try_again_on
 			? `; try again ${shortDateText(plainDateOf(row.try_again_on))}`

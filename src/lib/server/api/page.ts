@@ -19,3 +19,10 @@ export function pageOf<T>(rows: T[], limit: number, cursorOf: (row: T) => string
 	const last = items.at(-1);
 	return { items, nextCursor: rows.length > limit && last ? cursorOf(last) : null };
 }
+
+/** A page of a list that is short enough to be read whole, newest first. */
+export function listed<T extends { id: string }>(all: readonly T[], query: PageQuery): Page<T> {
+	const { cursor } = query;
+	const rest = cursor === undefined ? all : all.filter(({ id }) => id < cursor);
+	return pageOf(rest.slice(0, query.limit + 1), query.limit, ({ id }) => id);
+}

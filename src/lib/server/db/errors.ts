@@ -15,6 +15,7 @@ const byConstraint: Record<string, RefusalCode> = {
 	person_email: 'EMAIL_TAKEN',
 	study_code: 'CODE_TAKEN',
 	allocation_record_study_id_key: 'LIST_EXISTS',
+	allocation_list_study_id_key: 'LIST_EXISTS',
 	monitoring_plan_study_id_key: 'PLAN_EXISTS'
 };
 

@@ -16,6 +16,8 @@ export interface NewMail {
 	appointmentId?: string;
 	/** What the words need and the rows do not say; no address, no link, nothing of health. */
 	facts?: Record<string, string | number | boolean | null>;
+	/** There is no address to send it to: the row says so at once, and no job tries. */
+	noAddress?: boolean;
 	/** A link that opens something: kept encrypted, and cleared once it was handed over. */
 	secret?: string;
 }
@@ -44,9 +46,10 @@ export async function queueMail(writer: Writer, mail: NewMail): Promise<string> 
 			appointment_id: mail.appointmentId ?? null,
 			facts: JSON.stringify(mail.facts ?? {}),
 			secret: mail.secret === undefined ? null : wrap(mail.secret),
+			...(mail.noAddress ? { status: 'no address' as const } : {}),
 			message_id: `<${newRandomId()}@${senderDomain()}>`
 		})
 		.execute();
-	await writer.enqueue('mail', { mailId: id });
+	if (!mail.noAddress) await writer.enqueue('mail', { mailId: id });
 	return id;
 }

@@ -42,6 +42,8 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 				logContactForm,
 				{
 					way: 'telephone',
+					// Nothing is chosen for the person.
+					outcome: '' as never,
 					onDate: dateInZone(now, visit.site.zone),
 					onTime: timeInZone(now, visit.site.zone),
 					nextStep: '',

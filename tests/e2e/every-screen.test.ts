@@ -1,0 +1,147 @@
+import AxeBuilder from '@axe-core/playwright';
+import { expect, test } from '../support/browser';
+import { accounts, publicScreens, ready, screensFor, signedIn } from '../support/screens';
+
+const tags = ['wcag2a', 'wcag2aa', 'wcag21a', 'wcag21aa', 'wcag22aa', 'best-practice'];
+
+test.describe.configure({ mode: 'parallel' });
+
+async function violations(page: import('@playwright/test').Page, name: string) {
+	const { violations: found } = await new AxeBuilder({ page }).withTags(tags).analyze();
+	return found.map(
+		(each) =>
+			`${name}: ${each.id} (${each.help}) at ${each.nodes
+				.map((node) => node.target.join(' '))
+				.slice(0, 3)
+				.join(', ')}`
+	);
+}
+
+for (const role of [
+	'administrator',
+	'data manager',
+	'study coordinator',
+	'research nurse',
+	'site investigator',
+	'monitor',
+	'auditor',
+	'trial statistician',
+	'independent statistician',
+	'monitoring board member'
+])
+	test(`every screen of the ${role} opens, has a title and passes axe, wide in light and narrow in dark`, async ({
+		browser,
+		heddle
+	}) => {
+		test.setTimeout(300_000);
+		const account = (await accounts(heddle)).find((each) => each.role === role);
+		if (!account) throw new Error(`The demo has no ${role}`);
+		const screens = await screensFor(heddle, account.grants);
+		expect(screens.length).toBeGreaterThan(1);
+		const said: string[] = [];
+		for (const look of [
+			{ viewport: { width: 1280, height: 800 }, colorScheme: 'light' },
+			{ viewport: { width: 820, height: 1100 }, colorScheme: 'dark' }
+		] as const) {
+			const context = await signedIn(browser, heddle, account, look);
+			const page = await context.newPage();
+			page.on('pageerror', (error) => said.push(`${page.url()}: ${error.message}`));
+			for (const screen of screens) {
+				const answer = await page.goto(screen.path);
+				if (!answer?.ok()) said.push(`${screen.name}: ${answer?.status()}`);
+				await ready(page);
+				if (!/\S · Heddle$/.test(await page.title()))
+					said.push(`${screen.name}: the title is “${await page.title()}”`);
+				const wide = await page.evaluate(
+					() => document.documentElement.scrollWidth > innerWidth + 1
+				);
+				if (wide) said.push(`${screen.name}: wider than the screen at ${look.viewport.width}`);
+				said.push(...(await violations(page, screen.name)));
+			}
+			await context.close();
+		}
+		expect(said).toEqual([]);
+	});
+
+test('the screens before sign-in pass axe', async ({ browser, heddle }) => {
+	const said: string[] = [];
+	const context = await browser.newContext({ baseURL: heddle.origin });
+	const page = await context.newPage();
+	for (const screen of publicScreens) {
+		await page.goto(screen.path);
+		await ready(page);
+		said.push(...(await violations(page, screen.name)));
+	}
+	await context.close();
+	expect(said).toEqual([]);
+});
+
+test('the keyboard reaches everything that answers to a click, and shows where it is', async ({
+	browser,
+	heddle
+}) => {
+	test.setTimeout(300_000);
+	const said: string[] = [];
+	for (const account of await accounts(heddle)) {
+		const context = await signedIn(browser, heddle, account);
+		const page = await context.newPage();
+		for (const screen of await screensFor(heddle, account.grants)) {
+			await page.goto(screen.path);
+			await ready(page);
+			const wanted = await page.evaluate(() => {
+				const all = [
+					...document.querySelectorAll<HTMLElement>(
+						'main a[href], main button, main input, main select, main textarea, main summary'
+					)
+				];
+				const seen = all.filter(
+					(each) =>
+						each.checkVisibility() &&
+						!(each as HTMLButtonElement).disabled &&
+						each.tabIndex >= 0 &&
+						(each as HTMLInputElement).type !== 'hidden'
+				);
+				seen.slice(0, 60).forEach((each, n) => each.setAttribute('data-wanted', String(n)));
+				return seen.slice(0, 60).map((each) => ({
+					name:
+						(each.textContent ?? '').trim().slice(0, 30) ||
+						each.getAttribute('name') ||
+						each.tagName,
+					// One stop serves a group of radio buttons.
+					group:
+						(each as HTMLInputElement).type === 'radio' ? (each as HTMLInputElement).name : null
+				}));
+			});
+			const reached = new Set<number>();
+			const unseen: string[] = [];
+			for (let n = 0; n < wanted.length + 40 && reached.size < wanted.length; n++) {
+				await page.keyboard.press('Tab');
+				const at = await page.evaluate(() => {
+					const active = document.activeElement as HTMLElement | null;
+					if (!active || active === document.body) return null;
+					const style = getComputedStyle(active);
+					return {
+						wanted: active.getAttribute('data-wanted'),
+						shown: style.outlineStyle !== 'none' && parseFloat(style.outlineWidth) > 0
+					};
+				});
+				if (at?.wanted) {
+					reached.add(Number(at.wanted));
+					if (!at.shown) unseen.push(wanted[Number(at.wanted)]?.name ?? '');
+				}
+			}
+			const groups = new Set([...reached].map((n) => wanted[n]?.group).filter(Boolean));
+			const missed = wanted.filter(
+				(each, n) => !reached.has(n) && !(each.group && groups.has(each.group))
+			);
+			if (missed.length > 0)
+				said.push(
+					`${account.role} ${screen.name}: not reached: ${missed.map((each) => each.name).join(', ')}`
+				);
+			if (unseen.length > 0)
+				said.push(`${account.role} ${screen.name}: no visible focus: ${unseen.join(', ')}`);
+		}
+		await context.close();
+	}
+	expect(said).toEqual([]);
+});
