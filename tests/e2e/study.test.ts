@@ -37,7 +37,7 @@ const test = base.extend<object, { shared: Shared }>({
 	],
 	baseURL: async ({ shared }, use) => use(shared.server.origin)
 });
-test.describe.configure({ mode: 'serial' });
+test.describe.configure({ mode: 'serial', timeout: 180_000 });
 
 const ready = (page: Page) => page.locator('html[data-ready]').waitFor();
 
@@ -94,7 +94,7 @@ test('a data manager makes a study from a template, changes a window, and publis
 
 	await expect(page.getByRole('heading', { name: 'Schedule of activities' })).toBeVisible();
 	await expect(page.getByText('Two arms, allocated by chance in equal parts')).toBeVisible();
-	await expect(page.getByRole('row', { name: /Month 24/ })).toContainText(
+	await expect(page.getByRole('row', { name: /^Month 24/ })).toContainText(
 		'24 months after randomisation'
 	);
 	await axe(page);
@@ -218,7 +218,7 @@ test('a coordinator screens, takes consent, enrols and randomises, mostly by key
 	await page.getByText('Record how somebody leaves').click();
 	await page.getByRole('button', { name: 'Record', exact: true }).click();
 	await expect(page.getByText('Choose what happened.')).toBeVisible();
-	await page.getByLabel(/^stopped visits/).check();
+	await page.getByRole('radio', { name: /^stopped visits/ }).check();
 	await page.getByRole('button', { name: 'Record', exact: true }).click();
 	await expect(page.getByText('9 visits are not required any more.')).toBeVisible();
 	await axe(page);

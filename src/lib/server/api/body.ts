@@ -1,7 +1,6 @@
 import { Refusal } from '$lib/refusal';
 
 const usual = 256 * 1024;
-const patience = 1024 * 1024;
 
 /** The body as JSON. NUL characters are refused here once for all: PostgreSQL holds no text with them. */
 export async function readJson(request: Request, limit = usual): Promise<unknown> {
@@ -19,21 +18,30 @@ export async function readJson(request: Request, limit = usual): Promise<unknown
 	return value;
 }
 
+/** How much more than the limit is still read, and thrown away, so that the refusal reaches whoever is sending. */
+const drained = 8 * 1024 * 1024;
+
 async function readText(request: Request, limit: number): Promise<string> {
 	const reader = request.body?.getReader();
 	if (!reader) return '';
+	const tooLarge = new Refusal('TOO_LARGE', { limit: `${Math.floor(limit / 1024)} KiB` });
 	const parts: Uint8Array[] = [];
 	let size = 0;
 	for (;;) {
-		const { done, value } = await reader.read();
+		const { done, value } = await reader.read().catch((error: unknown) => {
+			// The server's own limit on bodies, which is larger than ours.
+			if ((error as { status?: number } | null)?.status === 413) throw tooLarge;
+			throw error;
+		});
 		if (done) break;
 		size += value.length;
-		// Read on for a while without keeping it: whoever is still sending could not hear the refusal.
-		if (size > limit + patience) await reader.cancel();
 		if (size <= limit) parts.push(value);
-		else if (size > limit + patience) break;
+		else if (size > limit + drained) {
+			await reader.cancel();
+			throw tooLarge;
+		}
 	}
-	if (size > limit) throw new Refusal('TOO_LARGE', { limit: `${Math.floor(limit / 1024)} KiB` });
+	if (size > limit) throw tooLarge;
 	return Buffer.concat(parts).toString('utf8');
 }
 
