@@ -31,7 +31,7 @@ interface Mutation {
 
 /** Every form action and every API method that may change something. */
 const mutations = (): Mutation[] =>
-	builtRoutes().flatMap((route) => {
+	builtRoutes().flatMap((route): Mutation[] => {
 		const address = addressOf(route, (param) => people.things[param] ?? '');
 		if (route.page)
 			return route.actions.map((action) => ({

@@ -99,6 +99,10 @@ async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): P
 			`insert into app.report (id, study_id, look_id, kind, made_by) values ($1, $2, $3, 'open', $4)`,
 			[made.report, scene.studyId, made.look, by]
 		);
+		await insert(
+			`insert into app.release (id, study_id, report_id, person_id, asked_by) values ($1, $2, $3, $4, $4)`,
+			[made.release, scene.studyId, made.report, by]
+		);
 	});
 	return made;
 }
