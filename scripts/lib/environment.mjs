@@ -60,5 +60,7 @@ export function environmentFor(kind, all, surroundings = process.env) {
 			const value = all[name];
 			if (value !== undefined && value !== '') env[name] = value;
 		}
+	// A file to import may have 50 MB, and somewhat more on its way here.
+	if (kind === 'web') env.BODY_SIZE_LIMIT ??= '110M';
 	return env;
 }
