@@ -32,7 +32,7 @@ const framing: Handle = async ({ event, resolve }) => {
 	const { headers } = response;
 	headers.set('x-request-id', event.locals.requestId);
 	headers.set('x-content-type-options', 'nosniff');
-	headers.set('referrer-policy', 'same-origin');
+	if (!headers.has('referrer-policy')) headers.set('referrer-policy', 'same-origin');
 	headers.set('x-frame-options', 'DENY');
 	headers.set('cross-origin-opener-policy', 'same-origin');
 	headers.set('cross-origin-resource-policy', 'same-origin');

@@ -111,6 +111,16 @@ export async function build({ buildDir, kitDir, say, web = true }) {
 		writeFileSync(mark, stamp);
 		return true;
 	};
+	// The compiler's settings extend a file that the framework writes, also when the build itself lies elsewhere.
+	if (!existsSync(join(root, '.svelte-kit/tsconfig.json')))
+		await execute(
+			process.execPath,
+			[join(root, 'node_modules/@sveltejs/kit/svelte-kit.js'), 'sync'],
+			{
+				cwd: root,
+				env: { ...env, HEDDLE_KIT_DIR: '.svelte-kit' }
+			}
+		);
 	// The adapter empties the folder, so the command-line programs come second.
 	const again = web && (await part('web', []));
 	if (again) rmSync(join(out, '.stamp-cli'), { force: true });

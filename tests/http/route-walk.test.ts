@@ -1,18 +1,10 @@
-import { readFileSync } from 'node:fs';
-import { join } from 'node:path';
 import { afterAll, beforeAll, describe, expect, test } from 'vitest';
-import { root } from '../../scripts/lib/places.mjs';
 import { accessOf } from '../../src/lib/server/routes';
+import { expectedAccess as expected } from '../support/access';
 import { crowd, type Crowd, type Things } from '../support/crowd';
 import type { Visitor } from '../support/people';
 import { addressOf, builtRoutes, type BuiltRoute } from '../support/routes';
 import { startServer, type RunningServer } from '../support/server';
-
-/** Route, method, who: 'everyone', 'signed in', or roles. Written by hand. */
-type Expected = Record<string, Record<string, string | string[]>>;
-const expected = JSON.parse(
-	readFileSync(join(root, 'tests/http/expected-access.json'), 'utf8')
-) as Expected;
 
 let server: RunningServer;
 let people: Crowd;

@@ -45,9 +45,7 @@ async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): P
 		site,
 		windows: Object.fromEntries(keys.slice(0, 2).map((key) => [key, around('2026-06-09')]))
 	});
-	const [visit = '', booked = ''] = keys
-		.map((key) => subject.visits[key])
-		.filter(Boolean) as string[];
+	const visit = subject.visits[keys[0] ?? ''] ?? '';
 	const made: Things = {
 		study: scene.studyId,
 		subject: subject.id,
@@ -100,6 +98,10 @@ async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): P
 		await insert(
 			`insert into app.report (id, study_id, look_id, kind, made_by) values ($1, $2, $3, 'open', $4)`,
 			[made.report, scene.studyId, made.look, by]
+		);
+		await insert(
+			`insert into app.release (id, study_id, report_id, person_id, asked_by) values ($1, $2, $3, $4, $4)`,
+			[made.release, scene.studyId, made.report, by]
 		);
 	});
 	return made;

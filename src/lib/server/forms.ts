@@ -1,4 +1,4 @@
-import { fail } from '@sveltejs/kit';
+import { error, fail } from '@sveltejs/kit';
 import { setError, superValidate, type SuperValidated } from 'sveltekit-superforms';
 import { zod4 } from 'sveltekit-superforms/adapters';
 import type { z } from 'zod';
@@ -21,6 +21,16 @@ export const formFor = <S extends Schema>(schema: S, data?: Partial<z.input<S>>,
 		{ ...(id ? { id } : {}), errors: false } as never
 	);
 
+/** The form that was sent; what is no form, or is cut off, is refused. */
+export async function readForm(request: Request): Promise<FormData> {
+	const body = await request.formData().catch(() => null);
+	if (!body)
+		error(400, {
+			message: 'The form could not be read. Load the page again and send it once more.'
+		});
+	return body;
+}
+
 /**
  * One action: parses the form by its schema, runs the command, and gives refusals back beside the field or at the top.
  * Typed values stay. Redirects thrown inside pass through.
@@ -31,7 +41,11 @@ export async function submit<S extends Schema>(
 	work: (data: z.output<S>) => Promise<string | void>,
 	id?: string
 ) {
-	const body = await request.formData();
+	const body = await request.formData().catch(() => null);
+	if (!body)
+		error(400, {
+			message: 'The form could not be read. Load the page again and send it once more.'
+		});
 	for (const [name, value] of body)
 		if (typeof value === 'string' && value.includes('\u0000'))
 			body.set(name, value.replaceAll('\u0000', '\uFFFD'));

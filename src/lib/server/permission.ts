@@ -56,6 +56,8 @@ const table = {
 	'cut.export': ['data_manager', 'statistician', 'independent_statistician'],
 	'plan.sign': ['statistician'],
 	'look.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],
+	/** To ask for a look, sign the plan or see to a release: each act asks the door for its own right again. */
+	'look.act': ['data_manager', 'statistician', 'independent_statistician'],
 	'look.pooled': ['statistician', 'independent_statistician'],
 	'look.by-arm': ['independent_statistician'],
 	'allocation.make': ['independent_statistician'],

@@ -1,10 +1,11 @@
 import { sql } from 'kysely';
 import type { Role } from '../person/roles';
+import { closingWithinDays } from '../schedule/window';
 import { sitesFor, type SiteHead } from '../study/sites.server';
 import type { Actor } from '$lib/server/actor';
 import { read, type Reader } from '$lib/server/change';
 import { clock } from '$lib/time/clock';
-import { addDays, dateText, mondayOf, plainDateOf, shortDateText } from '$lib/time/dates';
+import { addDays, dateText, mondayOf, shortDateText } from '$lib/time/dates';
 import { dateInZone, dayInZone, timeInZone } from '$lib/time/zones';
 
 /** The roles by which the actor has a part in the study. */
@@ -163,7 +164,7 @@ export const getWorkAtSites = (actor: Actor, studyId: string): Promise<WorkAtSit
 	read(actor, 'feed.own', { studyId }, async (reader) => {
 		const sites = await sitesFor(reader, actor, studyId, 'feed.own');
 		const [first] = sites;
-		const counts = await siteCounts(reader, studyId, sites);
+		const counts = await Promise.all(sites.map((site) => openCounts(reader, studyId, site)));
 		return {
 			sites,
 			day: dateText(dateInZone(clock.now(), first?.zone ?? 'UTC')),
@@ -173,6 +174,18 @@ export const getWorkAtSites = (actor: Actor, studyId: string): Promise<WorkAtSit
 			weeks: await weeksAhead(reader, studyId, sites)
 		};
 	});
+
+/** Windows at a site that close within three days, and that have passed; the index on open windows serves it. */
+async function openCounts(reader: Reader, studyId: string, site: SiteHead) {
+	const today = dateInZone(clock.now(), site.zone);
+	const { rows } = await sql<{ closing: number; passed: number }>`
+		select count(*) filter (where v.latest < ${today}::date)::int as passed,
+			count(*) filter (where v.latest between ${today}::date and ${addDays(today, closingWithinDays)}::date)::int as closing
+		from app.visit v
+		where v.site_id = ${site.id}::uuid and v.study_id = ${studyId}::uuid
+			and v.status in ('planned', 'booked') and v.earliest <= ${today}::date`.execute(reader);
+	return rows[0] ?? { closing: 0, passed: 0 };
+}
 
 export interface SiteCount {
 	siteId: string;
@@ -197,7 +210,7 @@ async function siteCounts(
 	return Promise.all(
 		sites.map(async (site) => {
 			const today = dateInZone(now, site.zone);
-			const soon = addDays(plainDateOf(today), 3);
+			const soon = addDays(today, closingWithinDays);
 			const { rows } = await sql<
 				Record<
 					'subjects' | 'completed' | 'under_way' | 'missed' | 'passed' | 'closing' | 'not_done',

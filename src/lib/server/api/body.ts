@@ -18,21 +18,30 @@ export async function readJson(request: Request, limit = usual): Promise<unknown
 	return value;
 }
 
+/** How much more than the limit is still read, and thrown away, so that the refusal reaches whoever is sending. */
+const drained = 8 * 1024 * 1024;
+
 async function readText(request: Request, limit: number): Promise<string> {
 	const reader = request.body?.getReader();
 	if (!reader) return '';
+	const tooLarge = new Refusal('TOO_LARGE', { limit: `${Math.floor(limit / 1024)} KiB` });
 	const parts: Uint8Array[] = [];
 	let size = 0;
 	for (;;) {
-		const { done, value } = await reader.read();
+		const { done, value } = await reader.read().catch((error: unknown) => {
+			// The server's own limit on bodies, which is larger than ours.
+			if ((error as { status?: number } | null)?.status === 413) throw tooLarge;
+			throw error;
+		});
 		if (done) break;
 		size += value.length;
-		if (size > limit) {
+		if (size <= limit) parts.push(value);
+		else if (size > limit + drained) {
 			await reader.cancel();
-			throw new Refusal('TOO_LARGE', { limit: `${Math.floor(limit / 1024)} KiB` });
+			throw tooLarge;
 		}
-		parts.push(value);
 	}
+	if (size > limit) throw tooLarge;
 	return Buffer.concat(parts).toString('utf8');
 }
 

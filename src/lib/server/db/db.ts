@@ -25,6 +25,8 @@ export function openDatabase(url: string, connections = 10): Database {
 	});
 	// A connection that dies while idle (the database restarted) is replaced at the next use; it must not end the process.
 	pool.on('error', () => {});
+	// So must one that dies while it is lent out, between two statements: whoever holds it learns of it at the next one.
+	pool.on('connect', (client) => client.on('error', () => {}));
 	const kysely = new Kysely<Tables>({ dialect: new PostgresDialect({ pool }) });
 	return { pool, kysely: kysely.withSchema('app'), close: () => kysely.destroy() };
 }

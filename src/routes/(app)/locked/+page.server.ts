@@ -20,7 +20,7 @@ export const actions: Actions = {
 	},
 	unlock: async ({ request, locals, url }) => {
 		if (!locals.lockedActor) redirect(303, '/');
-		const password = (await request.formData()).get('password');
+		const password = (await request.formData().catch(() => null))?.get('password');
 		try {
 			if (
 				typeof password !== 'string' ||

@@ -4,7 +4,7 @@ import { freezeCut, remakeCut } from '$lib/domain/cut/cut.commands.server';
 import { cutInput } from '$lib/domain/cut/cut.input';
 import { findCuts } from '$lib/domain/cut/cut.reads.server';
 import { Refusal } from '$lib/refusal';
-import { formFor, submit } from '$lib/server/forms';
+import { formFor, submit, readForm } from '$lib/server/forms';
 import { may } from '$lib/server/permission';
 import { actorOf, serve } from '$lib/server/serve';
 import type { Actions, PageServerLoad } from './$types';
@@ -31,7 +31,7 @@ export const actions: Actions = {
 			return `Cut ${cut.number} is frozen: ${cut.subjects} subjects, ${cut.measurements} measurements.`;
 		}),
 	again: async (event) => {
-		const id = z.uuid().safeParse((await event.request.formData()).get('cutId'));
+		const id = z.uuid().safeParse((await readForm(event.request)).get('cutId'));
 		if (!id.success) return fail(400, { again: null });
 		try {
 			const again = await remakeCut(actorOf(event), event.params.study, id.data);

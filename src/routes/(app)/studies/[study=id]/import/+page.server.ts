@@ -4,6 +4,7 @@ import { uploadImport } from '$lib/domain/import/import.commands.server';
 import { findImports } from '$lib/domain/import/import.reads.server';
 import { importLimits } from '$lib/domain/import/table';
 import { Refusal } from '$lib/refusal';
+import { readForm } from '$lib/server/forms';
 import { actorOf, serve } from '$lib/server/serve';
 import type { Actions, PageServerLoad } from './$types';
 
@@ -15,7 +16,7 @@ export const load: PageServerLoad = async ({ locals, params }) => ({
 export const actions: Actions = {
 	default: async (event) => {
 		const actor = actorOf(event);
-		const file = (await event.request.formData()).get('file');
+		const file = (await readForm(event.request)).get('file');
 		if (!(file instanceof File) || file.size === 0)
 			return fail(400, { said: 'Choose a file first.' });
 		if (file.size > importLimits.bytes)

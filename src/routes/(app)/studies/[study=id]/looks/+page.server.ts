@@ -9,7 +9,7 @@ import { approveRelease } from '$lib/domain/report/report.commands.server';
 import { approveInput } from '$lib/domain/report/report.input';
 import { findWaitingReleases } from '$lib/domain/report/report.reads.server';
 import { Refusal } from '$lib/refusal';
-import { formFor, submit } from '$lib/server/forms';
+import { formFor, submit, readForm } from '$lib/server/forms';
 import { may } from '$lib/server/permission';
 import { actorOf, serve } from '$lib/server/serve';
 import type { Actions, PageServerLoad } from './$types';
@@ -79,7 +79,7 @@ export const actions: Actions = {
 			'plan'
 		),
 	approve: async (event) => {
-		const input = approveInput.safeParse(Object.fromEntries(await event.request.formData()));
+		const input = approveInput.safeParse(Object.fromEntries(await readForm(event.request)));
 		if (!input.success) return fail(400, { said: 'Choose a release of the list.' });
 		try {
 			await approveRelease(actorOf(event), event.params.study, input.data.releaseId);

@@ -6,6 +6,7 @@ import { getJob } from '$lib/domain/job/job.reads.server';
 import { findSites, getStudy } from '$lib/domain/study/study.reads.server';
 import { Refusal } from '$lib/refusal';
 import { fieldErrors } from '$lib/server/api/fields';
+import { readForm } from '$lib/server/forms';
 import { actorOf, serve } from '$lib/server/serve';
 import { unitCodes, unitOf } from '$lib/units/units';
 import { startingForm } from './mapping-start';
@@ -52,7 +53,7 @@ export const actions: Actions = {
 	map: async (event) => {
 		const actor = actorOf(event);
 		const { study, batch } = event.params;
-		const sent = await event.request.formData();
+		const sent = await readForm(event.request);
 		const text = (name: string) => String(sent.get(name) ?? '').replaceAll('\u0000', '');
 		const texts = (name: string) =>
 			sent.getAll(name).map((each) => String(each).replaceAll('\u0000', ''));

@@ -14,6 +14,7 @@ import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { reportInput } from '$lib/server/looks/report-input';
 import { may } from '$lib/server/permission';
+import { readForm } from '$lib/server/forms';
 import { actorOf, serve } from '$lib/server/serve';
 import type { Actions, PageServerLoad } from './$types';
 
@@ -91,7 +92,7 @@ export const actions: Actions = {
 		return { done: 'The report is being made.' };
 	},
 	release: async (event) => {
-		const sent = await event.request.formData();
+		const sent = await readForm(event.request);
 		const input = releaseInput.safeParse({ people: sent.getAll('people').map(String) });
 		if (!input.success) return fail(400, { said: 'Choose at least one board member.' });
 		const actor = actorOf(event);
@@ -110,7 +111,7 @@ export const actions: Actions = {
 		}
 	},
 	approve: async (event) => {
-		const input = approveInput.safeParse(Object.fromEntries(await event.request.formData()));
+		const input = approveInput.safeParse(Object.fromEntries(await readForm(event.request)));
 		if (!input.success) return fail(400, { said: 'Choose a release of the list.' });
 		try {
 			await approveRelease(actorOf(event), event.params.study, input.data.releaseId);

@@ -1,0 +1,251 @@
+import { afterAll, beforeAll, expect, test } from 'vitest';
+import { startVisit } from '../../src/lib/domain/visit/conduct.commands.server';
+import {
+	addScreening,
+	answerEligibility,
+	recordConsent
+} from '../../src/lib/domain/subject/screening.commands.server';
+import { actorFor } from '../../src/lib/server/auth/actor';
+import { hashPassword } from '../../src/lib/server/auth/password';
+import { addDays } from '../../src/lib/time/dates';
+import { dateInZone } from '../../src/lib/time/zones';
+import { freshDatabase, useEnvironment, type FreshDatabase } from '../support/database';
+import { asOwner, signIn, type Visitor } from '../support/people';
+import {
+	consentOn,
+	enrolOne,
+	makeList,
+	makeScene,
+	metAnswers,
+	particulars,
+	useAs,
+	type Scene
+} from '../support/scene';
+import { startServer, type RunningServer } from '../support/server';
+import {
+	addSubject,
+	visitScene,
+	type Scene as VisitScene,
+	type SceneSubject
+} from '../support/visit-scene';
+import { slotsFrom } from './support/bookers';
+import { expectWholeTrail } from './support/whole';
+
+/** Two web servers on one database: nothing that one of them keeps to itself may decide a race. */
+let db: FreshDatabase;
+let servers: RunningServer[] = [];
+let end: () => Promise<void>;
+let scene: Scene;
+let visits: VisitScene;
+const password = 'linen warp and weft';
+
+beforeAll(async () => {
+	db = await freshDatabase();
+	useEnvironment(db);
+	end = useAs(db.appUrl);
+	scene = await makeScene(db, { plannedSubjects: 200 });
+	const hash = await hashPassword(password);
+	visits = await visitScene(db, { passwordHash: hash });
+	await asOwner(db, (client) =>
+		client.query('update app.person set password_hash = $1 where id = any ($2)', [
+			hash,
+			[scene.coordinator.personId, scene.other.personId]
+		])
+	);
+	servers = [await startServer({ database: db }), await startServer({ database: db })];
+}, 300_000);
+afterAll(async () => {
+	for (const server of servers) await server.stop();
+	await end?.();
+	await db?.drop();
+});
+
+/** The same person signed in at both servers; `at(n)` takes them in turn. */
+async function everywhere(email: string): Promise<(n: number) => Visitor> {
+	const visitors: Visitor[] = [];
+	for (const server of servers) visitors.push(await signIn(server, email, password));
+	return (n) => visitors[n % visitors.length] as Visitor;
+}
+
+const answered = async (answer: Response) => ({
+	status: answer.status,
+	type: answer.headers.get('content-type'),
+	body: (await answer.json()) as Record<string, unknown>
+});
+const oneEach = <T>(values: readonly T[]) => new Set(values).size === values.length;
+
+test('200 randomisations at once through two web servers use the positions 1 to n once each', async () => {
+	const north: string[] = [];
+	const salt: string[] = [];
+	const [first, second] = scene.sites;
+	for (let n = 0; n < 120; n++) north.push((await enrolOne(scene)).id);
+	for (let n = 0; n < 80; n++) salt.push((await enrolOne(scene, scene.other, second?.id)).id);
+	expect(first?.id).not.toBe(second?.id);
+	await end();
+	await makeList(db, scene);
+	end = useAs(db.appUrl);
+	const coordinator = await everywhere(scene.coordinator.email);
+	const other = await everywhere(scene.other.email);
+	const calls = [
+		...north.map((id) => ({ id, by: coordinator })),
+		...salt.map((id) => ({ id, by: other }))
+	].sort((a, b) => (a.id.slice(-6) < b.id.slice(-6) ? -1 : 1));
+	const answers = await Promise.all(
+		calls.map(async ({ id, by }, n) =>
+			answered(
+				await by(n).send('POST', `/api/studies/${scene.studyId}/subjects/${id}/randomisation`)
+			)
+		)
+	);
+	expect(answers.filter(({ status }) => status >= 300)).toEqual([]);
+	expect(oneEach(answers.map(({ body }) => body.kitNumber))).toBe(true);
+	const [used] = await db.sql(
+		`select stratum ->> 'site' as site, array_agg(position order by position) as places, count(distinct subject_id)::int as subjects
+		from closed.list_position where study_id = '${scene.studyId}' and subject_id is not null group by 1 order by 1`
+	);
+	const upTo = (n: number) => Array.from({ length: n }, (_, at) => at + 1);
+	expect(used).toEqual([
+		{ site: '01', places: upTo(120), subjects: 120 },
+		{ site: '02', places: upTo(80), subjects: 80 }
+	]);
+	const [kits] = await db.sql(
+		`select count(*)::int as n from app.subject s join closed.list_position l on l.subject_id = s.id and l.kit_number = s.kit_number where s.study_id = '${scene.studyId}'`
+	);
+	expect(kits?.[0].n).toBe(200);
+});
+
+async function dueSubjects(count: number): Promise<SceneSubject[]> {
+	const today = dateInZone(new Date(), visits.sites[0].zone);
+	const made: SceneSubject[] = [];
+	for (let n = 0; n < count; n++)
+		made.push(
+			await addSubject(db, visits, {
+				email: `race-${n}@example.org`,
+				windows: { 'month-6': [addDays(today, -7), today, addDays(today, 60)] }
+			})
+		);
+	return made;
+}
+
+test('of 40 clients who book the same room and person at the same time exactly one wins, five times over', async () => {
+	const [site] = visits.sites;
+	const coordinator = await everywhere(site.coordinator.email);
+	const codes: Record<string, number> = {};
+	for (const slot of slotsFrom(dateInZone(new Date(), site.zone), 5)) {
+		const subjects = await dueSubjects(40);
+		const answers = await Promise.all(
+			subjects.map(async (subject, n) =>
+				answered(
+					await coordinator(n).send(
+						'POST',
+						`/api/studies/${visits.studyId}/visits/${subject.visits['month-6']}/appointment`,
+						{ ...slot, roomId: site.rooms[0], staffId: site.nurse.id },
+						{ 'if-match': '"1"' }
+					)
+				)
+			)
+		);
+		const won = answers.filter(({ status }) => status === 201);
+		const lost = answers.filter(({ status }) => status !== 201);
+		expect(won).toHaveLength(1);
+		expect(lost).toHaveLength(39);
+		for (const { status, type, body } of lost) {
+			expect(['ROOM_TAKEN', 'STAFF_TAKEN']).toContain(body.code);
+			expect(status).toBe(409);
+			expect(type).toBe('application/problem+json');
+			codes[body.code as string] = (codes[body.code as string] ?? 0) + 1;
+		}
+		const ids = subjects.map((subject) => subject.visits['month-6']).join(',');
+		const [[kept]] = (await db.sql(
+			`select (select count(*) from app.appointment where visit_id = any ('{${ids}}'))::int as appointments,
+				(select count(*) from app.visit where id = any ('{${ids}}') and status = 'booked')::int as visits,
+				(select count(*) from app.mail m join app.appointment a on a.id = m.appointment_id where a.visit_id = any ('{${ids}}'))::int as mails`
+		)) as [Record<string, number>[]];
+		expect(kept).toEqual({ appointments: 1, visits: 1, mails: 1 });
+	}
+	console.log(`5 × 40 bookings of one room: 5 kept, refused ${JSON.stringify(codes)}`);
+});
+
+test('of two editors with the same version one is refused with 412, and nothing of theirs is kept', async () => {
+	const [site] = visits.sites;
+	const nurse = await everywhere(site.nurse.email);
+	const actor = await actorFor(site.nurse.id, 'scene');
+	const subjects = await dueSubjects(10);
+	for (const subject of subjects) {
+		const visitId = subject.visits['month-6'] as string;
+		await startVisit(actor, visits.studyId, visitId, 1);
+		const save = async (n: number, value: string, version: number | null) =>
+			answered(
+				await nurse(n).send(
+					'PUT',
+					`/api/studies/${visits.studyId}/visits/${visitId}/measurements/${visits.measures.potassium}`,
+					{ entry: { kind: 'value', value }, reason: version ? 'Read again.' : '' },
+					version ? { 'if-match': `"${version}"` } : {}
+				)
+			);
+		// A first entry from two tablets: one of them is told that there is a value already.
+		const begun = await Promise.all([save(0, '4.1', null), save(1, '4.2', null)]);
+		expect(begun.map(({ status }) => status).sort()).toEqual([200, 428]);
+		const both = await Promise.all([save(0, '4.6', 1), save(1, '4.7', 1)]);
+		expect(both.map(({ status }) => status).sort()).toEqual([200, 412]);
+		const winner = both.findIndex(({ status }) => status === 200);
+		expect(both[1 - winner]?.body.code).toBe('STALE');
+		const [rows] = await db.sql(
+			`select m.value, m.version, (select count(*)::int from audit.event e where e.record_id = m.id::text) as events
+			from app.measurement m where visit_id = '${visitId}' and measure_id = '${visits.measures.potassium}'`
+		);
+		expect(rows).toEqual([{ value: winner === 0 ? 4.6 : 4.7, version: 2, events: 2 }]);
+	}
+});
+
+test('an enrolment sent twice makes one subject', async () => {
+	const coordinator = await everywhere(scene.coordinator.email);
+	const siteId = scene.sites[0]?.id as string;
+	const today = '2026-03-02';
+	for (let n = 0; n < 10; n++) {
+		const screening = await addScreening(scene.coordinator, scene.studyId, {
+			siteId,
+			screenedOn: today
+		});
+		await recordConsent(
+			scene.coordinator,
+			scene.studyId,
+			screening.id,
+			consentOn(scene, scene.coordinator, today)
+		);
+		const { version } = await answerEligibility(
+			scene.coordinator,
+			scene.studyId,
+			screening.id,
+			{ answers: await metAnswers(scene) },
+			screening.version
+		);
+		const answers = await Promise.all(
+			[0, 1].map(async (at) =>
+				answered(
+					await coordinator(at).send(
+						'POST',
+						`/api/studies/${scene.studyId}/screenings/${screening.id}/enrolment`,
+						{ enrolledOn: today, ...particulars },
+						{ 'if-match': `"${version}"` }
+					)
+				)
+			)
+		);
+		expect(answers.map(({ status }) => status).sort()).toEqual([201, 409]);
+		expect(answers.find(({ status }) => status === 409)?.body.code).toBe('ALREADY_ENTERED');
+		const [[there]] = (await db.sql(
+			`select count(*)::int as subjects, count(distinct s.number)::int as numbers from app.subject s
+			join app.consent c on c.subject_id = s.id where c.screening_id = '${screening.id}'`
+		)) as [Record<string, number>[]];
+		expect(there).toEqual({ subjects: 1, numbers: 1 });
+	}
+	const [[all]] = (await db.sql(
+		`select count(*)::int as subjects, count(distinct number)::int as numbers from app.subject where study_id = '${scene.studyId}'`
+	)) as [Record<string, number>[]];
+	expect(all).toEqual({ subjects: 210, numbers: 210 });
+});
+
+test('the trail is whole after all of it', async () => {
+	expect(await expectWholeTrail(db)).toBeGreaterThan(1000);
+});
