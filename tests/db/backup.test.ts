@@ -1,3 +1,4 @@
+import { spawnSync } from 'node:child_process';
 import {
 	cpSync,
 	existsSync,
@@ -20,8 +21,22 @@ import {
 	restoreDatabase,
 	verifiedManifest
 } from '../../scripts/lib/backup.mjs';
-import { createDatabase, dropDatabase, sql } from '../../scripts/lib/databases.mjs';
+import { openCluster, startCluster } from '../../scripts/lib/cluster.mjs';
+import {
+	createDatabase,
+	dropDatabase,
+	ensureRoles,
+	sql,
+	urls
+} from '../../scripts/lib/databases.mjs';
+import { environmentFor } from '../../scripts/lib/environment.mjs';
+import { root } from '../../scripts/lib/places.mjs';
+import { anyFreePort } from '../../scripts/lib/ports.mjs';
+import { secrets } from '../../scripts/lib/secrets.mjs';
+import { removeTestCluster, testBuild, testState } from '../../scripts/lib/test-cluster.mjs';
+import { newId } from '../../src/lib/id';
 import { cluster, freshDatabase, type FreshDatabase } from '../support/database';
+import { asOwner } from '../support/people';
 
 const keys = { AUTH_SECRET: 'a', HEDDLE_KEY: 'b', CLOSED_KEY: 'c' };
 const now = new Date('2026-03-01T09:00:00Z');
@@ -46,6 +61,16 @@ beforeAll(async () => {
 		`set role heddle_owner; create table public.held (n int); insert into public.held select generate_series(1, 50);
 		alter table public.held enable row level security; alter table public.held force row level security`
 	);
+	// A trail of several seals and of events that no seal covers yet.
+	for (const batch of [1, 2, 3]) {
+		await asOwner(database, async (client) => {
+			for (let n = 0; n < 5; n++)
+				await client.query(`select audit.act('note', $1, null, null, null, '{}')`, [
+					`${batch}-${n}`
+				]);
+		});
+		if (batch < 3) await database.sql('select audit.seal_now()');
+	}
 	mkdirSync(join(database.files, 'open/ab'), { recursive: true });
 	writeFileSync(join(database.files, 'open/ab/consent.bin'), 'a scanned page');
 	writeFileSync(join(database.files, 'closed/report.bin'), 'a closed report');
@@ -58,6 +83,16 @@ beforeAll(async () => {
 		now
 	});
 });
+
+/** A command of the administrator's program on a database: its status and what it printed. */
+function admin(env: Record<string, string>, what: string): { status: number; printed: string } {
+	const ran = spawnSync(process.execPath, [join(root, testBuild.buildDir, 'cli/admin.js'), what], {
+		encoding: 'utf8',
+		cwd: root,
+		env: environmentFor('admin', { ORIGIN: 'http://127.0.0.1:1', ...env })
+	});
+	return { status: ran.status ?? -1, printed: ran.stdout + ran.stderr };
+}
 
 const areas = (files: string) => [
 	folderArea('files', join(files, 'open')),
@@ -110,6 +145,61 @@ describe('a backup', () => {
 			await entriesOf(join(database.files, 'open'))
 		);
 		expect(readFileSync(join(files, 'closed/report.bin'), 'utf8')).toBe('a closed report');
+	});
+
+	it('comes back into an empty cluster with a trail that is whole, and what is changed there is sealed on top of it', async () => {
+		const state = testState('restored');
+		await removeTestCluster('restored');
+		mkdirSync(state, { recursive: true });
+		const passwords = secrets(state);
+		const bare = await openCluster({
+			state,
+			port: await anyFreePort(),
+			passwords,
+			throwAway: true,
+			say: () => {}
+		});
+		try {
+			await startCluster(bare);
+			const at = (name: string) => urls(bare, passwords, name);
+			await ensureRoles(at('postgres').superUrl, passwords);
+			await createDatabase(at('postgres').superUrl, 'heddle');
+			const manifest = await verifiedManifest(whole);
+			await restoreDatabase({ folder: whole, manifest, databaseUrl: at('heddle').superUrl });
+			expect(await countsIn(at('heddle').superUrl)).toEqual(await countsIn(database.superUrl));
+			const restored = {
+				...database.env,
+				DATABASE_URL: at('heddle').appUrl,
+				ORIGIN: 'http://127.0.0.1:1'
+			};
+			const before = admin(database.env, 'verify-audit');
+			expect(before.printed).toContain('5 not sealed yet');
+			// The same events, the same seals, the same newest seal, and every digest worked out again.
+			expect(admin(restored, 'verify-audit')).toEqual(before);
+			const owner = { ...database, ownerUrl: at('heddle').ownerUrl };
+			await asOwner(owner, (client) =>
+				client.query(`insert into app.person (id, email, name) values ($1, $2, 'Rosa After')`, [
+					newId(),
+					'rosa@example.org'
+				])
+			);
+			expect(admin(restored, 'seal')).toEqual({ status: 0, printed: '6 events sealed.\n' });
+			const after = admin(restored, 'verify-audit');
+			expect(after.status).toBe(0);
+			expect(after.printed).toContain(', 0 not sealed yet.');
+			expect(after.printed).toContain('The audit trail is whole.');
+			// And the check still finds a row that was altered there.
+			await sql(
+				at('heddle').superUrl,
+				`set session_replication_role = replica`,
+				`update audit.event set after = '{"forged": true}' where record_id = '1-2'`
+			);
+			const forged = admin(restored, 'verify-audit');
+			expect(forged.status).toBe(1);
+			expect(forged.printed).toContain('the row was altered after it was written');
+		} finally {
+			await removeTestCluster('restored');
+		}
 	});
 
 	it('is refused when a file is altered, missing or added, and when it was never finished', async () => {

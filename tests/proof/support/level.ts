@@ -20,7 +20,11 @@ export function levelled(text: string, { origin, since }: Levelling): string {
 			parseInt(high + low, 16) >= since ? '<id of this run>' : id
 		)
 		.replace(instant, (found) => {
-			const at = Date.parse(/Z|[+-]\d{2}(:?\d{2})?$/.test(found) ? found.replace(' ', 'T').replace(/([+-]\d{2})$/, '$1:00') : `${found.replace(' ', 'T')}Z`);
+			const at = Date.parse(
+				/Z|[+-]\d{2}(:?\d{2})?$/.test(found)
+					? found.replace(' ', 'T').replace(/([+-]\d{2})$/, '$1:00')
+					: `${found.replace(' ', 'T')}Z`
+			);
 			return at >= since ? '<instant of this run>' : found;
 		});
 }

@@ -1,5 +1,6 @@
 import { readFileSync } from 'node:fs';
 import { join } from 'node:path';
+import { vi } from 'vitest';
 import { root } from '../../../scripts/lib/places.mjs';
 import { testBuild } from '../../../scripts/lib/test-cluster.mjs';
 import { recommend } from '../../../src/lib/domain/board/board.server';
@@ -47,12 +48,7 @@ import { finishVisit, startVisit } from '../../../src/lib/domain/visit/conduct.c
 import { ids, tokens } from '../../../src/lib/id';
 import type { Actor } from '../../../src/lib/server/actor';
 import { actorFor } from '../../../src/lib/server/auth/actor';
-import {
-	closedConfig,
-	config,
-	readClosedConfig,
-	readConfig
-} from '../../../src/lib/server/config';
+import { closedConfig, config, readClosedConfig, readConfig } from '../../../src/lib/server/config';
 import { byArmLookJob, lookJob } from '../../../src/lib/server/looks/jobs';
 import {
 	closedReleaseJob,
@@ -149,11 +145,14 @@ export async function playTwin(db: FreshDatabase, told: Told): Promise<Twin> {
 	clock.set(`${told.begin}T10:00:00Z`);
 	ids.seed(1848);
 	tokens.seedForTests(1848);
+	// How often a job writes its progress down hangs on how long it takes: here it takes no time.
+	const still = vi.spyOn(performance, 'now').mockReturnValue(1_000_000);
 	end = useAs(db.appUrl);
 	try {
 		return await play(db, told);
 	} finally {
 		await end();
+		still.mockRestore();
 		ids.reset();
 		tokens.reset();
 		clock.reset();
@@ -304,7 +303,10 @@ async function play(db: FreshDatabase, { swapped, passwordHash, begin }: Told): 
 		await keep('systolic', readings(120 + n));
 		await keep('diastolic', readings(75 + n));
 		if (definition.schedule[key]?.includes('weight'))
-			await keep('weight', n % 4 ? value(70 + n) : { kind: 'not done', reason: 'Subject declined' });
+			await keep(
+				'weight',
+				n % 4 ? value(70 + n) : { kind: 'not done', reason: 'Subject declined' }
+			);
 		await keep('potassium', { kind: 'value', value: '4.4' });
 		await finishVisit(nurse, studyId, visit.id, version);
 	}

@@ -5,10 +5,15 @@ const key = z
 	.string()
 	.max(40)
 	.regex(/^[a-z][a-z0-9]*(-[a-z0-9]+)*$/, 'Choose from the list.');
-const ofCharacteristic = z
-	.string()
-	.max(60)
-	.regex(/^characteristic:[a-z][a-z0-9]*(-[a-z0-9]+)*$/, 'Choose from the list.');
+/** Plain texts by pattern, not unions: a form reads them as they are. */
+const choice = (words: string) =>
+	z
+		.string()
+		.max(60, 'Choose from the list.')
+		.regex(
+			new RegExp(`^(${words}|characteristic:[a-z][a-z0-9]*(-[a-z0-9]+)*)$`),
+			'Choose from the list.'
+		);
 
 export const timeUnits = ['as given', 'day', 'week', 'month', 'year'] as const;
 export type LookTimeUnit = (typeof timeUnits)[number];
@@ -22,17 +27,9 @@ const slots = {
 		description:
 			'“as given” where the time came as a number from a file; else the unit of actual days.'
 	}),
-	group: z
-		.union([z.literal('none'), z.literal('arms'), ofCharacteristic], {
-			error: 'Choose from the list.'
-		})
-		.meta({ description: 'none, arms, or characteristic:<key>' }),
+	group: choice('none|arms').meta({ description: 'none, arms, or characteristic:<key>' }),
 	covariates: z
-		.array(
-			z.union([z.enum(['', 'site', 'baseline']), ofCharacteristic], {
-				error: 'Choose from the list.'
-			})
-		)
+		.array(choice('|site|baseline'))
 		.max(12, 'Use at most 12.')
 		.default([])
 		.meta({ description: 'site, baseline, characteristic:<key>' }),
@@ -56,7 +53,7 @@ export type LookInput = z.output<typeof lookInput>;
 /** The same model in one form: covariates once each, in a fixed order, without empty slots. */
 export function settledSpec(spec: LookSpec): LookSpec {
 	const covariates = [...new Set(spec.covariates)].filter((each) => each !== '').sort();
-	return { ...spec, covariates: covariates as LookSpec['covariates'] };
+	return { ...spec, covariates };
 }
 
 export const sameModel = (a: LookSpec, b: LookSpec): boolean =>

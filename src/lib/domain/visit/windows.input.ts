@@ -54,3 +54,12 @@ export const windowsPage = z.object({
 	nextCursor: z.string().nullable()
 });
 export type WindowsPage = z.output<typeof windowsPage>;
+
+/** The query of an address; what is not asked for is left out. */
+export const windowsSearch = (
+	query: Pick<WindowsQuery, 'site' | 'what' | 'text'>,
+	cursor: string
+): string =>
+	new URLSearchParams(
+		Object.entries({ ...query, cursor }).filter(([, value]) => value !== '')
+	).toString();

@@ -19,6 +19,6 @@ export function folderStorage(folder: string): Storage {
 			}
 			await rename(beside, place);
 		},
-		get: (key) => readFile(join(folder, checkedKey(key)))
+		get: async (key) => readFile(join(folder, checkedKey(key)))
 	};
 }

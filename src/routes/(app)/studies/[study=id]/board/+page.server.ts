@@ -12,6 +12,8 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 		today: clock.now().toISOString().slice(0, 10),
 		form: await formFor(recommendationInput, {
 			reportId: room.packs.find(({ ready }) => ready)?.reportId ?? '',
+			// No advice is given by leaving a field as it was.
+			advice: '',
 			reason: '',
 			attendees: '',
 			meetingOn: ''
