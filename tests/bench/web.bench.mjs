@@ -66,9 +66,14 @@ await withModules(async (load) => {
 		for (const visit of visits)
 			await mustBe(
 				200,
-				await nurse.send('POST', `/api/studies/${studyId}/visits/${visit}/start`, undefined, {
-					'if-match': '"1"'
-				})
+				await nurse.send(
+					'POST',
+					`/api/studies/${studyId}/visits/${visit}/start`,
+					{},
+					{
+						'if-match': '"1"'
+					}
+				)
 			);
 		/** Each visit's value is changed in its turn: version after version. */
 		const save = async (/** @type {number} */ n) => {
