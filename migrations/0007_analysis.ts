@@ -143,7 +143,7 @@ create table app.report (
 	made_at timestamptz,
 	version integer not null default 1,
 	unique (look_id),
-	check (kind = 'open' or storage_key is null)
+	check (kind = 'open' or (storage_key is null and sha256 is null and pages is null))
 );
 
 create table app.release (
@@ -170,7 +170,8 @@ create table app.download (
 	report_id uuid not null references app.report (id),
 	person_id uuid not null references app.person (id),
 	at timestamptz not null default app.now(),
-	sha256 text not null
+	-- Of an open copy; that of a closed one stands in the closed schema.
+	sha256 text
 );
 
 create table app.recommendation (
@@ -233,7 +234,7 @@ grant select, update on app.job_run to heddle_unmasked;
 -- A copy made on the closed side is announced by the ordinary, neutral mail.
 grant insert on app.mail to heddle_unmasked;
 grant update (status, error, engine_version, finished_at, version) on app.look to heddle_unmasked;
-grant update (status, sha256, pages, error, made_at, version) on app.report to heddle_unmasked;
-grant update (status, sha256, version) on app.release to heddle_unmasked;
+grant update (status, error, made_at, version) on app.report to heddle_unmasked;
+grant update (status, version) on app.release to heddle_unmasked;
 `.execute(db);
 }

@@ -86,15 +86,11 @@ beforeAll(async () => {
 
 /** A command of the administrator's program on a database: its status and what it printed. */
 function admin(env: Record<string, string>, what: string): { status: number; printed: string } {
-	const ran = spawnSync(
-		process.execPath,
-		[join(root, testBuild.buildDir, 'cli/admin.js'), what],
-		{
-			encoding: 'utf8',
-			cwd: root,
-			env: environmentFor('admin', { ORIGIN: 'http://127.0.0.1:1', ...env })
-		}
-	);
+	const ran = spawnSync(process.execPath, [join(root, testBuild.buildDir, 'cli/admin.js'), what], {
+		encoding: 'utf8',
+		cwd: root,
+		env: environmentFor('admin', { ORIGIN: 'http://127.0.0.1:1', ...env })
+	});
 	return { status: ran.status ?? -1, printed: ran.stdout + ran.stderr };
 }
 

@@ -57,7 +57,10 @@ const contents: [string, () => Buffer][] = [
 	['nothing', () => Buffer.alloc(0)],
 	['one byte', () => Buffer.from([0])],
 	['text with line ends and no UTF-8', () => Buffer.from('a\r\nb\0\xff\xfe', 'latin1')],
-	['what could be taken for a frame of a chunked upload', () => Buffer.from('5;chunk-signature=0\r\nhello\r\n0\r\n\r\n')],
+	[
+		'what could be taken for a frame of a chunked upload',
+		() => Buffer.from('5;chunk-signature=0\r\nhello\r\n0\r\n\r\n')
+	],
 	['forty million bytes', () => randomBytes(40_000_000)]
 ];
 
@@ -90,7 +93,9 @@ describe.each(drivers)('in %s', (_, driver) => {
 	test.each(['../out', 'a/../../out', '/etc/passwd', 'a//b', 'A', 'a\0b', ''])(
 		'%j is no key',
 		async (key) => {
-			await expect(driver().put(key, Buffer.from('x'), 'text/plain')).rejects.toThrow('storage key');
+			await expect(driver().put(key, Buffer.from('x'), 'text/plain')).rejects.toThrow(
+				'storage key'
+			);
 			await expect(driver().get(key)).rejects.toThrow('storage key');
 		}
 	);

@@ -104,13 +104,7 @@ async function atWork(name: string, from: number): Promise<Work> {
 	const staff = [site.nurse.id, site.coordinator.id];
 	const working = [
 		...nurses.map((nurse, n) =>
-			saveUntil(
-				nurse,
-				scene,
-				due.slice(n * visitsEach, (n + 1) * visitsEach),
-				stopped,
-				saves
-			)
+			saveUntil(nurse, scene, due.slice(n * visitsEach, (n + 1) * visitsEach), stopped, saves)
 		),
 		...coordinators.map((coordinator, n) =>
 			bookUntil(

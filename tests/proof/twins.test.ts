@@ -12,7 +12,7 @@ import { signIn, type Visitor } from '../support/people';
 import { startServer, type RunningServer } from '../support/server';
 import { levelled, parting } from './support/level';
 import { playTwin, type Twin } from './support/twin';
-import { addressesOf, asked, fillings, readingRoutes } from './support/walk';
+import { addressesOf, fillings, questions, readingRoutes } from './support/walk';
 
 // Both twins draw their list from one seed; only the places' arms differ afterwards.
 vi.mock('../../src/lib/domain/randomisation/generator.server', async (original) => ({
@@ -59,7 +59,7 @@ beforeAll(async () => {
 	const servers = await Promise.all(played.map(([db]) => startServer({ database: db })));
 	// Sign-ins are told to the minute on some pages: both twins' lie in the same one.
 	if (new Date().getSeconds() > 20) await wait((61 - new Date().getSeconds()) * 1000);
-	sides = await Promise.all(
+	sides = (await Promise.all(
 		played.map(async ([db, twin], at): Promise<Side> => {
 			const server = servers[at] as RunningServer;
 			const visitors: Record<string, Visitor> = {};
@@ -67,7 +67,7 @@ beforeAll(async () => {
 				visitors[name] = await signIn(server, email, password);
 			return { db, twin, server, visitors };
 		})
-	) as [Side, Side];
+	)) as [Side, Side];
 }, 900_000);
 
 afterAll(async () => {
@@ -96,9 +96,7 @@ test('the twins are what they should be: the same kits at the same places, every
 	const [one, two] = await both(
 		async ({ db, twin }) =>
 			(
-				await db.sql(
-					`select result from closed.look_result where look_id = '${twin.byArmLookId}'`
-				)
+				await db.sql(`select result from closed.look_result where look_id = '${twin.byArmLookId}'`)
 			)[0]?.[0].result
 	);
 	expect(one.growth).toBeDefined();
@@ -110,7 +108,10 @@ test('what the independent statistician reads of the look by arm differs, so a d
 		const answer = await (visitors['independent statistician'] as Visitor).get(
 			`/api/studies/${twin.studyId}/looks/${twin.byArmLookId}`
 		);
-		return { status: answer.status, text: levelled(await answer.text(), { origin: server.origin, since }) };
+		return {
+			status: answer.status,
+			text: levelled(await answer.text(), { origin: server.origin, since })
+		};
 	});
 	expect(a.status).toBe(200);
 	expect(b.status).toBe(200);
@@ -120,6 +121,7 @@ test('what the independent statistician reads of the look by arm differs, so a d
 test('R-42: no page, answer, feed, export or file that a masked person can fetch differs between the twins in a byte', async () => {
 	const routes = readingRoutes(sides[0].db);
 	const filling = await fillings(sides[0].db, sides[0].twin);
+	const asked = await questions(sides[0].db);
 	expect(routes.length).toBeGreaterThan(40);
 	const differences: string[] = [];
 	const compared: Record<string, Record<number, number>> = {};
@@ -132,7 +134,16 @@ test('R-42: no page, answer, feed, export or file that a masked person can fetch
 		const level = (text: string) => levelled(text, { origin: side.server.origin, since });
 		const headers = [...answer.headers.entries()].filter(
 			([header]) =>
-				!['date', 'x-request-id', 'set-cookie', 'content-length', 'connection', 'keep-alive'].includes(header)
+				![
+					'date',
+					// The page's hash before anything was levelled; the page itself is compared.
+					...(type.startsWith('text/html') ? ['etag'] : []),
+					'x-request-id',
+					'set-cookie',
+					'content-length',
+					'connection',
+					'keep-alive'
+				].includes(header)
 		);
 		return {
 			status: answer.status,
@@ -155,7 +166,9 @@ test('R-42: no page, answer, feed, export or file that a masked person can fetch
 				return a.text;
 			}
 			if (tries === 2) {
-				differences.push(`${name}: ${address} (${a.status}, ${b.status}) ${parting(a.text, b.text)}`);
+				differences.push(
+					`${name}: ${address} (${a.status}, ${b.status}) ${parting(a.text, b.text)}`
+				);
 				return '';
 			}
 		}
@@ -164,8 +177,12 @@ test('R-42: no page, answer, feed, export or file that a masked person can fetch
 	for (const route of routes) {
 		const addresses = addressesOf(route, filling);
 		expect(addresses, `nothing to put into ${route.id}`).not.toEqual([]);
-		const [first] = addresses;
-		const more = (asked[route.id] ?? []).map((query) => `${first}${query}`);
+		const more = (asked[route.id] ?? []).flatMap((query) =>
+			addresses
+				.filter((address) => !address.endsWith('__data.json'))
+				.slice(0, 6)
+				.map((address) => `${address}${query}`)
+		);
 		for (const name of masked)
 			for (const address of [...addresses, ...more]) {
 				const text = await compare(route.id, name, address);
@@ -175,27 +192,30 @@ test('R-42: no page, answer, feed, export or file that a masked person can fetch
 			}
 	}
 	const tally = Object.values(compared).reduce<Record<number, number>>((all, row) => {
-		for (const [status, n] of Object.entries(row)) all[Number(status)] = (all[Number(status)] ?? 0) + n;
+		for (const [status, n] of Object.entries(row))
+			all[Number(status)] = (all[Number(status)] ?? 0) + n;
 		return all;
 	}, {});
 	console.log(
 		`Twins: ${routes.length} routes × ${masked.length} roles, ${Object.values(tally).reduce((a, b) => a + b, 0)} answers compared ` +
-			`(${Object.entries(tally).map(([status, n]) => `${n} × ${status}`).join(', ')}), ${(bytes / 1e6).toFixed(1)} MB\n` +
+			`(${Object.entries(tally)
+				.map(([status, n]) => `${n} × ${status}`)
+				.join(', ')}), ${(bytes / 1e6).toFixed(1)} MB\n` +
 			routes
-				.map(({ id }) => `  ${id}: ${masked.map((name) => `${name} ${JSON.stringify(compared[`${id} as ${name}`] ?? {})}`).join('; ')}`)
+				.map(
+					({ id }) =>
+						`  ${id}: ${masked.map((name) => `${name} ${JSON.stringify(compared[`${id} as ${name}`] ?? {})}`).join('; ')}`
+				)
 				.join('\n')
 	);
 	expect(differences.slice(0, 12).join('\n'), `${differences.length} differences`).toBe('');
-	// Whatever somebody may see must have been seen: every route answered somebody with 200, but for those of nobody here.
+	// Whatever somebody may see must have been seen.
 	const unseen = routes.filter(
 		({ id }) => !masked.some((name) => compared[`${id} as ${name}`]?.[200])
 	);
-	expect(unseen.map(({ id }) => id)).toEqual(unanswered);
+	expect(unseen.map(({ id }) => id)).toEqual([]);
 	expect(tally[500]).toBeUndefined();
 });
-
-/** Links that are used up, and what a masked person never gets to see. */
-const unanswered: string[] = [];
 
 test('the open report and every released open copy are the same file in both', async () => {
 	const [a, b] = await both(async ({ db }) =>
@@ -231,12 +251,22 @@ test('whatever the application may read in the database is the same in both', as
 	const differences: string[] = [];
 	for (const { name } of tables as { name: string }[]) {
 		// Random by design: the key-wrapped link of a mail. By the wall clock: when a row of the trail was written, and its digest.
-		const but = name === 'audit.event' ? ` - 'wall_at' - 'xid' - 'digest'` : name === 'app.mail' ? ` - 'secret'` : '';
-		const where = name === 'audit.event' ? `where request_id not in (select request_id from audit.event where record in ('session'))` : '';
+		const but =
+			name === 'audit.event'
+				? ` - 'wall_at' - 'xid' - 'digest'`
+				: name === 'app.mail'
+					? ` - 'secret'`
+					: '';
+		const where =
+			name === 'audit.event'
+				? `where request_id not in (select request_id from audit.event where record in ('session'))`
+				: '';
 		const [a, b] = await both(async ({ db, server }) =>
-			((await db.sql(`select (to_jsonb(t)${but})::text as row from ${name} t ${where} order by 1`))[0] ?? []).map(
-				(row) => levelled(row.row as string, { origin: server.origin, since })
-			)
+			(
+				(
+					await db.sql(`select (to_jsonb(t)${but})::text as row from ${name} t ${where} order by 1`)
+				)[0] ?? []
+			).map((row) => levelled(row.row as string, { origin: server.origin, since }))
 		);
 		a.sort();
 		b.sort();

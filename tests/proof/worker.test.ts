@@ -85,7 +85,10 @@ async function worker(kind: 'worker' | 'look-worker' = 'worker'): Promise<Runnin
 async function mails(count: number, tag: string): Promise<string[]> {
 	const ids: string[] = [];
 	for (let n = 0; n < count; n++) {
-		const personId = await addPerson(db, { email: `${tag}-${n}@example.org`, name: 'Mina Shuttle' });
+		const personId = await addPerson(db, {
+			email: `${tag}-${n}@example.org`,
+			name: 'Mina Shuttle'
+		});
 		ids.push(
 			await changeOwn(systemActor(newId()), 'test', (writer) =>
 				queueMail(writer, {
@@ -201,11 +204,15 @@ test('a mail whose worker was killed while handing it over is never sent twice, 
 
 test('an import whose worker was killed in the middle is tried again, and is there once', async () => {
 	const scene = await importScene(db);
-	const rows = Array.from({ length: 24_000 }, (_, at) => `S${at >> 3},${at & 7},girl,${20 + (at % 90) / 10}`);
+	const rows = Array.from(
+		{ length: 24_000 },
+		(_, at) => `S${at >> 3},${at & 7},${(at >> 3) % 2 ? 'girl' : 'boy'},${20 + (at % 90) / 10}`
+	);
 	const batch = await checkFile(scene, `subject,time,sex,distance\n${rows.join('\n')}\n`, {
 		...orthodontMapping,
 		visit: undefined
 	});
+	expect(batch.summary?.problems).toEqual([]);
 	const { jobRunId } = await startImport(scene.manager, scene.studyId, batch.id, { dryRun: false });
 	const run = async () =>
 		(

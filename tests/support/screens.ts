@@ -124,6 +124,25 @@ export async function screensFor(server: RunningServer, grants: Grant[]): Promis
 	return screens;
 }
 
+/** For each role its screens, and whether it is the first to have that screen: what looks the same is examined once. */
+export async function screensByRole(
+	server: RunningServer
+): Promise<{ account: Account; screens: (Screen & { first: boolean })[] }[]> {
+	const seen = new Set<string>();
+	const list = [];
+	for (const account of await accounts(server)) {
+		const screens = (await screensFor(server, account.grants)).map((screen) => {
+			// Today is another page for each role.
+			const own = /^\/studies\/[0-9a-f-]+$/.test(screen.path);
+			const first = own || !seen.has(screen.path);
+			seen.add(screen.path);
+			return { ...screen, first };
+		});
+		list.push({ account, screens });
+	}
+	return list;
+}
+
 export const publicScreens: Screen[] = [
 	{ name: 'sign-in', path: '/sign-in' },
 	{ name: 'forgotten', path: '/forgotten' },

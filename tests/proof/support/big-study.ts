@@ -13,7 +13,7 @@ export async function bigStudy(client: pg.Client, scene: Scene): Promise<void> {
 	for (const [at, site] of scene.sites.entries())
 		await client.query(
 			`insert into app.subject (id, study_id, site_id, protocol_version_id, number, enrolled_on, randomised_at, randomised_on, characteristics)
-			select gen_random_uuid(), $1, $2, $3, $4 || '-' || lpad(n::text, 4, '0') || '-0', day, day + time '09:00', day,
+			select gen_random_uuid(), $1, $2, $3, $4 || '-' || lpad(n::text, 4, '0') || '-7', day, day + time '09:00', day,
 				jsonb_build_object('sex', case n % 2 when 0 then 'female' else 'male' end, 'birth-date', '19' || (40 + n % 50) || '-03-02')
 			from (select n, current_date - 1 - (n * 540 / ($5::int / 2)) as day from generate_series(1, $5::int / 2) n) s`,
 			[scene.studyId, site.id, scene.protocolVersionId, `0${at + 1}`, subjectCount]

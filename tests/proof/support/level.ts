@@ -19,8 +19,15 @@ export function levelled(text: string, { origin, since }: Levelling): string {
 		.replace(uuid7, (id, high: string, low: string) =>
 			parseInt(high + low, 16) >= since ? '<id of this run>' : id
 		)
+		.replace(/new Date\((\d{13})\)/g, (found, at: string) =>
+			Number(at) >= since ? 'new Date(<instant of this run>)' : found
+		)
 		.replace(instant, (found) => {
-			const at = Date.parse(/Z|[+-]\d{2}(:?\d{2})?$/.test(found) ? found.replace(' ', 'T').replace(/([+-]\d{2})$/, '$1:00') : `${found.replace(' ', 'T')}Z`);
+			const at = Date.parse(
+				/Z|[+-]\d{2}(:?\d{2})?$/.test(found)
+					? found.replace(' ', 'T').replace(/([+-]\d{2})$/, '$1:00')
+					: `${found.replace(' ', 'T')}Z`
+			);
 			return at >= since ? '<instant of this run>' : found;
 		});
 }

@@ -51,7 +51,10 @@ export async function insist(
 }
 
 /** Values inside the limits; each differs from the one before it. */
-function entryFor(key: string, round: number): { entry: unknown; kept: Pick<Kept, 'column' | 'value'> } {
+function entryFor(
+	key: string,
+	round: number
+): { entry: unknown; kept: Pick<Kept, 'column' | 'value'> } {
 	const single = (value: number) => ({
 		entry: { kind: 'value', value: String(value) },
 		kept: { column: 'entered_value' as const, value }

@@ -1,11 +1,12 @@
 import { readFileSync } from 'node:fs';
 import { join } from 'node:path';
+import pg from 'pg';
+import { vi } from 'vitest';
 import { root } from '../../../scripts/lib/places.mjs';
 import { testBuild } from '../../../scripts/lib/test-cluster.mjs';
 import { recommend } from '../../../src/lib/domain/board/board.server';
 import { freezeCut } from '../../../src/lib/domain/cut/cut.commands.server';
 import { makeFeed } from '../../../src/lib/domain/feed/feed.commands.server';
-import { uploadImport } from '../../../src/lib/domain/import/import.commands.server';
 import { requestLook } from '../../../src/lib/domain/look/look.commands.server';
 import type { LookSpec } from '../../../src/lib/domain/look/look.input';
 import { signPlan } from '../../../src/lib/domain/look/plan.server';
@@ -21,6 +22,7 @@ import {
 	makeReport,
 	releaseReport
 } from '../../../src/lib/domain/report/report.commands.server';
+import { downloadCopy } from '../../../src/lib/domain/report/report-file.server';
 import type { StudyDefinition } from '../../../src/lib/domain/study/definition';
 import {
 	createStudyFrom,
@@ -44,15 +46,10 @@ import {
 } from '../../../src/lib/domain/visit/booking.commands.server';
 import { declareMissed, logContact } from '../../../src/lib/domain/visit/chase.commands.server';
 import { finishVisit, startVisit } from '../../../src/lib/domain/visit/conduct.commands.server';
-import { ids, tokens } from '../../../src/lib/id';
+import { ids, newId, tokens } from '../../../src/lib/id';
 import type { Actor } from '../../../src/lib/server/actor';
 import { actorFor } from '../../../src/lib/server/auth/actor';
-import {
-	closedConfig,
-	config,
-	readClosedConfig,
-	readConfig
-} from '../../../src/lib/server/config';
+import { closedConfig, config, readClosedConfig, readConfig } from '../../../src/lib/server/config';
 import { byArmLookJob, lookJob } from '../../../src/lib/server/looks/jobs';
 import {
 	closedReleaseJob,
@@ -63,8 +60,8 @@ import {
 import { forgetStorage } from '../../../src/lib/server/storage/storage';
 import { clock } from '../../../src/lib/time/clock';
 import { addDays, isoWeekday, plainDateOf, type PlainDate } from '../../../src/lib/time/dates';
+import { checkFile, orthodontMapping } from '../../support/analysis';
 import { useEnvironment, type FreshDatabase } from '../../support/database';
-import { addPerson, addRole } from '../../support/people';
 import { useAs } from '../../support/scene';
 
 export interface TwinPerson {
@@ -149,15 +146,53 @@ export async function playTwin(db: FreshDatabase, told: Told): Promise<Twin> {
 	clock.set(`${told.begin}T10:00:00Z`);
 	ids.seed(1848);
 	tokens.seedForTests(1848);
+	// How often a job writes its progress down hangs on how long it takes: here it takes no time.
+	const still = vi.spyOn(performance, 'now').mockReturnValue(1_000_000);
 	end = useAs(db.appUrl);
 	try {
 		return await play(db, told);
 	} finally {
 		await end();
+		still.mockRestore();
 		ids.reset();
 		tokens.reset();
 		clock.reset();
 		await db.sql('update app.installation set clock_may_move = false');
+	}
+}
+
+const system = '00000000-0000-7000-8000-000000000001';
+
+/** An account with its role from the first day on, at the told time of the clock. */
+async function addMember(
+	db: FreshDatabase,
+	person: { name: string; email: string; passwordHash: string; role: Role },
+	place: [studyId: string | null, siteId: string | null]
+): Promise<string> {
+	const id = newId();
+	const second = newId();
+	const closedSide = ['independent_statistician', 'board_member'].includes(person.role);
+	const client = new pg.Client({ connectionString: db.ownerUrl });
+	await client.connect();
+	try {
+		await client.query('begin');
+		await client.query(`select app.enter($1, 'system', 'twin', '', $2)`, [
+			system,
+			clock.now().toISOString()
+		]);
+		const add = 'insert into app.person (id, email, name, password_hash) values ($1, $2, $3, $4)';
+		await client.query(add, [id, person.email, person.name, person.passwordHash]);
+		if (closedSide)
+			await client.query(add, [second, `${second}@example.org`, 'Second Person', null]);
+		await client.query(
+			`insert into app.person_role (id, person_id, role, study_id, site_id, valid_from, granted_by, confirmed_by, confirmed_at)
+			values ($1, $2, $3, $4, $5, '2020-01-01', $6, $7, case when $7::uuid is null then null else app.now() end)`,
+			[newId(), id, person.role, ...place, system, closedSide ? second : null]
+		);
+		await client.query('commit');
+		return id;
+	} finally {
+		await client.end();
 	}
 }
 
@@ -181,8 +216,10 @@ async function play(db: FreshDatabase, { swapped, passwordHash, begin }: Told): 
 		siteId: string | null = null
 	) => {
 		const email = `${name.replaceAll(' ', '.')}@example.org`;
-		const id = await addPerson(db, { email, name: `Twin ${name}`, passwordHash });
-		await addRole(db, id, role, studyId, siteId);
+		const id = await addMember(db, { name: `Twin ${name}`, email, passwordHash, role }, [
+			studyId,
+			siteId
+		]);
 		people[name] = { name, role, email, actor: await actorFor(id, 'twin') };
 	};
 	const as = (name: string): Actor => (people[name] as TwinPerson).actor;
@@ -304,7 +341,10 @@ async function play(db: FreshDatabase, { swapped, passwordHash, begin }: Told): 
 		await keep('systolic', readings(120 + n));
 		await keep('diastolic', readings(75 + n));
 		if (definition.schedule[key]?.includes('weight'))
-			await keep('weight', n % 4 ? value(70 + n) : { kind: 'not done', reason: 'Subject declined' });
+			await keep(
+				'weight',
+				n % 4 ? value(70 + n) : { kind: 'not done', reason: 'Subject declined' }
+			);
 		await keep('potassium', { kind: 'value', value: '4.4' });
 		await finishVisit(nurse, studyId, visit.id, version);
 	}
@@ -376,10 +416,15 @@ async function play(db: FreshDatabase, { swapped, passwordHash, begin }: Told): 
 	const feedTokens: string[] = [];
 	for (const name of ['coordinator', 'nurse', 'investigator'])
 		feedTokens.push((await makeFeed(as(name), studyId, { siteId: sites[0].id })).token);
-	await uploadImport(manager, studyId, {
-		name: 'more.csv',
-		bytes: Buffer.from('subject,time,creatinine\nA,0,88\n')
-	});
+	const { characteristic, visit, ...mapping } = orthodontMapping;
+	void characteristic;
+	void visit;
+	const batch = await checkFile(
+		{ manager, studyId },
+		'subject,time,distance\nA,0,twenty\n',
+		mapping
+	);
+	if (!batch.summary?.problemCount) throw new Error('The file was to have a problem');
 
 	// A cut, a pooled look with its report, and the same by arm on the closed side.
 	goTo(110);
@@ -415,6 +460,8 @@ async function play(db: FreshDatabase, { swapped, passwordHash, begin }: Told): 
 		await approveRelease(manager, studyId, id);
 		await unmasked(db, () => closedReleaseJob({ payload: { releaseId: id }, lastTry: true }));
 	}
+	await downloadCopy(as('board member'), studyId, report.id);
+	await downloadCopy(as('unmasked board member'), studyId, closed.id);
 	await recommend(as('unmasked board member'), studyId, {
 		reportId: report.id,
 		advice: 'continue unchanged',

@@ -53,7 +53,9 @@ export async function fillings(
 	};
 	return (route, param) => {
 		if (param === 'token')
-			return route.id.startsWith('/calendar/') ? twin.feedTokens : ['no-such-token-0123456789abcdef'];
+			return route.id.startsWith('/calendar/')
+				? twin.feedTokens
+				: ['no-such-token-0123456789abcdef'];
 		// The study's measures at one visit are enough: the form of the others shows them too.
 		return param === 'measure' ? (found.measure ?? []).slice(0, 6) : (found[param] ?? []);
 	};
@@ -74,18 +76,36 @@ export function addressesOf(
 		);
 	}
 	if (!route.page) return addresses;
-	return addresses.flatMap((address) => [
-		address,
-		`${address === '/' ? '' : address}/__data.json`
-	]);
+	return addresses.flatMap((address) => [address, `${address === '/' ? '' : address}/__data.json`]);
 }
 
-/** Further addresses of lists: another order, another page, another view. */
-export const asked: Record<string, string[]> = {
-	'/(app)/studies/[study=id]/windows': ['?what=ahead', '?what=passed', '?what=open'],
-	'/api/studies/[study=id]/windows': ['?what=ahead', '?what=passed&limit=2', '?what=due&text=month'],
-	'/api/studies/[study=id]/subjects': ['?limit=3', '?sort=enrolled&order=down', '?search=00'],
-	'/api/studies/[study=id]/audit': ['?limit=20'],
-	'/(app)/studies/[study=id]/audit': ['?record=subject', '?record=report'],
-	'/(app)/studies/[study=id]/subjects': ['?sort=enrolled&order=down']
-};
+/** What lists and questions are asked besides, by route: another order, another page, another view. */
+export async function questions(db: FreshDatabase): Promise<Record<string, string[]>> {
+	const [[one]] = (await db.sql(
+		`select (select id from app.subject order by id limit 1) as subject,
+			(select id from app.measurement order by id limit 1) as measurement,
+			(select happened_on::text from app.visit where happened_on is not null order by id limit 1) as day`
+	)) as [{ subject: string; measurement: string; day: string }[]];
+	if (!one) throw new Error('There is nothing to ask about');
+	const history = [
+		`?record=subject&id=${one.subject}`,
+		`?record=contact_details&id=${one.subject}`,
+		`?record=measurement&id=${one.measurement}`
+	];
+	return {
+		'/(app)/studies/[study=id]/windows': ['?what=ahead', '?what=passed', '?what=open'],
+		'/api/studies/[study=id]/windows': [
+			'?what=ahead',
+			'?what=passed&limit=2',
+			'?what=due&text=month'
+		],
+		'/(app)/studies/[study=id]/subjects': ['?sort=enrolled&order=down'],
+		'/api/studies/[study=id]/subjects': ['?limit=3', '?sort=enrolled&order=down', '?search=00'],
+		'/(app)/studies/[study=id]/audit': ['?record=subject', '?record=report'],
+		'/api/studies/[study=id]/audit': ['?limit=20', '?record=release', '?record=job_run'],
+		'/(app)/studies/[study=id]/history': history,
+		'/api/studies/[study=id]/history': history,
+		'/api/studies/[study=id]/visits/[visit=id]/free-times': [`?date=${one.day}`],
+		'/(app)/people/access.csv': [`?on=${one.day}`]
+	};
+}

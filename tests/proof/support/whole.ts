@@ -36,7 +36,9 @@ export async function expectWholeSaves(db: FreshDatabase, { kept }: Tally): Prom
 		)
 		select t.* from told t left join trail e on e.record_id = t.id and e.version = t.version
 		where e.after is null or e.after -> t."column" is distinct from t.value`);
-	expect(lost.slice(0, 3), `acknowledged saves that are not in the trail: ${lost.length}`).toEqual([]);
+	expect(lost.slice(0, 3), `acknowledged saves that are not in the trail: ${lost.length}`).toEqual(
+		[]
+	);
 	await none(
 		db,
 		'acknowledged saves without their row',

@@ -95,7 +95,8 @@ export const downloadCopy = (actor: Actor, studyId: string, reportId: string): P
 				study_id: studyId,
 				report_id: reportId,
 				person_id: actor.personId,
-				sha256: sha256Of(file)
+				// The closed copy's hash stands beside it in the closed schema; here it could confirm a guess of the arms.
+				sha256: release.kind === 'closed' ? null : sha256Of(file)
 			})
 			.execute();
 		return file;

@@ -134,7 +134,7 @@ interface DownloadTable {
 	report_id: string;
 	person_id: string;
 	at: Generated<Timestamp>;
-	sha256: string;
+	sha256: string | null;
 }
 
 interface FeedTable {

@@ -62,23 +62,23 @@ export async function installQueues(ownerUrl: string): Promise<void> {
 	await boss.stop({ graceful: false, wait: true });
 }
 
-let sender: Promise<PgBoss> | undefined;
+let sender: PgBoss | undefined;
 
-/** One for the process; it only sends. */
-function sending(): Promise<PgBoss> {
-	sender ??= (async () => {
-		const { pool } = database();
-		const boss = new PgBoss({
-			db: { executeSql: (text, values) => pool.query(text, values as unknown[]) },
-			schema: 'queue',
-			migrate: false,
-			supervise: false,
-			schedule: false
-		});
-		boss.on('error', () => {});
-		await boss.start();
-		return boss;
-	})();
+/**
+ * One for the process; it only sends, each time on the caller's own transaction. So it is not started: that would ask for a
+ * further connection, and when all of them wait for this very transaction there is none.
+ */
+function sending(): PgBoss {
+	if (sender) return sender;
+	const { pool } = database();
+	sender = new PgBoss({
+		db: { executeSql: (text, values) => pool.query(text, values as unknown[]) },
+		schema: 'queue',
+		migrate: false,
+		supervise: false,
+		schedule: false
+	});
+	sender.on('error', () => {});
 	return sender;
 }
 
@@ -93,7 +93,7 @@ export async function enqueue<Q extends QueueName>(
 	queue: Q,
 	payload: QueuePayloads[Q]
 ): Promise<void> {
-	const boss = await sending();
+	const boss = sending();
 	const executor = on.getExecutor();
 	await boss.send(queue, payload, {
 		db: {
