@@ -100,7 +100,7 @@ describe('an existing study comes in from a file', () => {
 		expect(published).toEqual({ status: 'published', unit: 'year' });
 	});
 
-	test('R-1: every row that came in has its row in the audit trail, by the person who imported', async () => {
+	test('every row that came in has its row in the audit trail, by the person who imported', async () => {
 		const [events] = await db.sql(
 			`select record, count(*)::int as n, bool_and(actor = '${scene.manager.personId}') as own from audit.event
 				where study_id = '${scene.studyId}' and action = 'create' and record in ('subject', 'visit', 'measurement')

@@ -3,6 +3,11 @@ import { openDatabase, useDatabase, type Database } from '../../src/lib/server/d
 import { forgetSender } from '../../src/lib/server/jobs/queue';
 import { newId } from '../../src/lib/id';
 import type { Role } from '../../src/lib/domain/person/roles';
+import { freezeCut } from '../../src/lib/domain/cut/cut.commands.server';
+import { uploadImport } from '../../src/lib/domain/import/import.commands.server';
+import { requestLook } from '../../src/lib/domain/look/look.commands.server';
+import { systemActor } from '../../src/lib/server/actor';
+import { actorFor } from '../../src/lib/server/auth/actor';
 import { useEnvironment } from './database';
 import { addPerson, addRole, asOwner, signIn, type Visitor } from './people';
 import type { RunningServer } from './server';
@@ -50,21 +55,17 @@ async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): P
 		study: scene.studyId,
 		subject: subject.id,
 		visit,
-		measure: Object.values(scene.measures)[0] ?? '',
+		measure: scene.measures.weight ?? '',
 		screening: newId(),
 		measurement: newId(),
 		appointment: newId(),
-		batch: newId(),
 		job: newId(),
-		cut: newId(),
-		look: newId(),
 		report: newId(),
 		release: newId(),
 		person: site.nurse.id,
 		site: site.id,
 		token: 'a-token-that-opens-nothing-at-all-000000000'
 	};
-	const at = (n: number) => 10 * siteIndex + n;
 	await asOwner(database, async (client) => {
 		const insert = (text: string, values: unknown[]) => client.query(text, values);
 		const by = scene.manager.id;
@@ -81,20 +82,27 @@ async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): P
 			`insert into app.job_run (id, queue, title, study_id, requested_by) values ($1, 'import', 'An import', $2, $3)`,
 			[made.job, scene.studyId, by]
 		);
-		await insert(
-			`insert into app.import_batch (id, study_id, file_name, storage_key, sha256, bytes, headers, uploaded_by)
-			values ($1, $2, 'file.csv', 'imports/none', repeat('0', 64), 10, '["subject","time"]', $3)`,
-			[made.batch, scene.studyId, by]
-		);
-		await insert(
-			`insert into app.cut (id, study_id, number, label, cut_off_at, extracted_at, made_by, subjects, measurements, fingerprint, content)
-			values ($1, $2, $3, 'A cut', now(), now(), $4, 0, 0, repeat('0', 64), '{}')`,
-			[made.cut, scene.studyId, at(1), by]
-		);
-		await insert(
-			`insert into app.look (id, study_id, cut_id, number, kind, requested_by) values ($1, $2, $3, $4, 'pooled', $5)`,
-			[made.look, scene.studyId, made.cut, at(1), by]
-		);
+	});
+	const manager = await actorFor(scene.manager.id, 'scene');
+	const batch = await uploadImport(manager, scene.studyId, {
+		name: 'file.csv',
+		bytes: Buffer.from('subject,time,weight\nA,0,70\nA,1,71\n')
+	});
+	const cut = await freezeCut(manager, scene.studyId, { label: 'A cut', cutOffAt: '' });
+	const look = await requestLook(systemActor(newId()), scene.studyId, {
+		cutId: cut.id,
+		measure: 'weight',
+		timeUnit: 'month',
+		group: 'none',
+		covariates: [],
+		ownLevel: 'yes',
+		method: 'REML',
+		df: 'kenward-roger'
+	});
+	Object.assign(made, { batch: batch.id, cut: cut.id, look: look.id });
+	await asOwner(database, async (client) => {
+		const insert = (text: string, values: unknown[]) => client.query(text, values);
+		const by = scene.manager.id;
 		await insert(
 			`insert into app.report (id, study_id, look_id, kind, made_by) values ($1, $2, $3, 'open', $4)`,
 			[made.report, scene.studyId, made.look, by]

@@ -1,4 +1,6 @@
 import type { RequestEvent } from '@sveltejs/kit';
+import bold from '@fontsource/atkinson-hyperlegible/files/atkinson-hyperlegible-latin-700-normal.woff2?url';
+import plain from '@fontsource/atkinson-hyperlegible/files/atkinson-hyperlegible-latin-400-normal.woff2?url';
 import type { Refusal } from '$lib/refusal';
 import { problem } from './api/problem';
 
@@ -19,6 +21,8 @@ const page = (title: string, said: string) => `<!doctype html>
 <meta name="viewport" content="width=device-width, initial-scale=1">
 <title>${escape(title)} · Heddle</title>
 <style>
+@font-face { font-family: 'Atkinson Hyperlegible'; src: url('${plain}') format('woff2'); font-weight: 400; }
+@font-face { font-family: 'Atkinson Hyperlegible'; src: url('${bold}') format('woff2'); font-weight: 700; }
 :root { color-scheme: light dark; --ground: #fbf8f2; --ink: #16213f; --act: #28396b; }
 @media (prefers-color-scheme: dark) { :root { --ground: #14181f; --ink: #e8dfcf; --act: #a9b6e6; } }
 body { margin: 0; background: var(--ground); color: var(--ink); font: 1rem/1.45 'Atkinson Hyperlegible', sans-serif; }
@@ -53,7 +57,7 @@ export function turnAway(event: Asked, refusal: Refusal): Response {
 			...headers,
 			'content-type': 'text/html; charset=utf-8',
 			'content-security-policy':
-				"default-src 'none'; style-src 'unsafe-inline'; base-uri 'none'; form-action 'none'; frame-ancestors 'none'"
+				"default-src 'none'; style-src 'unsafe-inline'; font-src 'self'; base-uri 'none'; form-action 'none'; frame-ancestors 'none'"
 		}
 	});
 }

@@ -8,9 +8,9 @@ export const boardOutput = z.object({
 			look: z.number(),
 			kind: z.enum(['open', 'closed']),
 			pages: z.number().nullable(),
-			fingerprint: z.string(),
-			cut: z.string(),
-			cutOffAt: z.iso.datetime(),
+			cut: z
+				.object({ label: z.string(), cutOffAt: z.iso.datetime(), fingerprint: z.string() })
+				.nullable(),
 			ready: z.boolean(),
 			downloads: z.number(),
 			people: z.array(z.object({ name: z.string(), status: z.string(), downloads: z.number() }))

@@ -11,9 +11,8 @@ export interface Pack {
 	look: number;
 	kind: 'open' | 'closed';
 	pages: number | null;
-	fingerprint: string;
-	cut: string;
-	cutOffAt: string;
+	/** Null to the team, of a closed report. */
+	cut: { label: string; cutOffAt: string; fingerprint: string } | null;
 	/** Whether the own copy is there to be taken. */
 	ready: boolean;
 	downloads: number;
@@ -78,14 +77,20 @@ export const findBoardRoom = (
 		const packs = new Map<string, Pack>();
 		for (const row of found) {
 			const downloads = Number(row.downloads ?? 0);
+			// Of a closed report the team learns that it is, and to whom it went.
+			const told = member || row.kind === 'open';
 			const pack = packs.get(row.report_id) ?? {
 				reportId: row.report_id,
 				look: row.number,
 				kind: row.kind,
-				pages: row.pages,
-				fingerprint: row.fingerprint,
-				cut: row.label,
-				cutOffAt: row.cut_off_at.toISOString(),
+				pages: told ? row.pages : null,
+				cut: told
+					? {
+							label: row.label,
+							cutOffAt: row.cut_off_at.toISOString(),
+							fingerprint: row.fingerprint
+						}
+					: null,
 				ready: false,
 				downloads: 0,
 				people: []

@@ -5,7 +5,7 @@ import type { CutContent } from './content';
  * A spreadsheet takes a cell that begins with one of these for a formula. A number stays a number, also a negative one.
  */
 export const plainCell = (text: string): string =>
-	/^[=+\-@\t\r\u0000]/.test(text) && !/^[+-]?\d+(\.\d+)?(e[+-]?\d+)?$/i.test(text)
+	/^(?:[=+\-@]|\p{Cc})/u.test(text) && !/^[+-]?\d+(\.\d+)?(e[+-]?\d+)?$/i.test(text)
 		? `'${text}`
 		: text;
 

@@ -186,6 +186,7 @@ export const byArmLookJob = (delivery: Delivery<'by-arm-look'>): Promise<void> =
 				}
 				// The job's own record is open: a fault's words might carry what the fit saw.
 				log.error({ errorName: (thrown as Error)?.name, look: lookId }, 'by-arm look');
+				// eslint-disable-next-line preserve-caught-error -- a cause would carry those words along
 				throw new Error(neutral);
 			}
 		}

@@ -17,7 +17,11 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 	const actor = actorOf({ locals });
 	const [person, grant] = await Promise.all([
 		serve(() => getPerson(actor, params.person)),
-		formFor(grantInput, { validFrom: clock.now().toISOString().slice(0, 10) }, 'grant')
+		formFor(
+			grantInput,
+			{ role: '' as never, validFrom: clock.now().toISOString().slice(0, 10) },
+			'grant'
+		)
 	]);
 	return { person, grant, me: actor.personId, today: clock.now().toISOString().slice(0, 10) };
 };
