@@ -15,9 +15,11 @@ await run(async () => {
 			name: 'proof',
 			title: 'A proof run',
 			throwAway: false,
-			withDemo: true,
 			filter: at > 0 ? (process.argv[at + 1] ?? null) : null
 		},
-		(tests) => tests.phase('proof', () => runVitest(tests, ['proof'], files))
+		(tests) => {
+			tests.env.HEDDLE_FIGURES = '1';
+			return tests.phase('proof', () => runVitest(tests, ['proof'], files));
+		}
 	);
 });

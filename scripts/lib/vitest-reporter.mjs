@@ -42,6 +42,11 @@ export default class Reporter {
 			});
 	}
 
+	/** What a proof counted and timed is to be read. @param {import('vitest').UserConsoleLog} log */
+	onUserConsoleLog(log) {
+		if (process.env.HEDDLE_FIGURES === '1') process.stdout.write(log.content);
+	}
+
 	/** @param {unknown} _modules @param {readonly import('vitest/node').SerializedError[]} errors */
 	onTestRunEnd(_modules, errors) {
 		for (const error of errors)

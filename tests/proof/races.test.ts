@@ -74,7 +74,7 @@ const answered = async (answer: Response) => ({
 });
 const oneEach = <T>(values: readonly T[]) => new Set(values).size === values.length;
 
-test('200 randomisations at once through two web servers use the positions 1 to n once each', async () => {
+test('R-47: 200 randomisations at once through two web servers use the positions 1 to n once each', async () => {
 	const north: string[] = [];
 	const salt: string[] = [];
 	const [first, second] = scene.sites;
