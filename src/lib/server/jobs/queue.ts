@@ -23,24 +23,31 @@ export interface QueuePayloads {
 }
 export type QueueName = keyof QueuePayloads;
 
+const minute = 60;
 const retry = { retryLimit: 5, retryDelay: 5, retryBackoff: true } as const;
 const once = { retryLimit: 0 } as const;
 
 export const queueSettings: Record<
 	QueueName,
-	{ retryLimit: number; retryDelay?: number; retryBackoff?: boolean }
+	{
+		retryLimit: number;
+		retryDelay?: number;
+		retryBackoff?: boolean;
+		/** A job that runs longer is taken to have died with its worker and is tried again: longer than it ever takes. */
+		expireInSeconds: number;
+	}
 > = {
-	mail: { ...retry, retryLimit: 8 },
+	mail: { ...retry, retryLimit: 8, expireInSeconds: 5 * minute },
 	// All of it or nothing, so that a worker that died may be followed by another.
-	import: { ...retry, retryLimit: 1 },
-	look: { ...retry, retryLimit: 2 },
-	report: { ...retry, retryLimit: 2 },
-	release: retry,
-	'allocation-list': { ...retry, retryLimit: 2 },
-	'by-arm-look': { ...retry, retryLimit: 2 },
-	'closed-report': { ...retry, retryLimit: 2 },
-	'closed-release': retry,
-	seal: once
+	import: { ...retry, retryLimit: 1, expireInSeconds: 30 * minute },
+	look: { ...retry, retryLimit: 2, expireInSeconds: 30 * minute },
+	report: { ...retry, retryLimit: 2, expireInSeconds: 10 * minute },
+	release: { ...retry, expireInSeconds: 10 * minute },
+	'allocation-list': { ...retry, retryLimit: 2, expireInSeconds: 10 * minute },
+	'by-arm-look': { ...retry, retryLimit: 2, expireInSeconds: 30 * minute },
+	'closed-report': { ...retry, retryLimit: 2, expireInSeconds: 10 * minute },
+	'closed-release': { ...retry, expireInSeconds: 10 * minute },
+	seal: { ...once, expireInSeconds: 10 * minute }
 };
 
 /** Makes the queue's tables and queues, as the owner. */
