@@ -97,7 +97,7 @@ test('the keyboard reaches everything that answers to a click, and shows where i
 				const seen = all.filter(
 					(each) =>
 						each.checkVisibility() &&
-						!(each as HTMLButtonElement).disabled &&
+						!each.matches(':disabled') &&
 						each.tabIndex >= 0 &&
 						(each as HTMLInputElement).type !== 'hidden'
 				);

@@ -78,7 +78,7 @@ test('signing in, working and signing out work without JavaScript', async ({ bro
 	await page.getByLabel('Password', { exact: true }).fill(statistician.password);
 	await page.getByRole('button', { name: 'Sign in', exact: true }).click();
 	await expect(page).toHaveURL(/\/account$/);
-	await page.getByRole('button', { name: 'Sign out', exact: true }).click();
+	await page.locator('#main').getByRole('button', { name: 'Sign out', exact: true }).click();
 	await page.goto('/account');
 	await expect(page).toHaveURL(/\/sign-in/);
 	await context.close();

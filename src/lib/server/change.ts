@@ -5,7 +5,7 @@ import type { Actor } from './actor';
 import { database } from './db/db';
 import { translated } from './db/errors';
 import type { Tables } from './db/tables';
-import { enqueue, type QueueName, type QueuePayloads } from './jobs/queue';
+import { enqueue, type EnqueueOptions, type QueueName, type QueuePayloads } from './jobs/queue';
 import { roleAllowing, type Capability, type Scope } from './permission';
 
 /** All that loads and reads receive; the transaction behind it is read-only in the database too. */
@@ -14,7 +14,11 @@ export type Reader = Pick<Kysely<Tables>, 'selectFrom' | 'fn' | 'dynamic'> & Que
 /** Exists only inside change(). */
 export interface Writer extends Reader, Pick<Kysely<Tables>, 'insertInto' | 'updateTable'> {
 	/** Sent with the transaction: if it rolls back, there is no job. */
-	enqueue<Q extends QueueName>(queue: Q, payload: QueuePayloads[Q]): Promise<void>;
+	enqueue<Q extends QueueName>(
+		queue: Q,
+		payload: QueuePayloads[Q],
+		options?: EnqueueOptions
+	): Promise<void>;
 }
 
 interface ChangeOptions {
@@ -38,7 +42,7 @@ function writing(on: Transaction<Tables>): Writer {
 		fn: on.fn,
 		dynamic: on.dynamic,
 		getExecutor: () => on.getExecutor(),
-		enqueue: (queue, payload) => enqueue(on, queue, payload)
+		enqueue: (queue, payload, options) => enqueue(on, queue, payload, options)
 	};
 }
 

@@ -94,15 +94,22 @@ export function forgetSender(): void {
 	sender = undefined;
 }
 
+export interface EnqueueOptions {
+	/** Somebody waits for it: before the others of its queue. */
+	urgent?: boolean;
+}
+
 /** Adds a job in the given transaction. */
 export async function enqueue<Q extends QueueName>(
 	on: QueryExecutorProvider,
 	queue: Q,
-	payload: QueuePayloads[Q]
+	payload: QueuePayloads[Q],
+	options: EnqueueOptions = {}
 ): Promise<void> {
 	const boss = sending();
 	const executor = on.getExecutor();
 	await boss.send(queue, payload, {
+		...(options.urgent ? { priority: 1 } : {}),
 		db: {
 			executeSql: async (text: string, values: unknown[]) =>
 				executor.executeQuery(CompiledQuery.raw(text, values)) as never

@@ -30,23 +30,25 @@ export async function startWorker(
 	for (const [name, handler] of Object.entries(handlers)) {
 		const queue = name as QueueName;
 		const tries = queueSettings[queue].retryLimit;
-		await boss.work(
-			queue,
-			{ batchSize: 1, pollingIntervalSeconds: 0.5, includeMetadata: true },
-			async (jobs: PgBoss.JobWithMetadata<object>[]) => {
-				for (const job of jobs) {
-					try {
-						await (handler as (d: Delivery<QueueName>) => Promise<void>)({
-							payload: job.data as QueuePayloads[QueueName],
-							lastTry: job.retryCount >= tries
-						});
-					} catch (error) {
-						log.error({ err: error, queue, job: job.id, retry: job.retryCount }, 'job failed');
-						if (!(error instanceof Refusal)) throw error;
+		// A mail waits for the other side most of the time: several at once.
+		for (let hand = 0; hand < (queue === 'mail' ? 4 : 1); hand++)
+			await boss.work(
+				queue,
+				{ batchSize: 1, pollingIntervalSeconds: 0.5, includeMetadata: true },
+				async (jobs: PgBoss.JobWithMetadata<object>[]) => {
+					for (const job of jobs) {
+						try {
+							await (handler as (d: Delivery<QueueName>) => Promise<void>)({
+								payload: job.data as QueuePayloads[QueueName],
+								lastTry: job.retryCount >= tries
+							});
+						} catch (error) {
+							log.error({ err: error, queue, job: job.id, retry: job.retryCount }, 'job failed');
+							if (!(error instanceof Refusal)) throw error;
+						}
 					}
 				}
-			}
-		);
+			);
 	}
 	return { stop: () => boss.stop({ graceful: true, wait: true, timeout: 20_000 }) };
 }

@@ -50,6 +50,8 @@ export async function queueMail(writer: Writer, mail: NewMail): Promise<string> 
 			message_id: `<${newRandomId()}@${senderDomain()}>`
 		})
 		.execute();
-	if (!mail.noAddress) await writer.enqueue('mail', { mailId: id });
+	if (!mail.noAddress)
+		// An account's own mail is waited for, often in front of the screen.
+		await writer.enqueue('mail', { mailId: id }, { urgent: mail.personId !== undefined });
 	return id;
 }
