@@ -49,6 +49,8 @@ test('the organisation’s identity provider signs in whoever has an account, an
 	await page.goto('/sign-in');
 	await ready(page);
 	await page.getByRole('button', { name: 'Sign in with your organisation account' }).click();
+	// Both pages ask for an e-mail address: the other one must be there first.
+	await page.waitForURL((url) => url.origin !== heddle.origin);
 	await page.getByLabel('E-mail address').fill(nurse.email);
 	await page.getByRole('button', { name: 'Sign in' }).click();
 	await page.waitForURL(
@@ -60,6 +62,8 @@ test('the organisation’s identity provider signs in whoever has an account, an
 	await page.goto('/sign-in');
 	await ready(page);
 	await page.getByRole('button', { name: 'Sign in with your organisation account' }).click();
+	// Both pages ask for an e-mail address: the other one must be there first.
+	await page.waitForURL((url) => url.origin !== heddle.origin);
 	await page.getByLabel('E-mail address').fill('stranger@elsewhere.example');
 	await page.getByRole('button', { name: 'Sign in' }).click();
 	await page.waitForURL(
