@@ -189,8 +189,6 @@ export function problem<Code extends ProblemCode>(code: Code, facts: Facts = {})
 	return { code, message: sentences[code](facts), facts };
 }
 
-export const problemCodes = Object.keys(sentences) as ProblemCode[];
-
 export type Result<T, P = Problem> = { ok: true; value: T } | { ok: false; problem: P };
 
 export const good = <T>(value: T): { ok: true; value: T } => ({ ok: true, value });

@@ -76,8 +76,6 @@ const table = {
 
 export type Capability = keyof typeof table;
 
-export const capabilities = Object.keys(table) as Capability[];
-
 export interface Scope {
 	studyId?: string | null;
 	siteId?: string | null;

@@ -74,7 +74,3 @@ export function measurementsIn(content: Pick<CutContent, 'subjects'>): number {
 			for (const value of Object.values(visit.values)) if (isMeasured(value)) total++;
 	return total;
 }
-
-/** Whether visits carry the time as a number from the file they came from. */
-export const hasStudyTime = (content: Pick<CutContent, 'subjects'>): boolean =>
-	content.subjects.some((subject) => subject.visits.some((visit) => visit.studyTime !== null));

@@ -10,5 +10,3 @@ export const releaseInput = z.strictObject({
 export type ReleaseInput = z.output<typeof releaseInput>;
 
 export const approveInput = z.strictObject({ releaseId: z.uuid('Choose a release of the list.') });
-
-export const makeReportInput = z.strictObject({});

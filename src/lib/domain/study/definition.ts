@@ -258,7 +258,6 @@ export const studyDefinition = z
 
 export type StudyDefinition = z.infer<typeof studyDefinition>;
 export type Arm = StudyDefinition['arms'][number];
-export type Stratum = StudyDefinition['strata'][number];
 export type SiteDefinition = StudyDefinition['sites'][number];
 export type OpeningHours = SiteDefinition['openingHours'][number];
 export type Characteristic = StudyDefinition['characteristics'][number];

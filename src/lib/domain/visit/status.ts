@@ -13,9 +13,6 @@ export const visitStatuses = [
 ] as const;
 export type VisitStatus = (typeof visitStatuses)[number];
 
-export const isVisitStatus = (text: string): text is VisitStatus =>
-	(visitStatuses as readonly string[]).includes(text);
-
 type Step = { to: VisitStatus; reason: boolean };
 
 const step = (to: VisitStatus): Step => ({ to, reason: false });

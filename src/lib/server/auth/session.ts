@@ -2,7 +2,7 @@ import { sql } from 'kysely';
 import { newId } from '$lib/id';
 import type { Grant, Role } from '$lib/domain/person/roles';
 import type { Actor } from '../actor';
-import { change, changeOwn, recordRefusal } from '../change';
+import { changeOwn, recordRefusal } from '../change';
 import { config } from '../config';
 import { database } from '../db/db';
 import { systemActor } from '../actor';
@@ -137,18 +137,6 @@ export async function endSession(actor: Actor, sessionId: string): Promise<void>
 			.set({ ended_at: new Date() })
 			.where('id', '=', sessionId)
 			.where('person_id', '=', actor.personId)
-			.where('ended_at', 'is', null)
-			.execute()
-	);
-}
-
-/** Ends every session of a person: on deactivation and after a password reset. */
-export async function endSessionsOf(actor: Actor, personId: string): Promise<void> {
-	await change(actor, 'person.manage', {}, (writer) =>
-		writer
-			.updateTable('session')
-			.set({ ended_at: new Date() })
-			.where('person_id', '=', personId)
 			.where('ended_at', 'is', null)
 			.execute()
 	);

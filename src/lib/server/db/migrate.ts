@@ -10,9 +10,6 @@ const provider: MigrationProvider = {
 		Object.fromEntries(Object.entries(modules).map(([path, module]) => [nameOf(path), module]))
 };
 
-/** Names of every migration this build knows, in order. */
-export const migrationNames: readonly string[] = Object.keys(modules).map(nameOf).sort();
-
 export class MigrationFailed extends Error {
 	constructor(
 		readonly migration: string | null,
