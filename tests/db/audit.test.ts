@@ -7,6 +7,7 @@ import { root } from '../../scripts/lib/places.mjs';
 import { testBuild } from '../../scripts/lib/test-cluster.mjs';
 import { newId } from '../../src/lib/id';
 import { freshDatabase, type FreshDatabase } from '../support/database';
+import { sealAll } from '../support/seal';
 import { addPerson, addRole, asOwner } from '../support/people';
 import { addBareStudy } from '../support/bare-scene';
 
@@ -244,6 +245,7 @@ describe('R-12: breaks in a copy are named', () => {
 					`select audit.act('note', '${batch}-${n}', null, null, null, '{"n": ${n}}')`
 				);
 			await as(copy.appUrl, 'select audit.seal_now()');
+			await sealAll(copy);
 		}
 		return copy;
 	}

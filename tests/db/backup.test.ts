@@ -36,6 +36,7 @@ import { secrets } from '../../scripts/lib/secrets.mjs';
 import { removeTestCluster, testBuild, testState } from '../../scripts/lib/test-cluster.mjs';
 import { newId } from '../../src/lib/id';
 import { cluster, freshDatabase, type FreshDatabase } from '../support/database';
+import { sealAll } from '../support/seal';
 import { asOwner } from '../support/people';
 
 const keys = { AUTH_SECRET: 'a', HEDDLE_KEY: 'b', CLOSED_KEY: 'c' };
@@ -69,7 +70,7 @@ beforeAll(async () => {
 					`${batch}-${n}`
 				]);
 		});
-		if (batch < 3) await database.sql('select audit.seal_now()');
+		if (batch < 3) await sealAll(database);
 	}
 	mkdirSync(join(database.files, 'open/ab'), { recursive: true });
 	writeFileSync(join(database.files, 'open/ab/consent.bin'), 'a scanned page');
