@@ -1,5 +1,6 @@
 import { expect } from 'vitest';
 import type { FreshDatabase } from '../../support/database';
+import { sealAll } from '../../support/seal';
 import type { BookingTally } from './bookers';
 import type { Tally } from './savers';
 
@@ -11,7 +12,7 @@ async function none(db: FreshDatabase, what: string, query: string): Promise<voi
 
 /** Seals all there is, and lets the trail prove itself. */
 export async function expectWholeTrail(db: FreshDatabase): Promise<number> {
-	await db.sql('select audit.seal_now()');
+	await sealAll(db);
 	const [breaks, state] = await db.sql(
 		'select * from audit.verify()',
 		'select events::int, sealed::int from audit.state()'
