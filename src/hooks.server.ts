@@ -1,4 +1,5 @@
 import type { Handle, HandleServerError, ServerInit } from '@sveltejs/kit';
+import { AuthError } from '@auth/core/errors';
 import { sequence } from '@sveltejs/kit/hooks';
 import { newId } from '$lib/id';
 import { Refusal } from '$lib/refusal';
@@ -145,7 +146,18 @@ const guard: Handle = async ({ event, resolve }) => {
 	return resolve(event);
 };
 
-export const handle = sequence(framing, sameOrigin, authHandle, guard);
+/** A sign-in that fails on its way back from the provider ends on the sign-in page, not on an error page. */
+const signingIn: Handle = async ({ event, resolve }) => {
+	try {
+		return await authHandle({ event, resolve });
+	} catch (thrown) {
+		if (!(thrown instanceof AuthError) || !event.url.pathname.startsWith('/auth/')) throw thrown;
+		log.warn({ requestId: event.locals.requestId, type: thrown.type }, 'sign-in');
+		return sendTo(event, `/sign-in?error=${thrown.type}`);
+	}
+};
+
+export const handle = sequence(framing, sameOrigin, signingIn, guard);
 
 export const handleError: HandleServerError = ({ error: thrown, event, status, message }) => {
 	if (thrown instanceof Refusal) return { message: thrown.message, code: thrown.code };

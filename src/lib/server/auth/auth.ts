@@ -12,6 +12,9 @@ export class Throttled extends CredentialsSignin {
 	code = 'throttled';
 }
 
+/** Where somebody goes whom the provider knows and Heddle does not. */
+const turnedAway = '/sign-in?error=AccessDenied';
+
 const text = (value: unknown) => (typeof value === 'string' ? value : '');
 
 /**
@@ -77,8 +80,8 @@ export const {
 			async signIn({ account, profile }) {
 				if (account?.provider !== 'sso') return true;
 				// Only an address that the provider has verified may stand for an account here.
-				if (profile?.email_verified === false || !profile?.email) return false;
-				return (await personForSso(profile.email)) ? true : false;
+				if (profile?.email_verified === false || !profile?.email) return turnedAway;
+				return (await personForSso(profile.email)) ? true : turnedAway;
 			},
 			async jwt({ token, user, account, profile }) {
 				if (account?.provider === 'sso' && profile?.email) {
