@@ -1,27 +1,8 @@
-import { join } from 'node:path';
-import type { Page } from '@playwright/test';
-import { root } from '../../scripts/lib/places.mjs';
 import { test } from '../support/browser';
 import { publicScreens, ready, screensByRole, signedIn } from '../support/screens';
+import { takePictures } from './support/take';
 
 test.describe.configure({ mode: 'parallel' });
-
-/** One page in four looks: wide and narrow, light and dark. */
-async function takePictures(page: Page, folder: string, name: string): Promise<void> {
-	for (const [width, height] of [
-		[1280, 800],
-		[820, 1180]
-	] as const) {
-		await page.setViewportSize({ width, height });
-		for (const colorScheme of ['light', 'dark'] as const) {
-			await page.emulateMedia({ colorScheme, reducedMotion: 'reduce' });
-			await page.screenshot({
-				path: join(root, 'pictures', folder, `${name} ${width} ${colorScheme}.png`),
-				fullPage: true
-			});
-		}
-	}
-}
 
 for (const role of [
 	'administrator',
