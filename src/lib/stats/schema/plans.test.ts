@@ -31,6 +31,18 @@ function knownKeys(read: (plan: unknown) => unknown, plan: Plan): string[] {
 	return [];
 }
 
+test('the plans that the README shows are read and answered', () => {
+	const readme = readFileSync(new URL('../../../../README.md', import.meta.url), 'utf8');
+	const shown = [...readme.matchAll(/```json\n([\s\S]*?)```/g)].map(
+		(m) => JSON.parse(m[1]!) as Plan
+	);
+	const [boundaries, study] = ['informationFractions', 'question'].map((key) =>
+		shown.find((plan) => key in plan)!
+	);
+	expect(monitor(readMonitoringPlan(boundaries)).conditionalPower).not.toBeNull();
+	expect(planStudy(readDesignPlan(study)).power).toBeGreaterThanOrEqual(0.9);
+});
+
 describe('the published schemas say what the readers take', () => {
 	test('every example of a schema is read and answered', () => {
 		for (const plan of monitoring.examples)
