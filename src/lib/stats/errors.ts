@@ -21,6 +21,14 @@ export const statsErrorCodes = {
 	'shape-mismatch': 'lengths do not agree',
 	'singular-information': 'the information on the variances is singular',
 	'out-of-range': 'a result is too large or too small to be held',
+	'bad-plan': 'the plan is not one that can be read or carried out',
+	'unknown-column': 'the data have no column of a name the plan gives',
+	'unknown-coefficient': 'the model has no coefficient of a name the plan gives',
+	'missing-subject': 'a row does not say whose it is',
+	'not-positive': 'an outcome on a log scale is zero or negative',
+	'repeated-occasion': 'a subject has two rows where the model allows one',
+	'not-identified': 'two parts of the model cannot be told apart',
+	'not-estimable': 'a contrast asks for something the data do not determine',
 	stopped: 'the caller asked to stop'
 } as const;
 
