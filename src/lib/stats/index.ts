@@ -1,5 +1,6 @@
 /** The public face of the statistics: import from here, not from the files behind it. */
 export { ENGINE_VERSION } from './engine.js';
+export type { Column, Columns } from './design/columns.js';
 export { StatsError, statsErrorCodes, type StatsErrorCode } from './errors.js';
 export { analyseGrowth } from './growth/analyse-growth.js';
 export { buildDesign, type Design } from './design/design.js';
