@@ -47,7 +47,13 @@ export const isMatrixStructure = (d: Dependence): boolean =>
 export const isSerial = (d: Dependence): boolean =>
 	d.errors.structure === 'serial' || d.errors.structure === 'serial-with-noise';
 
-const columnsOfZ = { none: 0, level: 1, slope: 1, 'level-and-slope': 2, 'level-and-slope-uncorrelated': 2 };
+const columnsOfZ = {
+	none: 0,
+	level: 1,
+	slope: 1,
+	'level-and-slope': 2,
+	'level-and-slope-uncorrelated': 2
+};
 
 function gapsOf(design: ModelDesign) {
 	const gaps: number[] = [];
@@ -70,7 +76,12 @@ function gapsOf(design: ModelDesign) {
 	}
 	gaps.sort((a, b) => a - b);
 	const unit = gaps[Math.floor(gaps.length / 2)] ?? (Number.isFinite(smallest) ? smallest : 1);
-	return { unit, smallest: Number.isFinite(smallest) ? smallest : unit, longest: longest || unit, most };
+	return {
+		unit,
+		smallest: Number.isFinite(smallest) ? smallest : unit,
+		longest: longest || unit,
+		most
+	};
 }
 
 /** The working parameters of a model on a design. */

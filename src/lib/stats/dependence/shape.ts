@@ -37,8 +37,7 @@ export function lagCorrelations(partial: ArrayLike<number>): {
 				dnext[j * k + d] =
 					da[j * k + d]! - p * da[(lag - j) * k + d]! - (d === lag - 1 ? a[lag - j]! : 0);
 		}
-		for (let d = 0; d < k; d++)
-			dv[d] = dv[d]! * (1 - p * p) - (d === lag - 1 ? 2 * p * v : 0);
+		for (let d = 0; d < k; d++) dv[d] = dv[d]! * (1 - p * p) - (d === lag - 1 ? 2 * p * v : 0);
 		v *= 1 - p * p;
 		a = next;
 		da = dnext;
@@ -75,7 +74,8 @@ export function shapeCorrelation(layout: Layout, x: Float64Array): Float64Array 
 		const { correlation } = lagCorrelations(
 			Array.from({ length: k - 1 }, (_, i) => Math.tanh(x[layout.shape + i]!))
 		);
-		for (let i = 0; i < k; i++) for (let j = 0; j < k; j++) r[i * k + j] = correlation[Math.abs(i - j)]!;
+		for (let i = 0; i < k; i++)
+			for (let j = 0; j < k; j++) r[i * k + j] = correlation[Math.abs(i - j)]!;
 	} else {
 		const { rho } = commonCorrelation(layout, x);
 		for (let i = 0; i < k; i++) for (let j = 0; j < k; j++) r[i * k + j] = i === j ? 1 : rho;

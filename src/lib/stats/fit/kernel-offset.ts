@@ -143,8 +143,7 @@ export function offsetKernel(rows: Rows, layout: Layout): Kernel {
 						} else {
 							const v0 = k[0]! * b[at + i]! + k[1]! * b[at + width + i]!;
 							const v1 = k[1]! * b[at + i]! + k[3]! * b[at + width + i]!;
-							for (let j = 0; j <= i; j++)
-								m[to + j]! -= v0 * b[at + j]! + v1 * b[at + width + j]!;
+							for (let j = 0; j <= i; j++) m[to + j]! -= v0 * b[at + j]! + v1 * b[at + width + j]!;
 						}
 					}
 				}

@@ -1,5 +1,11 @@
 import type { FitMethod } from '../plan.js';
-import { block, choleskyInPlace, inverseFromFactor, logDeterminantOf, product } from '../numeric/dense.js';
+import {
+	block,
+	choleskyInPlace,
+	inverseFromFactor,
+	logDeterminantOf,
+	product
+} from '../numeric/dense.js';
 
 /**
  * What a kernel gives at one point of the dependence parameters, V* the covariance in units of σ² without the

@@ -44,7 +44,13 @@ export function rowsOf(
 		}
 	const visits = layout.dependence.visitEffects ? design.visits.length : 0;
 	return {
-		n, c, a, visits, visit: design.visit, q, z,
+		n,
+		c,
+		a,
+		visits,
+		visit: design.visit,
+		q,
+		z,
 		subjectStart: design.subjectStart,
 		width: c + visits
 	};

@@ -8,9 +8,20 @@ import { prepareModel } from './prepare-model.js';
 const names = ['(Intercept)', 'baseline', 'time', 'arm', 'time:arm'];
 const design = referenceDesign('btheb', names);
 
-const effects: SubjectEffects[] = ['none', 'level', 'level-and-slope', 'level-and-slope-uncorrelated', 'slope'];
+const effects: SubjectEffects[] = [
+	'none',
+	'level',
+	'level-and-slope',
+	'level-and-slope-uncorrelated',
+	'slope'
+];
 const structures: ErrorStructure[] = [
-	'independent', 'serial', 'serial-with-noise', 'compound-symmetry', 'toeplitz', 'unstructured'
+	'independent',
+	'serial',
+	'serial-with-noise',
+	'compound-symmetry',
+	'toeplitz',
+	'unstructured'
 ];
 const family = structures.flatMap((structure) =>
 	effects.flatMap((subjectEffects) =>
@@ -20,7 +31,9 @@ const family = structures.flatMap((structure) =>
 					? (['time', 'visit'] as const)
 					: (['time'] as const)
 				).map((along): Dependence => ({
-					subjectEffects, visitEffects, errors: { structure, along, varianceBy }
+					subjectEffects,
+					visitEffects,
+					errors: { structure, along, varianceBy }
 				}))
 			)
 		)
@@ -35,7 +48,8 @@ function somewhere(dependence: Dependence, shift: number): Float64Array {
 			// Diagonal entries near 1, the others small: a factor of a positive definite matrix.
 			let at = layout.shape;
 			for (let r = 1; r < layout.positions; r++)
-				for (let c = 0; c <= r; c++) if (at++ === i) return r === c ? 0.9 + 0.1 * r : 0.2 + 0.05 * c;
+				for (let c = 0; c <= r; c++)
+					if (at++ === i) return r === c ? 0.9 + 0.1 * r : 0.2 + 0.05 * c;
 		}
 		return 0.3 + 0.35 * Math.sin(3 * i + shift) ** 2;
 	});

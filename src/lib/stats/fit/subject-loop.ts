@@ -67,7 +67,8 @@ export function subjectLoop(rows: Rows, layout: Layout, whitening: Whitening): K
 				const at = s * q * w;
 				for (let e = 0; e < q; e++)
 					for (let j = 0; j < w; j++)
-						kept[at + e * w + j] = j <= width + e ? mi[(width + e) * w + j]! : mi[j * w + width + e]!;
+						kept[at + e * w + j] =
+							j <= width + e ? mi[(width + e) * w + j]! : mi[j * w + width + e]!;
 				for (let e = 0; e < q; e++)
 					for (let f = 0; f < q; f++) cc[e * q + f] = kept[at + e * w + width + f]!;
 				effectOf(g, cc, q, effect);
@@ -132,8 +133,7 @@ export function subjectLoop(rows: Rows, layout: Layout, whitening: Whitening): K
 						for (let f = 0; f < q; f++) {
 							let sum = k[e * q + f]!;
 							for (let d = 0; d < q; d++)
-								for (let b = 0; b < q; b++)
-									sum += k[e * q + d]! * bhb[d * q + b]! * k[b * q + f]!;
+								for (let b = 0; b < q; b++) sum += k[e * q + d]! * bhb[d * q + b]! * k[b * q + f]!;
 							hi[(width + e) * w + width + f] = sum;
 						}
 				}

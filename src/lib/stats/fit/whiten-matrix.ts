@@ -1,9 +1,18 @@
 import type { Layout } from '../dependence/layout.js';
 import {
-	commonCorrelation, lagCorrelations, shapeCorrelation, unstructuredFactor
+	commonCorrelation,
+	lagCorrelations,
+	shapeCorrelation,
+	unstructuredFactor
 } from '../dependence/shape.js';
 import type { ModelDesign } from '../design/model-design.js';
-import { choleskyInPlace, inverseFromFactor, logDeterminantOf, solveLower, solveUpper } from '../numeric/dense.js';
+import {
+	choleskyInPlace,
+	inverseFromFactor,
+	logDeterminantOf,
+	solveLower,
+	solveUpper
+} from '../numeric/dense.js';
 import type { Rows } from './rows.js';
 import type { Whitening } from './subject-loop.js';
 
@@ -47,7 +56,11 @@ export function matrixWhitening(rows: Rows, layout: Layout, design: ModelDesign)
 			found = patterns.length;
 			known.set(key, found);
 			patterns.push({
-				positions, group, factor: new Float64Array(size * size), logDeterminant: 0, pulled: 0,
+				positions,
+				group,
+				factor: new Float64Array(size * size),
+				logDeterminant: 0,
+				pulled: 0,
 				gathered: new Float64Array(size * size)
 			});
 		}
@@ -69,7 +82,8 @@ export function matrixWhitening(rows: Rows, layout: Layout, design: ModelDesign)
 		moves: true,
 		prepare(x) {
 			last = x.slice();
-			for (let c = 1; c < layout.scaleClasses; c++) deviations[c] = Math.exp(x[layout.scale + c - 1]!);
+			for (let c = 1; c < layout.scaleClasses; c++)
+				deviations[c] = Math.exp(x[layout.scale + c - 1]!);
 			if (errors.structure === 'unstructured') {
 				const l = unstructuredFactor(layout, x);
 				for (let i = 0; i < k; i++)
@@ -83,14 +97,14 @@ export function matrixWhitening(rows: Rows, layout: Layout, design: ModelDesign)
 				for (let c = 0; c < copies; c++)
 					for (let i = 0; i < k; i++)
 						for (let j = 0; j < k; j++)
-							covariance[(c * k + i) * k + j] =
-								deviation(c, i) * deviation(c, j) * r[i * k + j]!;
+							covariance[(c * k + i) * k + j] = deviation(c, i) * deviation(c, j) * r[i * k + j]!;
 			}
 			for (const p of patterns) {
 				const n = p.positions.length;
 				for (let i = 0; i < n; i++)
 					for (let j = 0; j < n; j++)
-						p.factor[i * n + j] = covariance[(p.group * k + p.positions[i]!) * k + p.positions[j]!]!;
+						p.factor[i * n + j] =
+							covariance[(p.group * k + p.positions[i]!) * k + p.positions[j]!]!;
 				if (choleskyInPlace(p.factor, n) >= 0) return false;
 				p.logDeterminant = logDeterminantOf(p.factor, n);
 				p.pulled = 0;

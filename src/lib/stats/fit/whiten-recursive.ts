@@ -90,7 +90,9 @@ export function recursiveWhitening(rows: Rows, layout: Layout, design: ModelDesi
 			else range = layout.gapUnit * Math.exp(x[atRange]!);
 			share = atShare >= 0 ? Math.sin(x[atShare]!) ** 2 : 0;
 			shareSlopeFactor = atShare >= 0 ? Math.sin(2 * x[atShare]!) : 0;
-			return range > 0 && Number.isFinite(range) && deviations.every((d) => d > 0 && Number.isFinite(d));
+			return (
+				range > 0 && Number.isFinite(range) && deviations.every((d) => d > 0 && Number.isFinite(d))
+			);
 		},
 		whiten(subject, columns, count, m) {
 			let log = enter(subject, columns, count);

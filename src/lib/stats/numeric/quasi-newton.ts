@@ -62,15 +62,19 @@ const unit = (k: number, scale: number) => {
  * Source: Nocedal & Wright (2006), Numerical Optimization, 2nd ed., algorithm 6.1; Hager & Zhang (2005), SIAM J.
  * Optim. 16:170-192, for the test by slope.
  */
-export function descend(f: WithSlope, start: Float64Array, options: DescentOptions): Descent | null {
+export function descend(
+	f: WithSlope,
+	start: Float64Array,
+	options: DescentOptions
+): Descent | null {
 	const k = start.length;
 	let evaluations = 1;
 	const first = f(start);
 	if (!first) return null;
-	let x = start.slice();
+	let x: Float64Array = start.slice();
 	let { value, slope } = first;
 	let given = options.inverse !== undefined;
-	let b = options.inverse?.slice() ?? unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
+	let b: Float64Array = options.inverse?.slice() ?? unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
 	let restarted = false;
 	for (;;) {
 		options.beforeStep?.(evaluations);
@@ -84,7 +88,13 @@ export function descend(f: WithSlope, start: Float64Array, options: DescentOptio
 		}
 		const gradient = Math.sqrt(-along);
 		const done = (converged: boolean): Descent => ({
-			x, value, slope, inverse: b, gradient, converged, evaluations
+			x,
+			value,
+			slope,
+			inverse: b,
+			gradient,
+			converged,
+			evaluations
 		});
 		if (k === 0 || gradient <= options.tolerance) return done(true);
 		if (evaluations >= options.most) return done(false);
@@ -109,7 +119,10 @@ export function descend(f: WithSlope, start: Float64Array, options: DescentOptio
 				const d = along + slopeThere - (3 * (at.value - value)) / t;
 				const root = d * d - along * slopeThere;
 				const cubic =
-					root >= 0 ? t * (1 - (slopeThere + Math.sqrt(root) - d) / (slopeThere - along + 2 * Math.sqrt(root))) : t / 2;
+					root >= 0
+						? t *
+							(1 - (slopeThere + Math.sqrt(root) - d) / (slopeThere - along + 2 * Math.sqrt(root)))
+						: t / 2;
 				t = cubic > 0.1 * t && cubic < 0.6 * t ? cubic : t / 3;
 			} else t /= 4;
 			if (evaluations >= options.most) break;

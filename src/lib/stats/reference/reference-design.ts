@@ -51,7 +51,7 @@ export function referenceDesign(set: ReferenceSet, names: readonly string[]): Mo
 	labels.forEach((label, s) => {
 		start[s + 1] = start[s]! + order.filter(({ row }) => row.subject === label).length;
 	});
-	const arms = [...new Set(all.map((r) => r.arm))].filter((a) => a !== undefined).sort();
+	const arms = [...new Set(all.flatMap((r) => (r.arm === undefined ? [] : [r.arm])))].sort();
 	return {
 		n,
 		p,
@@ -64,9 +64,9 @@ export function referenceDesign(set: ReferenceSet, names: readonly string[]): Mo
 		subjectStart: start,
 		subjects: labels,
 		subjectGroup: Int32Array.from(labels, (label) =>
-			Math.max(0, arms.indexOf(all.find((r) => r.subject === label)!.arm))
+			Math.max(0, arms.indexOf(all.find((r) => r.subject === label)!.arm ?? ""))
 		),
-		groups: arms as string[],
+		groups: arms,
 		rowOf: Int32Array.from(order, ({ i }) => i),
 		timeInMean: names.some((name) => name.startsWith('visitf')) ? 'categorical' : 'linear',
 		aliased: []
