@@ -15,6 +15,7 @@ export const statsErrorCodes = {
 	'constant-outcome': 'every outcome is the same',
 	'perfect-fit': 'the mean reproduces every outcome exactly',
 	'no-residual-variation': 'nothing is left within subjects',
+	'not-identified': 'no data of this kind can tell two parts of the model apart',
 	'rank-deficient': 'a column of the mean is determined by others',
 	'kenward-roger-needs-reml': 'Kenward–Roger is defined for REML only',
 	'no-subject-effect': 'the model has no lasting offset',
