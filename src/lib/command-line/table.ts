@@ -8,7 +8,8 @@ export function digits(value: number | null): string {
 	return size >= 1e-4 && size < 1e7 ? String(Number(value.toPrecision(6))) : value.toExponential(3);
 }
 
-const probability = (p: number) => (p < 1e-4 ? (p === 0 ? '< 1e-300' : p.toExponential(1)) : p.toFixed(4));
+const probability = (p: number) =>
+	p < 1e-4 ? (p === 0 ? '< 1e-300' : p.toExponential(1)) : p.toFixed(4);
 
 /** Rows of cells as text: the first column to the left, the others to the right. */
 export function alignedRows(rows: readonly (readonly string[])[]): string {

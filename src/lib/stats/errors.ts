@@ -28,7 +28,6 @@ export const statsErrorCodes = {
 	'missing-subject': 'a row does not say whose it is',
 	'not-positive': 'an outcome on a log scale is zero or negative',
 	'repeated-occasion': 'a subject has two rows where the model allows one',
-	'not-identified': 'two parts of the model cannot be told apart',
 	'not-estimable': 'a contrast asks for something the data do not determine',
 	stopped: 'the caller asked to stop'
 } as const;
