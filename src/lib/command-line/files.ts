@@ -23,6 +23,7 @@ export function readJsonFile(path: string, what: string): unknown {
 	try {
 		return JSON.parse(text);
 	} catch (error) {
-		throw new BadInput(`The ${what} ${path} is not JSON: ${(error as Error).message}.`);
+		const why = (error as Error).message.replace(/\s+/g, ' ');
+		throw new BadInput(`The ${what} ${path} is not JSON: ${why}.`);
 	}
 }

@@ -14,7 +14,7 @@ export interface Outcome {
 	complaint: string;
 }
 
-const usage = 'It is used as: heddle fit --plan plan.json data.csv [--table].';
+const usage = 'it is used as heddle fit --plan plan.json data.csv [--table]';
 
 function readArguments(args: string[]) {
 	try {
@@ -23,14 +23,14 @@ function readArguments(args: string[]) {
 			allowPositionals: true,
 			options: { plan: { type: 'string' }, table: { type: 'boolean', default: false } }
 		});
-		if (!values.plan) throw new BadInput(`No plan is named. ${usage}`);
+		if (!values.plan) throw new BadInput(`No plan is named; ${usage}.`);
 		const [data, ...others] = positionals;
 		if (data === undefined || others.length > 0)
-			throw new BadInput(`One file of data must be named. ${usage}`);
+			throw new BadInput(`One file of data must be named; ${usage}.`);
 		return { plan: values.plan, table: values.table, data };
 	} catch (error) {
 		if (error instanceof BadInput) throw error;
-		throw new BadInput(`${(error as Error).message.split('. ')[0]}. ${usage}`);
+		throw new BadInput(`${(error as Error).message.split('. ')[0]}; ${usage}.`);
 	}
 }
 
@@ -55,18 +55,18 @@ export function columnsOfPlan(plan: AnalysisPlan): Map<string, ColumnKind> {
  * The answer to `heddle fit`: one JSON document, or a table to read.
  * Status 1 for input that cannot be used, 2 when the fit did not converge (its numbers are printed all the same).
  */
-export function fitCommand(args: string[]): Outcome {
+export function fitCommand(args: string[], analysis: typeof analyse = analyse): Outcome {
 	try {
 		const named = readArguments(args);
 		const plan = readPlan(readJsonFile(named.plan, 'plan'));
 		const columns = csvColumns(readText(named.data, 'file of data'), columnsOfPlan(plan));
-		const result = analyse(columns, plan);
+		const result = analysis(columns, plan);
 		return {
 			status: result.converged ? 0 : 2,
 			output: named.table ? resultTable(result) : `${JSON.stringify(result, null, '\t')}\n`,
 			complaint: result.converged
 				? ''
-				: 'The fit did not converge; its numbers are printed, and must not be relied on.\n'
+				: 'The fit did not converge: its numbers are printed and must not be relied on.\n'
 		};
 	} catch (error) {
 		if (error instanceof BadInput || error instanceof StatsError)
