@@ -72,3 +72,23 @@ export function referenceDesign(set: ReferenceSet, names: readonly string[]): Mo
 		aliased: []
 	};
 }
+
+/** The first so many subjects of a design: small enough for matrices over all rows. */
+export function firstSubjects(design: ModelDesign, subjects: number): ModelDesign {
+	const n = design.subjectStart[subjects]!;
+	const x = new Float64Array(n * design.p);
+	for (let j = 0; j < design.p; j++)
+		for (let i = 0; i < n; i++) x[j * n + i] = design.x[j * design.n + i]!;
+	return {
+		...design,
+		n,
+		x,
+		y: design.y.slice(0, n),
+		time: design.time.slice(0, n),
+		visit: design.visit.slice(0, n),
+		subjectStart: design.subjectStart.slice(0, subjects + 1),
+		subjects: design.subjects.slice(0, subjects),
+		subjectGroup: design.subjectGroup.slice(0, subjects),
+		rowOf: design.rowOf.slice(0, n)
+	};
+}
