@@ -114,21 +114,21 @@ function covariatesOf(data: PlannedColumns, screening: Screening, gathered: Gath
 	return { covariates, values };
 }
 
-/** Errors: `constant-outcome`, `too-few-observations`. */
+/** Errors: `too-few-observations`, `constant-outcome`. */
 function refuseTheHopeless(y: Float64Array, p: number, plan: AnalysisPlan): void {
+	if (y.length <= p) {
+		throw new StatsError(
+			'too-few-observations',
+			`${y.length} usable ${y.length === 1 ? 'row' : 'rows'} cannot carry ${p} ${p === 1 ? 'coefficient' : 'coefficients'} and a variance; at least ${p + 1} are needed.`,
+			{ observations: y.length, coefficients: p }
+		);
+	}
 	if (y.every((value) => value === y[0])) {
 		const value = plan.scale === 'log' ? Math.exp(y[0]!) : y[0]!;
 		throw new StatsError(
 			'constant-outcome',
 			`Every usable outcome (column “${plan.outcome}”) is ${value}; there is no variation to explain.`,
 			{ outcome: value }
-		);
-	}
-	if (y.length <= p) {
-		throw new StatsError(
-			'too-few-observations',
-			`${y.length} usable ${y.length === 1 ? 'row' : 'rows'} cannot carry ${p} ${p === 1 ? 'coefficient' : 'coefficients'} and a variance; at least ${p + 1} are needed.`,
-			{ observations: y.length, coefficients: p }
 		);
 	}
 }
