@@ -1,6 +1,7 @@
 import fc from 'fast-check';
 import { describe, expect, test } from 'vitest';
 import type { Columns } from '../design/columns.js';
+import { occasionsOf } from '../dependence/natural.js';
 import { StatsError } from '../errors.js';
 import type { AnalysisPlan, Mean } from '../plan.js';
 import { readPlan } from '../read-plan.js';
@@ -8,6 +9,7 @@ import { expectRelative, expectWithin } from '../reference/close.js';
 import { readRows, type ReferenceSet } from '../reference/reference-design.js';
 import { referenceFits, referenceModels } from '../reference/reference-fits.js';
 import { analyse, carryOut } from './analyse.js';
+import { marginalVariances } from './effective-sizes.js';
 
 /** A data set of the reference folder as columns; its numbers as numbers, its labels as they stand. */
 function columnsOf(set: ReferenceSet): Columns {
@@ -237,6 +239,28 @@ describe('an outcome on a log scale', () => {
 			expect(direct.coefficients[i]!.ratio).toBeNull();
 		});
 	});
+});
+
+describe('the variance of each row', () => {
+	test.each(['M2.REML', 'M4.REML', 'M6.REML', 'M7_cat.REML', 'M8csh_cat.REML', 'M8toeph_cat.REML'])(
+		'%s: is the diagonal of its subject’s covariance and the shared visit variance',
+		(key) => {
+			const { fit } = carryOut(columnsOf('btheb'), planOf('btheb', key));
+			const { design, layout } = fit.prepared;
+			const variances = marginalVariances(fit);
+			for (let s = 0; s < design.subjects.length; s++) {
+				const from = design.subjectStart[s]!;
+				const m = design.subjectStart[s + 1]! - from;
+				const v = fit.natural.covariance(occasionsOf(design, layout, s));
+				for (let i = 0; i < m; i++)
+					expectRelative(
+						variances[from + i]!,
+						fit.scale * (v[i * m + i]! + fit.natural.visitRatio),
+						1e-12
+					);
+			}
+		}
+	);
 });
 
 describe('effective sample size', () => {

@@ -1,27 +1,48 @@
-import { occasionsOf, patternKey } from '../dependence/natural.js';
 import { StatsError } from '../errors.js';
 import type { ModelFit } from '../fit/fit-model.js';
 import { invertPositive } from '../numeric/dense.js';
 import { toBasis } from '../numeric/orthonormal.js';
 
+/** By time within a class of rows: variance = level + line · s + bend · s² with s = (time − origin) / unit. */
+interface VarianceByTime {
+	level: number;
+	line: number;
+	bend: number;
+}
+
+/** The variance of one outcome at three times tells it at all: subject effects make it a parabola. */
+function varianceByTime(fit: ModelFit, visit: number, group: number): VarianceByTime {
+	const { timeOrigin, timeUnit, positionsAreVisits } = fit.prepared.layout;
+	const at = (s: number) =>
+		fit.natural.covariance({
+			time: Float64Array.of(timeOrigin + s * timeUnit),
+			position: Int32Array.of(positionsAreVisits ? visit : 0),
+			visit: Int32Array.of(visit),
+			group
+		})[0]!;
+	const [before, here, after] = [at(-1), at(0), at(1)];
+	return { level: here, line: (after - before) / 2, bend: (after + before) / 2 - here };
+}
+
 /** Variance of each row's outcome given the mean; outcome unit squared, in the order of the design's rows. */
 export function marginalVariances(fit: ModelFit): Float64Array {
 	const { natural, scale } = fit;
 	const { design, layout } = fit.prepared;
-	const shared = natural.visitRatio * scale;
+	const { time, visit, subjectStart, subjectGroup } = design;
+	const visits = Math.max(1, design.visits.length);
+	const classes: (VarianceByTime | undefined)[] = [];
 	const variances = new Float64Array(design.n);
-	const known = new Map<string, Float64Array>();
-	for (let s = 0; s < design.subjects.length; s++) {
-		const occasions = occasionsOf(design, layout, s);
-		const key = patternKey(layout, occasions);
-		let own = known.get(key);
-		if (!own) {
-			const m = occasions.time.length;
-			const v = natural.covariance(occasions);
-			own = Float64Array.from({ length: m }, (_, i) => scale * v[i * m + i]! + shared);
-			known.set(key, own);
+	for (let s = 0; s < subjectGroup.length; s++) {
+		const group = subjectGroup[s]!;
+		for (let i = subjectStart[s]!; i < subjectStart[s + 1]!; i++) {
+			const { level, line, bend } = (classes[group * visits + visit[i]!] ??= varianceByTime(
+				fit,
+				visit[i]!,
+				group
+			));
+			const at = (time[i]! - layout.timeOrigin) / layout.timeUnit;
+			variances[i] = scale * (level + at * (line + at * bend) + natural.visitRatio);
 		}
-		variances.set(own, design.subjectStart[s]!);
 	}
 	return variances;
 }
