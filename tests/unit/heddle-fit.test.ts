@@ -3,6 +3,7 @@ import { mkdtempSync, readFileSync, writeFileSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import { describe, expect, test } from 'vitest';
+import { buildModelDesign, contrasts, readPlan } from '../../src/lib/stats';
 import { testBuild } from '../../scripts/lib/test-cluster.mjs';
 import { root } from '../../scripts/lib/places.mjs';
 
@@ -30,6 +31,27 @@ function heddle(...args: string[]) {
 	);
 	return { status, stdout, stderr };
 }
+
+test('the plan that the README shows can be read, and its contrast names coefficients of its model', () => {
+	const readme = readFileSync(join(root, 'README.md'), 'utf8');
+	const plan = readPlan(JSON.parse(/```json\n([\s\S]+?)```/.exec(readme)![1]!));
+	const n = 40;
+	const by = <T>(value: (i: number) => T) => Array.from({ length: n }, (_, i) => value(i));
+	const built = buildModelDesign(
+		{
+			subject: by((i) => Math.floor(i / 4)),
+			years: by((i) => i % 4),
+			visit: by((i) => i % 4),
+			arm: by((i) => 'AB'[Math.floor(i / 4) % 2]!),
+			age: by((i) => 40 + ((Math.floor(i / 4) * 7) % 11)),
+			site: by((i) => (Math.floor(i / 4) % 3 === 0 ? 'Northmoor' : 'Tarnbeck')),
+			egfr: by((i) => 60 - (i % 4) + ((i * 7) % 5))
+		},
+		plan
+	);
+	const { name, weights } = plan.contrasts![0]!;
+	expect(contrasts.combination(built, weights, name).weights.filter(Boolean)).toEqual([1, 2]);
+});
 
 describe('npx heddle fit', () => {
 	test('prints the result as one JSON document and nothing else', () => {
