@@ -40,13 +40,15 @@ heddle restore FOLDER     the same back, into an empty installation, whole or no
 heddle verify-audit       checks the audit trail's chain; status 1 when it is broken
 heddle seal               seals the audit trail up to now
 heddle setup-link         a one-time link for the first administrator
+heddle fit --plan PLAN DATA [--table]
+                          fits the plan to a CSV file and prints the result as JSON, or as a table
 heddle boundaries --plan PLAN [--table]
                           the boundaries of a monitoring plan, and what a look says, as JSON or as a table
 heddle design --plan PLAN [--table]
                           sample size and power, by formula and by simulation, as JSON or as a table
 heddle help               this
 
-boundaries and design need no installation. The others work on the one that DATABASE_URL names (see .env.example),
+fit, boundaries and design need no installation. The others work on the one that DATABASE_URL names (see .env.example),
 else on the local one in .heddle/.`;
 
 /** A backup's folder holds keys: whoever reads it can read everything. */
@@ -120,6 +122,7 @@ const commands = {
 	seal: () => admin('seal'),
 	'setup-link': () => admin('setup-link'),
 
+	fit: (args) => engine('fit', args),
 	boundaries: (args) => engine('boundaries', args),
 	design: (args) => engine('design', args),
 
@@ -127,7 +130,7 @@ const commands = {
 };
 
 /** What needs no installation, and says nothing on standard output but its answer. */
-const alone = [commands.boundaries, commands.design];
+const alone = [commands.fit, commands.boundaries, commands.design];
 
 /** @param {string} source @param {import('../scripts/lib/backup.mjs').Manifest} manifest */
 async function restoreHere(source, manifest) {
