@@ -1,5 +1,6 @@
 #!/usr/bin/env node
 // The one command-line face of Heddle. With DATABASE_URL set it works on that installation, else on the local one.
+import { spawnSync } from 'node:child_process';
 import { existsSync } from 'node:fs';
 import { join, resolve } from 'node:path';
 import { areasOf } from '../scripts/lib/areas.mjs';
@@ -10,7 +11,7 @@ import {
 	storedIn,
 	verifiedManifest
 } from '../scripts/lib/backup.mjs';
-import { build, installDependencies } from '../scripts/lib/build.mjs';
+import { build, installDependencies, program } from '../scripts/lib/build.mjs';
 import { clusterExists } from '../scripts/lib/cluster.mjs';
 import { makeDemo } from '../scripts/lib/demo.mjs';
 import {
@@ -39,9 +40,16 @@ heddle restore FOLDER     the same back, into an empty installation, whole or no
 heddle verify-audit       checks the audit trail's chain; status 1 when it is broken
 heddle seal               seals the audit trail up to now
 heddle setup-link         a one-time link for the first administrator
+heddle fit --plan PLAN DATA [--table]
+                          fits the plan to a CSV file and prints the result as JSON, or as a table
+heddle boundaries --plan PLAN [--table]
+                          the boundaries of a monitoring plan, and what a look says, as JSON or as a table
+heddle design --plan PLAN [--table]
+                          sample size and power, by formula and by simulation, as JSON or as a table
 heddle help               this
 
-It works on the installation that DATABASE_URL names (see .env.example), else on the local one in .heddle/.`;
+fit, boundaries and design need no installation. The others work on the one that DATABASE_URL names (see .env.example),
+else on the local one in .heddle/.`;
 
 /** A backup's folder holds keys: whoever reads it can read everything. */
 const keepSafe = 'The folder holds the keys: keep it where only you can read it.';
@@ -114,8 +122,15 @@ const commands = {
 	seal: () => admin('seal'),
 	'setup-link': () => admin('setup-link'),
 
+	fit: (args) => engine('fit', args),
+	boundaries: (args) => engine('boundaries', args),
+	design: (args) => engine('design', args),
+
 	help: async () => print(usage)
 };
+
+/** What needs no installation, and says nothing on standard output but its answer. */
+const alone = [commands.fit, commands.boundaries, commands.design];
 
 /** @param {string} source @param {import('../scripts/lib/backup.mjs').Manifest} manifest */
 async function restoreHere(source, manifest) {
@@ -159,6 +174,23 @@ function admin(command) {
 		return status === 0 ? 0 : 1;
 	};
 	return withBuild(() => (hosted() ? ask(process.env) : onData(ask)));
+}
+
+/**
+ * A program of the statistics, which reads files and prints an answer.
+ * @param {string} name @param {string[]} args
+ */
+async function engine(name, args) {
+	await build({ ...localBuild, say: sayAside, web: false });
+	const { status } = spawnSync(process.execPath, [program(localBuild.buildDir, name), ...args], {
+		stdio: 'inherit'
+	});
+	return status ?? 1;
+}
+
+/** To a person only: a program that reads standard error is told of trouble and nothing else. @param {string} line */
+function sayAside(line) {
+	if (process.stderr.isTTY) process.stderr.write(`${line}\n`);
 }
 
 const hosted = () => Boolean(process.env.DATABASE_URL);
@@ -211,6 +243,10 @@ await run(async () => {
 	const command = Object.hasOwn(commands, name) ? commands[name] : undefined;
 	if (!command) throw new Trouble(`${name} is not known here.\n\n${usage}`);
 	if (command === commands.help) return command(args);
+	if (alone.includes(command)) {
+		await installDependencies(sayAside);
+		return command(args);
+	}
 	if (existsSync(join(root, '.env'))) process.loadEnvFile(join(root, '.env'));
 	await installDependencies(say);
 	return command(args);

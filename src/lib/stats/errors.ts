@@ -15,12 +15,20 @@ export const statsErrorCodes = {
 	'constant-outcome': 'every outcome is the same',
 	'perfect-fit': 'the mean reproduces every outcome exactly',
 	'no-residual-variation': 'nothing is left within subjects',
+	'not-identified': 'no data of this kind can tell two parts of the model apart',
 	'rank-deficient': 'a column of the mean is determined by others',
 	'kenward-roger-needs-reml': 'Kenward–Roger is defined for REML only',
 	'no-subject-effect': 'the model has no lasting offset',
 	'shape-mismatch': 'lengths do not agree',
 	'singular-information': 'the information on the variances is singular',
 	'out-of-range': 'a result is too large or too small to be held',
+	'bad-plan': 'the plan is not one that can be read or carried out',
+	'unknown-column': 'the data have no column of a name the plan gives',
+	'unknown-coefficient': 'the model has no coefficient of a name the plan gives',
+	'missing-subject': 'a row does not say whose it is',
+	'not-positive': 'an outcome on a log scale is zero or negative',
+	'repeated-occasion': 'a subject has two rows where the model allows one',
+	'not-estimable': 'a contrast asks for something the data do not determine',
 	stopped: 'the caller asked to stop'
 } as const;
 
