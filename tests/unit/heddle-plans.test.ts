@@ -95,7 +95,10 @@ describe('npx heddle boundaries', () => {
 
 	test.each([
 		[['boundaries'], /^Name the plan\./],
-		[['boundaries', '--plan', 'absent.json'], /^The plan absent\.json cannot be read\.$/],
+		[
+			['boundaries', '--plan', 'absent.json'],
+			/^The plan absent\.json cannot be read: there is no such file\.$/
+		],
 		[['boundaries', '--plan', write('bad.json', '{"alpha": ')], /is not JSON/],
 		[
 			['boundaries', '--plan', write('odd.json', { alpha: 0.05 })],

@@ -1,8 +1,16 @@
-import { summaryMeasures, type AnalyseTrial, type Question, type SimulationPlan } from '$lib/stats';
+import {
+	mixedModel,
+	summaryMeasures,
+	type AnalyseTrial,
+	type Question,
+	type SimulationPlan
+} from '$lib/stats';
 
 /** The analysis that a simulation plan names. */
 export function analysisOf(name: SimulationPlan['analysis'], question: Question): AnalyseTrial {
 	switch (name) {
+		case 'mixed-model':
+			return mixedModel(question);
 		case 'summary-measures':
 			return summaryMeasures(question);
 	}

@@ -1,5 +1,6 @@
-import { readFileSync } from 'node:fs';
 import { StatsError } from '$lib/stats';
+import { BadInput } from './bad-input';
+import { readJsonFile } from './files';
 
 /** What a program of the statistics says: `output` for standard output, `complaint` for standard error. */
 export interface Said {
@@ -7,9 +8,6 @@ export interface Said {
 	output: string;
 	complaint: string;
 }
-
-/** A complaint of one sentence. */
-class BadInput extends Error {}
 
 /** The arguments of a program that takes a plan and nothing else. */
 function planArguments(name: string, args: readonly string[]): { path: string; table: boolean } {
@@ -26,21 +24,6 @@ function planArguments(name: string, args: readonly string[]): { path: string; t
 	return { path, table };
 }
 
-function jsonIn(path: string): unknown {
-	let text: string;
-	try {
-		text = readFileSync(path, 'utf8');
-	} catch {
-		throw new BadInput(`The plan ${path} cannot be read.`);
-	}
-	try {
-		return JSON.parse(text.replace(/^\uFEFF/, ''));
-	} catch (error) {
-		const why = (error as Error).message.replace(/\s+/g, ' ');
-		throw new BadInput(`The plan ${path} is not JSON: ${why}.`);
-	}
-}
-
 /**
  * Runs a program that turns a plan into a result: JSON, or a table when asked for one.
  *
@@ -54,7 +37,7 @@ export async function answerPlan<Result>(
 ): Promise<Said> {
 	try {
 		const { path, table } = planArguments(name, args);
-		const result = await answer(jsonIn(path));
+		const result = await answer(readJsonFile(path, 'plan'));
 		const output = table ? asTable(result) : JSON.stringify(result, null, 2);
 		return { status: 0, output: `${output}\n`, complaint: '' };
 	} catch (error) {

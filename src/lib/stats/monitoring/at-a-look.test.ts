@@ -19,6 +19,7 @@ import {
 } from './conditional-power.js';
 import { monitor } from './monitor.js';
 import {
+	repeatedEffectInterval,
 	repeatedInterval,
 	stagewiseAnalysis,
 	stagewiseProbability,
@@ -129,6 +130,21 @@ test('repeated interval of the reference, and none where nothing can be reached'
 	const found = repeatedInterval(expected.z, fraction, efficacyZ)!;
 	found.forEach((limit, i) => expectWithin(limit, expected.drift_repeated_ci![i]!, 1e-6));
 	expect(repeatedInterval(1, 0.1, null)).toBeNull();
+});
+
+test('a contrast’s repeated interval leaves out 0 exactly when its t reaches the boundary', () => {
+	const { nominalPOneSided, efficacyZ } = designOf('ld_obf_k5_two_sided').looks[2]!;
+	for (const df of [7, 60, Infinity])
+		for (const t of [2, 2.6, 2.7, 3, 4, -4]) {
+			const [lower, upper] = repeatedEffectInterval(
+				{ estimate: t * 0.3, se: 0.3, df },
+				nominalPOneSided
+			)!;
+			const reached = Math.abs(normalEquivalent({ t, df }).z) >= efficacyZ!;
+			expect(lower > 0 || upper < 0, `t ${t} on ${df}`).toBe(reached);
+		}
+	expect(repeatedEffectInterval({ estimate: 1, se: 1, df: 5 }, 0)).toBeNull();
+	expect(() => repeatedEffectInterval({ estimate: 1, se: 0, df: 5 }, 0.01)).toThrow(/positive/);
 });
 
 test('a trial stopped exactly on its last boundary has p = α; one at its first look the plain p', () => {

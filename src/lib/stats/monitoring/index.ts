@@ -23,6 +23,7 @@ export {
 } from './running.js';
 export { spentBy } from './spending.js';
 export {
+	repeatedEffectInterval,
 	repeatedInterval,
 	stagewiseAnalysis,
 	withOverrun,

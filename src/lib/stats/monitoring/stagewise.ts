@@ -1,4 +1,5 @@
 import { StatsError } from '../errors.js';
+import { normalUpperQuantile, studentUpperQuantile } from '../numeric/distribution.js';
 import { monotoneRoot } from '../numeric/root.js';
 import { probabilityOfCrossing } from './crossing.js';
 import { MOST_Z } from './conditional-power.js';
@@ -112,6 +113,30 @@ export function repeatedInterval(
 	if (efficacyZ === null) return null;
 	const root = Math.sqrt(fraction);
 	return [(z - efficacyZ) / root, (z + efficacyZ) / root];
+}
+
+/**
+ * The repeated confidence interval of the tested contrast itself, in its own unit, at a look of that nominal level.
+ *
+ * Estimate ± the t that leaves the nominal level above it × standard error: it excludes 0 exactly when the model's t
+ * reaches the look's boundary. Null where the look tests nothing.
+ * @param df of the contrast; Infinity for a normal statistic
+ */
+export function repeatedEffectInterval(
+	{ estimate, se, df }: { estimate: number; se: number; df: number },
+	nominalPOneSided: number
+): [number, number] | null {
+	if (!Number.isFinite(estimate) || !(se > 0) || !Number.isFinite(se) || !(df > 0))
+		throw new StatsError(
+			'not-finite',
+			`A finite estimate, a positive standard error and df are needed, not ${estimate}, ${se} and ${df}.`
+		);
+	if (!(nominalPOneSided > 0)) return null;
+	const quantile =
+		df === Infinity
+			? normalUpperQuantile(nominalPOneSided)
+			: studentUpperQuantile(nominalPOneSided, df);
+	return [estimate - quantile * se, estimate + quantile * se];
 }
 
 /**

@@ -74,7 +74,8 @@ export function descend(
 	let x: Float64Array = start.slice();
 	let { value, slope } = first;
 	let given = options.inverse !== undefined;
-	let b: Float64Array = options.inverse?.slice() ?? unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
+	let b: Float64Array =
+		options.inverse?.slice() ?? unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
 	let restarted = false;
 	for (;;) {
 		options.beforeStep?.(evaluations);

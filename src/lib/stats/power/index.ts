@@ -1,4 +1,5 @@
 /** The public face of planning a study: sample size and power, by formula and by simulation. */
+export { mixedModel } from './mixed-model.js';
 export { planStudy, simulatedStudy, type DesignResult } from './plan-study.js';
 export { readDesignPlan, type DesignPlan, type SimulationPlan } from './read-plan.js';
 export { powerOf, sampleSize, type SampleSize, type TestPlan } from './sample-size.js';

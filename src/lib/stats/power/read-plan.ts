@@ -12,12 +12,14 @@ import { checkQuestion } from './check.js';
 import type { TestPlan } from './sample-size.js';
 import type { Question, VisitDesign } from './types.js';
 
+const analyses = ['mixed-model', 'summary-measures'] as const;
+
 export interface SimulationPlan {
 	replicates: number;
 	seed: number;
 	/** Null: as many as the machine has processors. Plays no part in the result. */
 	workers: number | null;
-	analysis: 'summary-measures';
+	analysis: (typeof analyses)[number];
 	confidence: number;
 }
 
@@ -209,8 +211,8 @@ function readSimulation(value: unknown): SimulationPlan {
 		workers: optional(fields.workers, null, (v) =>
 			numberIn(v, 'simulation.workers', { from: 1, to: 64, whole: true })
 		),
-		analysis: optional(fields.analysis, 'summary-measures', (v) =>
-			oneOf(v, 'simulation.analysis', ['summary-measures'] as const)
+		analysis: optional(fields.analysis, 'mixed-model', (v) =>
+			oneOf(v, 'simulation.analysis', analyses)
 		),
 		confidence: optional(fields.confidence, 0.95, (v) =>
 			numberIn(v, 'simulation.confidence', { above: 0, below: 1 })
