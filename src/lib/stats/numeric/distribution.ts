@@ -1,8 +1,13 @@
+import jstat from 'jstat';
 import { incompleteBeta } from './incomplete-beta.js';
 import { incompleteGamma } from './incomplete-gamma.js';
 import { halfDeviance, logGamma, stirlingRemainder } from './log-gamma.js';
 import { quantileFromTails } from './quantile.js';
 import { normalUpperQuantile } from './distribution-normal.js';
+
+const { chisquare, studentt } = jstat.jStat ?? jstat;
+/** Where jstat's quantiles have their seven or eight digits: a start that leaves one or two steps to make. */
+const central = (tail: number, df: number) => tail > 1e-6 && df >= 1 && df <= 1e5;
 
 export {
 	normalAbove,
@@ -46,13 +51,13 @@ export function studentQuantile(confidence: number, df: number): number {
 /**
  * The t above which an area `tail` of Student's distribution lies, 0 < tail < 1.
  *
- * jstat's `studentt.inv` is good to about seven digits and fails in the far tail; Newton's steps on the
- * logarithm of the exact tail are not.
+ * jstat's `studentt.inv` is good to about seven digits and fails in the far tail: where it is good it gives the start,
+ * and Newton's steps on the logarithm of the exact tail bring the other digits.
  */
 export function studentUpperQuantile(tail: number, df: number): number {
 	if (tail === 0.5) return 0;
 	if (tail > 0.5) return -studentUpperQuantile(1 - tail, df);
-	// Two starts that lie on either side for heavy and light tails: the normal's, and the tail's power law.
+	// Elsewhere two starts that lie on either side for heavy and light tails: the normal's, and the tail's power law.
 	const power = Math.exp(
 		(-Math.log(tail * df) +
 			logGamma((df + 1) / 2) -
@@ -65,7 +70,11 @@ export function studentUpperQuantile(tail: number, df: number): number {
 		above: (t) => studentTwoSidedP(t, df) / 2,
 		density: (t) => studentDensity(t, df),
 		tail,
-		start: df < 3 ? power : normalUpperQuantile(tail) * (1 + 1 / df)
+		start: central(tail, df)
+			? studentt.inv(1 - tail, df)
+			: df < 3
+				? power
+				: normalUpperQuantile(tail) * (1 + 1 / df)
 	});
 }
 
@@ -89,7 +98,7 @@ function chiSquareDensity(x: number, df: number): number {
 /**
  * The value below which `probability` of the chi-squared distribution lies; unitless.
  *
- * jstat's `chisquare.inv` stops at eight or nine digits and is 0 for small probabilities on few df.
+ * jstat's `chisquare.inv` stops at eight or nine digits and is 0 for small probabilities on few df: it gives a start.
  */
 export function chiSquareQuantile(probability: number, df: number): number {
 	return probability > 0.5
@@ -104,7 +113,9 @@ export function chiSquareUpperQuantile(tail: number, df: number): number {
 		above: (x) => chiSquareAreas(x, df).above,
 		density: (x) => chiSquareDensity(x, df),
 		tail,
-		start: wilsonHilferty(normalUpperQuantile(tail), df)
+		start: central(tail, df)
+			? chisquare.inv(1 - tail, df)
+			: wilsonHilferty(normalUpperQuantile(tail), df)
 	});
 }
 

@@ -1,8 +1,6 @@
 /** The few functions of jstat used here; the package brings no types of its own. */
 declare module 'jstat' {
 	interface JStat {
-		gammaln(x: number): number;
-		normal: { inv(p: number, mean: number, sd: number): number };
 		chisquare: { inv(p: number, df: number): number };
 		studentt: { inv(p: number, df: number): number };
 	}
