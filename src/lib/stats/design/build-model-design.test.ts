@@ -406,7 +406,28 @@ describe('refusals', () => {
 		expect((thrown as StatsError).code).toBe(code);
 	});
 
+	test.each(['toeplitz', 'unstructured', 'serial-with-noise'] as const)(
+		'two rows at one visit are refused with %s errors along visits',
+		(structure) => {
+			const errors = { structure, along: 'visit', varianceBy: 'none' } as const;
+			expect(() => build({ subjectEffects: 'none', errors }, {}, set('visit', 1, 'mid'))).toThrow(
+				new RegExp(`“a” has two outcomes at the visit “mid”.*${structure} errors allow one`)
+			);
+		}
+	);
+
+	test('a column used for two things is counted as missing once', () => {
+		const data = set('when', 1, null);
+		expect(build({ visit: 'when' }, {}, data).dropped).toEqual([
+			{ reason: 'outcome', variable: 'y', rows: 1 },
+			{ reason: 'value', variable: 'when', rows: 1 },
+			{ reason: 'value', variable: 'arm', rows: 1 }
+		]);
+	});
+
 	test('two rows at one time are fine where the errors allow them', () => {
+		const errors = { structure: 'serial-with-noise', along: 'time', varianceBy: 'none' } as const;
+		expect(build({ errors }, {}, set('when', 1, 2)).counts.observations).toBe(12);
 		expect(build({}, {}, set('when', 1, 2)).counts.observations).toBe(12);
 	});
 });
