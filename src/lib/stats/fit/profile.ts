@@ -83,7 +83,7 @@ export function profileOf(
 			}
 	}
 	const xx = block(mean, c, 0, p, 0, p);
-	if (choleskyInPlace(xx, p) >= 0) return null;
+	if (choleskyInPlace(xx, p, 1e-12) >= 0) return null;
 	const logOfX = logDeterminantOf(xx, p);
 	const covariance = inverseFromFactor(xx, p);
 	const contrast = new Float64Array(c);
