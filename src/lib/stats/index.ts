@@ -15,6 +15,12 @@ export * as contrasts from './design/contrasts.js';
 export { readPlan } from './read-plan.js';
 export { checkPlan } from './plan-rules.js';
 export type * from './plan.js';
+export {
+	nextValue,
+	type NextValue,
+	type SubjectHistory,
+	type SubjectOccasion
+} from './prediction/next-value.js';
 export { occasionsOf, type Due, type Occasions } from './missing/occasions.js';
 export { missingPatterns, type MissingPattern } from './missing/patterns.js';
 export { dropoutByGroup, type DropoutByGroup } from './missing/dropout.js';
