@@ -258,7 +258,7 @@ export function refuseWithoutVariation({ y, residual, design }: PreparedModel): 
 			'An outcome or a column of the mean is not a finite number.'
 		);
 	}
-	if (spread === 0 || spread <= n * (Math.abs(mean) * Number.EPSILON) ** 2) {
+	if (y.every((v) => v === y[0])) {
 		throw new StatsError(
 			'constant-outcome',
 			'Every outcome is the same, so there is no variation to explain.'
