@@ -165,6 +165,16 @@ describe('the columns of the mean', () => {
 		expect(alias).toEqual(['time after -1', 'time after -1 × group 1']);
 	});
 
+	test('groups are in the order given, when one is', () => {
+		const { design } = buildModelDesign(study, planWith(), { groupLevels: ['1', '0'] });
+		expect(design.groups).toEqual(['1', '0']);
+		expect(design.names).toContain('time × group 0');
+		expect([...design.subjectGroup]).toEqual([0, 1, 0, 1, 0]);
+		expect(() => buildModelDesign(study, planWith(), { groupLevels: ['1', '2'] })).toThrow(
+			/“arm” in row 2 is “0”, which is not among the levels of the group/
+		);
+	});
+
 	test('numbers as levels are sorted as numbers', () => {
 		const dose = Array.from(study.who!, (_, i) => [10, 9, 2][i % 3]!);
 		const built = build(
