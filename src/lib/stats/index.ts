@@ -2,7 +2,7 @@
 export { ENGINE_VERSION } from './engine.js';
 export type { Column, Columns } from './design/columns.js';
 export { StatsError, statsErrorCodes, type StatsErrorCode } from './errors.js';
-export { analyse, carryOut, type Analysis } from './analysis/analyse.js';
+export { analyse, carryOut, type Analysis, type AnalysisOptions } from './analysis/analyse.js';
 export type {
 	AnalysedContrast,
 	AnalysisResult,

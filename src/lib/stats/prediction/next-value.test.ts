@@ -51,7 +51,7 @@ const analysisOf = (change: object = {}) =>
 const level = analysisOf();
 const slopes = analysisOf({ subjectEffects: 'level-and-slope' });
 const part = (analysis: typeof level, name: string) =>
-	analysis.result.varianceComponents.find((c) => c.name === name)!.estimate;
+	analysis.result.varianceComponents.find((c) => c.name === name)!.estimate!;
 
 const past = [
 	{ time: 0, covariates: { bmi: 20 }, outcome: 74 },
