@@ -42,10 +42,14 @@ heddle seal               seals the audit trail up to now
 heddle setup-link         a one-time link for the first administrator
 heddle fit --plan PLAN DATA [--table] [--limits]
                           fits the plan to a CSV file and prints the result as JSON, or as a table
+heddle boundaries --plan PLAN [--table]
+                          the boundaries of a monitoring plan, and what a look says, as JSON or as a table
+heddle design --plan PLAN [--table]
+                          sample size and power, by formula and by simulation, as JSON or as a table
 heddle help               this
 
-fit needs no installation. The others work on the one that DATABASE_URL names (see .env.example), else on the local
-one in .heddle/.`;
+fit, boundaries and design need no installation. The others work on the one that DATABASE_URL names (see .env.example),
+else on the local one in .heddle/.`;
 
 /** A backup's folder holds keys: whoever reads it can read everything. */
 const keepSafe = 'The folder holds the keys: keep it where only you can read it.';
@@ -119,12 +123,14 @@ const commands = {
 	'setup-link': () => admin('setup-link'),
 
 	fit: (args) => engine('fit', args),
+	boundaries: (args) => engine('boundaries', args),
+	design: (args) => engine('design', args),
 
 	help: async () => print(usage)
 };
 
 /** What needs no installation, and says nothing on standard output but its answer. */
-const alone = [commands.fit];
+const alone = [commands.fit, commands.boundaries, commands.design];
 
 /** @param {string} source @param {import('../scripts/lib/backup.mjs').Manifest} manifest */
 async function restoreHere(source, manifest) {

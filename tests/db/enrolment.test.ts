@@ -238,7 +238,7 @@ describe('enrolment', () => {
 		expect(numbers).toEqual(Array.from({ length: 6 }, (_, at) => running(first.number) + 1 + at));
 	});
 
-	test('R-29: is not possible before a protocol version is published', async () => {
+	test('is not possible before a protocol version is published', async () => {
 		const { createStudy } = await import('../../src/lib/domain/study/study.commands.server');
 		const { studyId } = await createStudy(scene.manager, {
 			template: 'two-arm-trial',

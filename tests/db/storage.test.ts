@@ -14,6 +14,7 @@ import { join } from 'node:path';
 import S3rver from 's3rver';
 import { build as bundle } from 'vite';
 import { afterAll, beforeAll, describe, expect, test } from 'vitest';
+import { bucketArea } from '../../scripts/lib/areas.mjs';
 import { root } from '../../scripts/lib/places.mjs';
 import { anyFreePort } from '../../scripts/lib/ports.mjs';
 import { seal, unseal } from '../../src/lib/server/storage/closed';
@@ -34,7 +35,7 @@ beforeAll(async () => {
 		address: '127.0.0.1',
 		silent: true,
 		directory: join(place, 'objects'),
-		configureBuckets: [{ name: bucket, configs: [] }]
+		configureBuckets: [bucket, 'heddle-second'].map((name) => ({ name, configs: [] }))
 	});
 	await objects.run();
 	endpoint = `http://127.0.0.1:${port}`;
@@ -185,3 +186,32 @@ test('a folder whose writer is killed at any moment holds whole files only', asy
 		await expect(folderStorage(folder).get(`reports/${name}`)).rejects.toThrow('storage key');
 	}
 }, 120_000);
+
+test('a backup takes every file of a bucket into a folder and puts them back into an empty one', async () => {
+	const area = (name: string) =>
+		bucketArea('files', {
+			S3_ENDPOINT: endpoint,
+			S3_BUCKET: name,
+			S3_ACCESS_KEY: 'S3RVER',
+			S3_SECRET_KEY: 'S3RVER'
+		});
+	const bytes = randomBytes(3_000_000);
+	await object().put('imports/one/study.csv', bytes, 'text/csv');
+	await object().put('reports/two.pdf', Buffer.from('%PDF'), 'application/pdf');
+	const folder = join(place, 'copy');
+	expect(await area(bucket).isEmpty()).toBe(false);
+	await area(bucket).copyTo(folder);
+	expect(readFileSync(join(folder, 'imports/one/study.csv')).equals(bytes)).toBe(true);
+
+	expect(await area('heddle-second').isEmpty()).toBe(true);
+	await area('heddle-second').fillFrom(folder);
+	const second = s3Storage({
+		endpoint,
+		bucket: 'heddle-second',
+		region: 'us-east-1',
+		accessKey: 'S3RVER',
+		secretKey: 'S3RVER'
+	});
+	expect((await second.get('imports/one/study.csv')).equals(bytes)).toBe(true);
+	expect((await second.get('reports/two.pdf')).toString()).toBe('%PDF');
+});

@@ -173,16 +173,21 @@ test('a coordinator screens, takes consent, enrols and randomises, mostly by key
 	await page.getByLabel('A copy of what was signed was given').check();
 	await page.getByRole('button', { name: 'Record the consent' }).click();
 	await expect(page.getByText('This version was not approved yet.')).toBeVisible();
+	for (const group of await page.getByRole('group').filter({ hasText: 'inclusion:' }).all())
+		await group.getByLabel('yes').check();
+	for (const group of await page.getByRole('group').filter({ hasText: 'exclusion:' }).all())
+		await group.getByLabel('no').check();
+	await page.getByLabel('Why', { exact: true }).fill('Not decided');
 	const today = await page.getByLabel('Signed on').getAttribute('max');
 	await page.getByLabel('Signed on').fill(today ?? '');
 	await page.getByLabel(/^at \(/).fill('00:00');
 	await page.getByRole('button', { name: 'Record the consent' }).click();
 	await expect(page.getByText('explained by Person')).toBeVisible();
 
-	for (const group of await page.getByRole('group').filter({ hasText: 'inclusion:' }).all())
-		await group.getByLabel('yes').check();
-	for (const group of await page.getByRole('group').filter({ hasText: 'exclusion:' }).all())
-		await group.getByLabel('no').check();
+	// What was filled in elsewhere on the page outlasts the sending of another form.
+	await expect(page.getByRole('radio', { checked: true })).toHaveCount(5);
+	await expect(page.getByLabel('Why', { exact: true })).toHaveValue('Not decided');
+	await page.getByLabel('Why', { exact: true }).fill('');
 	await page.getByRole('button', { name: 'Keep the answers' }).click();
 	await expect(page.getByText('The answers are kept.')).toBeVisible();
 	await expect(page.getByText('met', { exact: true })).toHaveCount(5);

@@ -130,11 +130,12 @@ async function letTheJobExpire(queue: string): Promise<void> {
 	await boss.stop({ graceful: false, wait: true });
 }
 
-test('a worker asked to stop finishes the mail in hand and takes no further one', async () => {
-	const ids = await mails(4, 'asked');
+test('a worker asked to stop finishes the mails in hand and takes no further one', async () => {
+	// One worker has four mails in hand at a time.
+	const ids = await mails(7, 'asked');
 	mail.hold = true;
 	const first = await worker();
-	await until(() => mail.held.length === 1, 'a mail to be under way');
+	await until(() => mail.held.length === 4, 'the mails to be under way');
 	first.kill('SIGTERM');
 	let over = false;
 	void first.ended.then(() => (over = true));
@@ -143,16 +144,16 @@ test('a worker asked to stop finishes the mail in hand and takes no further one'
 	mail.hold = false;
 	mail.held.splice(0).forEach((answer) => answer());
 	expect(await first.ended).toBe(0);
-	expect(await statuses(ids)).toEqual({ sent: 1, waiting: 3 });
+	expect(await statuses(ids)).toEqual({ sent: 4, waiting: 3 });
 	const [jobs] = await db.sql(
 		`select state, count(*)::int as n from queue.job where name = 'mail' group by 1 order by 1`
 	);
 	expect(jobs).toEqual([
 		{ state: 'created', n: 3 },
-		{ state: 'completed', n: 1 }
+		{ state: 'completed', n: 4 }
 	]);
 	const second = await worker();
-	await until(async () => (await statuses(ids)).sent === 4, 'the others to go out');
+	await until(async () => (await statuses(ids)).sent === 7, 'the others to go out');
 	second.kill('SIGTERM');
 	expect(await second.ended).toBe(0);
 	expect([...mail.taken].sort()).toEqual(await messageIds(ids));

@@ -45,7 +45,8 @@ export function names(input: LookReportInput): Names {
 		if (name === undefined) throw new Error('a group of the result is not among its levels');
 		return name;
 	};
-	const at = (t: number) => `${time.name} ${chosen(t)} ${time.unit}`.trim();
+	// A last observed time has as many digits as a division gives; four tell which visit it was.
+	const at = (t: number) => `${time.name} ${chosen(Number(t.toPrecision(4)))} ${time.unit}`.trim();
 	const perTime = `${measure.unit} per ${time.one}`.trim();
 	const reference = result.model.groupLevels[0];
 	const ofReference = reference === undefined ? '' : `, ${group(reference)}`;

@@ -345,6 +345,14 @@ const mailWords: Record<string, string> = {
 	'visit-cancelled': 'A visit was cancelled'
 };
 
+/** Written when it was caused; the line says when it left, where that was another day. */
+function mailState(status: string, caused: Date, sent: Date | null, zone: string): string {
+	if (status !== 'sent' || !sent) return `E-mail: ${status}.`;
+	return dateInZone(sent, zone) === dateInZone(caused, zone)
+		? 'Sent by e-mail.'
+		: `Sent by e-mail on ${dayWords(dateInZone(sent, zone))}.`;
+}
+
 async function alongTheWay(
 	reader: Reader,
 	studyId: string,
@@ -426,10 +434,10 @@ async function alongTheWay(
 		items.push({
 			id: each.id,
 			kind: 'mail',
-			when: instantText(each.sent_at ?? each.created_at, site.zone),
-			key: instantKey(each.sent_at ?? each.created_at, site.zone),
+			when: instantText(each.created_at, site.zone),
+			key: instantKey(each.created_at, site.zone),
 			title: mailWords[each.kind] ?? each.kind,
-			lines: [each.status === 'sent' ? 'Sent by e-mail.' : `E-mail: ${each.status}.`]
+			lines: [mailState(each.status, each.created_at, each.sent_at, site.zone)]
 		});
 	return items;
 }

@@ -1,3 +1,6 @@
+import { redirect } from '@sveltejs/kit';
+import { findCuts } from '$lib/domain/cut/cut.reads.server';
+import { findLooks } from '$lib/domain/look/look.reads.server';
 import {
 	countScreenings,
 	getSiteCounts,
@@ -22,17 +25,22 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 	const roles = rolesIn(actor, studyId);
 	const has = (...wanted: Parameters<typeof roles.has>[0][]) =>
 		wanted.some((role) => roles.has(role));
+	// A board member comes twice a year, to one place.
+	if (roles.size === 1 && roles.has('board_member')) redirect(303, `/studies/${studyId}/board`);
 	return serve(async () => {
 		const atSites = has('coordinator', 'nurse', 'investigator');
 		const coordinator = roles.has('coordinator');
-		const [work, windows, counts, screenings, state] = await Promise.all([
+		const analyst = has('statistician', 'independent_statistician');
+		const [work, windows, counts, screenings, state, cuts, looks] = await Promise.all([
 			atSites ? getWorkAtSites(actor, studyId) : null,
 			coordinator
 				? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
 				: null,
 			has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
 			has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
-			roles.has('data_manager') ? getStudyState(actor, studyId) : null
+			roles.has('data_manager') ? getStudyState(actor, studyId) : null,
+			analyst ? findCuts(actor, studyId) : null,
+			analyst ? findLooks(actor, studyId) : null
 		]);
 		return {
 			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
@@ -46,7 +54,13 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 				chase: coordinator,
 				measure: may(actor.grants, 'visit.measure', { studyId })
 			},
-			pointers: pointersFor(roles, studyId, state, screenings)
+			pointers: pointersFor(
+				roles,
+				studyId,
+				state,
+				screenings,
+				cuts && looks ? { cuts, looks } : null
+			)
 		};
 	});
 };

@@ -1,5 +1,8 @@
+import type { CutHead } from '$lib/domain/cut/cut.reads.server';
+import type { ClosedLook, OpenLook } from '$lib/domain/look/look.reads.server';
 import type { Role } from '$lib/domain/person/roles';
 import type { StudyState } from '$lib/domain/visit/today.reads.server';
+import { instantText } from '$lib/time/zones';
 
 export interface Pointer {
 	href: string;
@@ -7,12 +10,19 @@ export interface Pointer {
 	text: string;
 }
 
+/** What a statistician has to go on: cuts and looks, the newest first. */
+export interface Analyses {
+	cuts: CutHead[];
+	looks: (OpenLook | ClosedLook)[];
+}
+
 /** Where each role's work is, when it is not on this page itself. */
 export function pointersFor(
 	roles: ReadonlySet<Role>,
 	studyId: string,
 	state: StudyState | null,
-	screenings: number | null
+	screenings: number | null,
+	analyses: Analyses | null
 ): Pointer[] {
 	const to = (path: string, label: string, text: string): Pointer => ({
 		href: `/studies/${studyId}${path}`,
@@ -37,19 +47,40 @@ export function pointersFor(
 		);
 	if (roles.has('auditor'))
 		found.push(to('/subjects', 'Subjects', 'The record as the sites see it, to read.'));
-	if (roles.has('statistician'))
+	if (analyses) found.push(to('/cuts', 'Data cuts', cutsSoFar(analyses.cuts)));
+	if (analyses && roles.has('statistician'))
 		found.push(
-			to('/cuts', 'Data cuts', 'Freeze the data that a look is made from.'),
-			to('/looks', 'Looks', 'Choose a question and fit it to a cut, pooled over everybody.')
+			to(
+				'/looks',
+				'Looks',
+				`${looksSoFar(analyses.looks)} Choose a question and fit it to a cut, pooled over everybody.`
+			)
 		);
-	if (roles.has('independent_statistician'))
+	if (analyses && roles.has('independent_statistician'))
 		found.push(
-			to('/looks', 'Looks', 'The planned looks, by arm. Each further one is counted and printed.'),
+			to(
+				'/looks',
+				'Looks',
+				`${looksSoFar(analyses.looks)} The planned looks go by arm; each further one is counted and printed.`
+			),
 			to('/board', 'Board room', 'Reports that are made and released for the board.')
 		);
 	if (roles.has('board_member'))
 		found.push(to('/board', 'Board room', 'The reports released to you, and the recommendation.'));
 	return found;
+}
+
+function cutsSoFar([latest, ...others]: CutHead[]): string {
+	if (!latest) return 'None yet. A look is made from a frozen cut.';
+	return `${others.length + 1} so far. The latest is “${latest.label}”: ${latest.subjects} subjects, data up to ${instantText(new Date(latest.cutOffAt), 'UTC')}.`;
+}
+
+function looksSoFar(looks: Analyses['looks']): string {
+	const going = looks.filter(
+		(look) => look.open && (look.status === 'waiting' || look.status === 'running')
+	).length;
+	if (looks.length === 0) return 'None yet.';
+	return `${looks.length} so far${going > 0 ? `, ${going} of them still being fitted` : ''}.`;
 }
 
 function nextSteps(
@@ -64,7 +95,7 @@ function nextSteps(
 				'Check the schedule of activities and publish it: that opens the study.'
 			)
 		];
-	if (state.people === 0)
+	if (state.people === 0 && state.subjects === 0)
 		return [
 			to(
 				'/schedule',
