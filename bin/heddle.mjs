@@ -40,7 +40,7 @@ heddle restore FOLDER     the same back, into an empty installation, whole or no
 heddle verify-audit       checks the audit trail's chain; status 1 when it is broken
 heddle seal               seals the audit trail up to now
 heddle setup-link         a one-time link for the first administrator
-heddle fit --plan PLAN DATA [--table]
+heddle fit --plan PLAN DATA [--table] [--limits]
                           fits the plan to a CSV file and prints the result as JSON, or as a table
 heddle boundaries --plan PLAN [--table]
                           the boundaries of a monitoring plan, and what a look says, as JSON or as a table

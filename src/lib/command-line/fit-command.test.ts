@@ -153,14 +153,9 @@ test('the columns of a plan are numbers or labels by what they are for', () => {
 });
 
 test('numbers keep six digits, and columns line up', () => {
-	expect([0, 1234567.8, 12345678, 0.00001234567, -3.14159265, null].map(digits)).toEqual([
-		'0',
-		'1234570',
-		'1.235e+7',
-		'1.235e-5',
-		'-3.14159',
-		'–'
-	]);
+	expect(
+		[0, 1234567.8, 12345678, 0.00001234567, -3.14159265, null].map((value) => digits(value))
+	).toEqual(['0', '1234570', '1.235e+7', '1.235e-5', '-3.14159', '–']);
 	expect(
 		alignedRows([
 			['a', 'b'],

@@ -14,20 +14,24 @@ export interface Outcome {
 	complaint: string;
 }
 
-const usage = 'it is used as heddle fit --plan plan.json data.csv [--table]';
+const usage = 'it is used as heddle fit --plan plan.json data.csv [--table] [--limits]';
 
 function readArguments(args: string[]) {
 	try {
 		const { values, positionals } = parseArgs({
 			args,
 			allowPositionals: true,
-			options: { plan: { type: 'string' }, table: { type: 'boolean', default: false } }
+			options: {
+				plan: { type: 'string' },
+				table: { type: 'boolean', default: false },
+				limits: { type: 'boolean' }
+			}
 		});
 		if (!values.plan) throw new BadInput(`No plan is named; ${usage}.`);
 		const [data, ...others] = positionals;
 		if (data === undefined || others.length > 0)
 			throw new BadInput(`One file of data must be named; ${usage}.`);
-		return { plan: values.plan, table: values.table, data };
+		return { ...values, plan: values.plan, data };
 	} catch (error) {
 		if (error instanceof BadInput) throw error;
 		throw new BadInput(`${(error as Error).message.split('. ')[0]}; ${usage}.`);
@@ -60,7 +64,7 @@ export function fitCommand(args: string[], analysis: typeof analyse = analyse): 
 		const named = readArguments(args);
 		const plan = readPlan(readJsonFile(named.plan, 'plan'));
 		const columns = csvColumns(readText(named.data, 'file of data'), columnsOfPlan(plan));
-		const result = analysis(columns, plan);
+		const result = analysis(columns, plan, { componentLimits: named.limits });
 		return {
 			status: result.converged ? 0 : 2,
 			output: named.table ? resultTable(result) : `${JSON.stringify(result, null, '\t')}\n`,

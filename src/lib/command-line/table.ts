@@ -1,11 +1,13 @@
 import type { AnalysisResult, Tested } from '$lib/stats';
 
-/** Six significant digits; what is small or large in powers of ten. */
-export function digits(value: number | null): string {
+/** Six significant digits or as many as asked; what is small or large in powers of ten. */
+export function digits(value: number | null, significant = 6): string {
 	if (value === null) return '–';
 	if (value === 0) return '0';
 	const size = Math.abs(value);
-	return size >= 1e-4 && size < 1e7 ? String(Number(value.toPrecision(6))) : value.toExponential(3);
+	return size >= 1e-4 && size < 1e7
+		? String(Number(value.toPrecision(significant)))
+		: value.toExponential(3);
 }
 
 const probability = (p: number) =>
@@ -78,10 +80,10 @@ export function resultTable(result: AnalysisResult): string {
 			])
 		]),
 		alignedRows([
-			['log-likelihood', digits(result.logLikelihood)],
-			[`AIC (${result.parameters} parameters)`, digits(result.aic)],
-			['BIC by rows', digits(result.bic.rows)],
-			['BIC by subjects', digits(result.bic.subjects)],
+			['log-likelihood', digits(result.logLikelihood, 10)],
+			[`AIC (${result.parameters} parameters)`, digits(result.aic, 10)],
+			['BIC by rows', digits(result.bic.rows, 10)],
+			['BIC by subjects', digits(result.bic.subjects, 10)],
 			['effective sample size for the mean', digits(result.effectiveSampleSize.mean)],
 			...result.contrasts.map((c) => [
 				`effective sample size for “${c.name}”`,

@@ -2,7 +2,7 @@
 export { ENGINE_VERSION } from './engine.js';
 export type { Column, Columns } from './design/columns.js';
 export { StatsError, statsErrorCodes, type StatsErrorCode } from './errors.js';
-export { analyse, carryOut, type Analysis } from './analysis/analyse.js';
+export { analyse, carryOut, type Analysis, type AnalysisOptions } from './analysis/analyse.js';
 export type {
 	AnalysedContrast,
 	AnalysisResult,
@@ -15,6 +15,12 @@ export * as contrasts from './design/contrasts.js';
 export { readPlan } from './read-plan.js';
 export { checkPlan } from './plan-rules.js';
 export type * from './plan.js';
+export {
+	nextValue,
+	type NextValue,
+	type SubjectHistory,
+	type SubjectOccasion
+} from './prediction/next-value.js';
 export { occasionsOf, type Due, type Occasions } from './missing/occasions.js';
 export { missingPatterns, type MissingPattern } from './missing/patterns.js';
 export { dropoutByGroup, type DropoutByGroup } from './missing/dropout.js';

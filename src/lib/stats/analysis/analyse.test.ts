@@ -84,7 +84,9 @@ describe('from plan and columns to the values of the reference', () => {
 			name,
 			weights: weightsOf(names, L!)
 		}));
-		const result = analyse(columnsOf(set), planOf(set, key, { contrasts }));
+		const result = analyse(columnsOf(set), planOf(set, key, { contrasts }), {
+			componentLimits: false
+		});
 		expect(result.converged).toBe(true);
 		expect(result.coefficients.map((c) => c.name).sort()).toEqual(names.map(ourName).sort());
 		expectWithin(result.logLikelihood, expected.logLik, 1e-6);
@@ -103,7 +105,7 @@ describe('from plan and columns to the values of the reference', () => {
 			if (theirs.satterthwaite) expectRelative(ours.df, theirs.satterthwaite.df, 1e-4);
 		}
 		if (key.startsWith('M1') && expected.derived)
-			expectRelative(result.icc!.estimate, expected.derived.icc_subject!, 1e-5);
+			expectRelative(result.icc!.estimate!, expected.derived.icc_subject!, 1e-5);
 	});
 });
 
@@ -123,6 +125,19 @@ describe('a result', () => {
 
 	test('is the same bits for the same input', () => {
 		expect(JSON.stringify(analyse(data, plan))).toBe(JSON.stringify(result));
+	});
+
+	test('has limits of each part of the covariance, unless told to do without', () => {
+		for (const { name, estimate, lower, upper } of [...result.varianceComponents, result.icc!]) {
+			expect(lower!, name).toBeLessThan(estimate!);
+			expect(upper!, name).toBeGreaterThan(estimate!);
+		}
+		expect(result.warnings).toEqual([]);
+		const without = analyse(data, plan, { componentLimits: false });
+		expect(without.varianceComponents.map((c) => [c.name, c.estimate, c.lower])).toEqual(
+			result.varianceComponents.map((c) => [c.name, c.estimate, null])
+		);
+		expect(without.warnings[0]).toMatch(/^Limits of the 2 parts/);
 	});
 
 	test('says what was left out', () => {
@@ -270,7 +285,7 @@ describe('effective sample size', () => {
 		let expected = 0;
 		for (let s = 0; s + 1 < subjectStart.length; s++) {
 			const m = subjectStart[s + 1]! - subjectStart[s]!;
-			expected += m / (1 + (m - 1) * result.icc!.estimate);
+			expected += m / (1 + (m - 1) * result.icc!.estimate!);
 		}
 		expectRelative(result.effectiveSampleSize.mean, expected, 1e-10);
 		expect(expected).toBeGreaterThan(built.counts.subjects);
@@ -294,7 +309,7 @@ describe('effective sample size', () => {
 		// In a balanced design under a level, a slope within subjects gains 1 / (1 − ICC).
 		expectRelative(
 			result.contrasts[0]!.effectiveSampleSize,
-			108 / (1 - result.icc!.estimate),
+			108 / (1 - result.icc!.estimate!),
 			1e-9
 		);
 	});
@@ -303,7 +318,8 @@ describe('effective sample size', () => {
 		const { result, built } = carryOut(columnsOf('penicillin'), planOf('penicillin', 'M5.REML'));
 		expect(result.effectiveSampleSize.mean).toBeLessThan(built.counts.subjects);
 		// A balanced two-way layout: the variance of the grand mean is level / I + visit / J + residual / IJ.
-		const part = (name: string) => result.varianceComponents.find((c) => c.name === name)!.estimate;
+		const part = (name: string) =>
+			result.varianceComponents.find((c) => c.name === name)!.estimate!;
 		const [level, visit, residual] = ['subject level', 'visit', 'residual'].map(part) as [
 			number,
 			number,

@@ -7,10 +7,15 @@ import { fitModel, type ModelFit } from '../fit/fit-model.js';
 import { precisionOf, type Precision } from '../inference/precision.js';
 import type { AnalysisPlan } from '../plan.js';
 import type { Supervision } from '../types.js';
-import { componentsOf, iccOf } from './components.js';
+import { componentsOf } from './components.js';
 import { effectiveSizes } from './effective-sizes.js';
 import type { AnalysisResult, Ratio, Tested } from './result.js';
 import { warningsOf } from './warnings.js';
+
+export interface AnalysisOptions extends Supervision {
+	/** Whether to look for limits of the parts of the covariance; when they are at most ten unless said otherwise. */
+	componentLimits?: boolean | undefined;
+}
 
 /** An analysis with what later questions go on from; only `result` survives JSON. */
 export interface Analysis {
@@ -71,7 +76,7 @@ function within(supervision: Supervision, from: number, to: number): Supervision
 export function carryOut(
 	columns: Columns,
 	plan: AnalysisPlan,
-	supervision: Supervision = {}
+	supervision: AnalysisOptions = {}
 ): Analysis {
 	const checkpoint = (fraction: number) => {
 		if (supervision.shouldStop?.()) throw new StatsError('stopped', 'The analysis was stopped.');
@@ -94,7 +99,14 @@ export function carryOut(
 	checkpoint(0.6);
 	const precision = precisionOf(fit, plan.degreesOfFreedom);
 	const sizes = effectiveSizes(fit);
-	checkpoint(0.9);
+	checkpoint(0.7);
+	const { parts, icc, limits } = componentsOf(
+		fit,
+		plan.confidence ?? 0.95,
+		supervision.componentLimits,
+		within(supervision, 0.7, 1)
+	);
+	checkpoint(1);
 	// A restricted likelihood depends on the scaling of X, and people compare it on the data's own.
 	const shift = ownScale && plan.method === 'reml' ? ownScale.logDeterminant : 0;
 	const { criteria } = fit;
@@ -110,8 +122,8 @@ export function carryOut(
 			weights: contrast.weights,
 			effectiveSampleSize: sizes.of(contrast.inside)
 		})),
-		varianceComponents: componentsOf(fit),
-		icc: iccOf(fit),
+		varianceComponents: parts,
+		icc,
 		effectiveSampleSize: { mean: sizes.mean },
 		logLikelihood: fit.logLikelihood + shift,
 		parameters: criteria.parameters,
@@ -128,9 +140,8 @@ export function carryOut(
 		boundary: fit.boundary,
 		converged: fit.converged,
 		gradientNorm: fit.gradient,
-		warnings: warningsOf(built, fit)
+		warnings: warningsOf(built, fit, limits)
 	};
-	checkpoint(1);
 	return { built, fit, precision, result };
 }
 
@@ -138,7 +149,7 @@ export function carryOut(
 export function analyse(
 	columns: Columns,
 	plan: AnalysisPlan,
-	supervision: Supervision = {}
+	options: AnalysisOptions = {}
 ): AnalysisResult {
-	return carryOut(columns, plan, supervision).result;
+	return carryOut(columns, plan, options).result;
 }

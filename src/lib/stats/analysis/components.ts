@@ -1,35 +1,44 @@
 import type { ModelFit } from '../fit/fit-model.js';
+import { componentIntervals } from '../inference/component-intervals.js';
+import { componentsOf as withoutLimits } from '../inference/components.js';
+import type { Supervision } from '../types.js';
 import type { Component } from './result.js';
 
-const plain = (name: string, estimate: number): Component => ({
-	name,
-	estimate,
-	lower: null,
-	upper: null
-});
+/** Up to as many parameters of the covariance, limits take a second or so; the time grows with the cube of their number. */
+const FEW = 10;
 
-/** The parameters of the covariance as they are read: the range in the time unit instead of φ = exp(−1/range). */
-export function componentsOf(fit: ModelFit): Component[] {
-	const { layout } = fit.prepared;
-	return fit.parameters.map(({ name, value }) =>
-		name === 'range'
-			? plain(name, layout.gapUnit * Math.exp(fit.working[layout.range]!))
-			: plain(name, value)
-	);
+export interface AnalysedComponents {
+	parts: Component[];
+	/** Null without one. */
+	icc: Component | null;
+	/** Whether limits were looked for. */
+	limits: boolean;
 }
 
-/** What makes up the variance of one outcome at time 0, beside the subject's level. */
-const besides = ['visit', 'serial', 'noise', 'residual'];
-
 /**
- * Level variance ÷ all of the variance of an outcome at time 0; null without a level, and when the errors have a variance for
- * each visit or group, where there is no one share.
+ * The parts of the covariance, and the ICC apart, with profile-likelihood limits.
+ *
+ * `limits` left out: when there are at most ten parameters.
  */
-export function iccOf(fit: ModelFit): Component | null {
-	const level = fit.parameters.find((p) => p.name === 'subject level')?.value;
-	if (level === undefined || fit.dependence.errors.varianceBy !== 'none') return null;
-	const rest = fit.parameters
-		.filter((p) => besides.includes(p.name))
-		.reduce((sum, p) => sum + p.value, 0);
-	return plain('icc', level / (level + rest));
+export function componentsOf(
+	fit: ModelFit,
+	confidence: number,
+	limits = fit.working.length <= FEW,
+	supervision: Supervision = {}
+): AnalysedComponents {
+	const found = limits
+		? componentIntervals(fit, confidence, supervision)
+		: withoutLimits(fit).map((c) => ({ ...c, lower: null, upper: null }));
+	const all = found.map(({ name, estimate, lower, upper, atEdge }): Component => ({
+		name,
+		estimate,
+		lower,
+		upper,
+		atEdge
+	}));
+	return {
+		parts: all.filter((c) => c.name !== 'ICC'),
+		icc: all.find((c) => c.name === 'ICC') ?? null,
+		limits
+	};
 }

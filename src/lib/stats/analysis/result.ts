@@ -33,13 +33,17 @@ export interface AnalysedContrast extends Tested {
 	effectiveSampleSize: number;
 }
 
-/** An estimated part of the covariance; limits are null where none can be given. */
+/** An estimated part of the covariance, with profile-likelihood limits. */
 export interface Component {
 	/** `subject level`, `residual`, `visit`, `range`, `rho` … */
 	name: string;
-	estimate: number;
+	/** Null where it has no meaning: the range of a serial part that is estimated as zero. */
+	estimate: number | null;
+	/** Null as the estimate is, or where the data set no limit on that side. */
 	lower: number | null;
 	upper: number | null;
+	/** Whether the estimate stands at the edge of its range. */
+	atEdge: boolean;
 }
 
 export interface AnalysisResult {
@@ -50,9 +54,12 @@ export interface AnalysisResult {
 	/** Of the coefficients, as their standard errors rest on; row by row. */
 	covariance: number[][];
 	contrasts: AnalysedContrast[];
-	/** Variances and covariances in outcome units squared; correlations and ranges beside them. */
+	/** Variances and covariances in outcome units squared; correlations, and ranges in the unit of time, beside them. */
 	varianceComponents: Component[];
-	/** Share of the variance of an outcome at time 0 that is a subject's lasting level; null without a level. */
+	/**
+	 * Share of the variance of an outcome at time 0 that a subject's outcomes have in common; null without a level or a common
+	 * covariance, and where variances differ by visit or group.
+	 */
 	icc: Component | null;
 	effectiveSampleSize: {
 		/** Independent rows that would tell as much about the mean. */

@@ -29,9 +29,14 @@ function subjectsLeftOut({ counts: { droppedSubjects } }: BuiltDesign): string[]
 }
 
 /** The sentences a reader must see beside the numbers: of the fit first, then of the data. */
-export function warningsOf(built: BuiltDesign, fit: ModelFit): string[] {
+export function warningsOf(built: BuiltDesign, fit: ModelFit, limits: boolean): string[] {
 	return [
 		...fit.warnings,
+		...(limits
+			? []
+			: [
+					`Limits of the ${fit.parameters.length} parts of the covariance were not looked for: with so many they take long. They can be asked for.`
+				]),
 		...built.design.aliased.map(({ name, by }) =>
 			by.length === 0
 				? `The coefficient “${name}” was left out: no usable row bears on it.`

@@ -165,6 +165,16 @@ describe('the columns of the mean', () => {
 		expect(alias).toEqual(['time after -1', 'time after -1 × group 1']);
 	});
 
+	test('groups are in the order given, when one is', () => {
+		const { design } = buildModelDesign(study, planWith(), { groupLevels: ['1', '0'] });
+		expect(design.groups).toEqual(['1', '0']);
+		expect(design.names).toContain('time × group 0');
+		expect([...design.subjectGroup]).toEqual([0, 1, 0, 1, 0]);
+		expect(() => buildModelDesign(study, planWith(), { groupLevels: ['1', '2'] })).toThrow(
+			/“arm” in row 2 is “0”, which is not among the levels of the group/
+		);
+	});
+
 	test('numbers as levels are sorted as numbers', () => {
 		const dose = Array.from(study.who!, (_, i) => [10, 9, 2][i % 3]!);
 		const built = build(
@@ -406,7 +416,28 @@ describe('refusals', () => {
 		expect((thrown as StatsError).code).toBe(code);
 	});
 
+	test.each(['toeplitz', 'unstructured', 'serial-with-noise'] as const)(
+		'two rows at one visit are refused with %s errors along visits',
+		(structure) => {
+			const errors = { structure, along: 'visit', varianceBy: 'none' } as const;
+			expect(() => build({ subjectEffects: 'none', errors }, {}, set('visit', 1, 'mid'))).toThrow(
+				new RegExp(`“a” has two outcomes at the visit “mid”.*${structure} errors allow one`)
+			);
+		}
+	);
+
+	test('a column used for two things is counted as missing once', () => {
+		const data = set('when', 1, null);
+		expect(build({ visit: 'when' }, {}, data).dropped).toEqual([
+			{ reason: 'outcome', variable: 'y', rows: 1 },
+			{ reason: 'value', variable: 'when', rows: 1 },
+			{ reason: 'value', variable: 'arm', rows: 1 }
+		]);
+	});
+
 	test('two rows at one time are fine where the errors allow them', () => {
+		const errors = { structure: 'serial-with-noise', along: 'time', varianceBy: 'none' } as const;
+		expect(build({ errors }, {}, set('when', 1, 2)).counts.observations).toBe(12);
 		expect(build({}, {}, set('when', 1, 2)).counts.observations).toBe(12);
 	});
 });

@@ -57,6 +57,11 @@ export interface BuiltDesign {
 	baseline: { at: string; rows: number } | null;
 }
 
+export interface DesignOptions {
+	/** Levels of the group in order, the first the reference; those found are sorted when left out. */
+	groupLevels?: readonly string[];
+}
+
 /** A vector of the rows in use, in their order. */
 function pick(values: Float64Array, rows: Int32Array): Float64Array {
 	const picked = new Float64Array(rows.length);
@@ -169,12 +174,18 @@ function countsOf(data: PlannedColumns, screening: Screening, gathered: Gathered
  * `wrong-kind`, `not-finite`, `not-positive`, `missing-subject`, `repeated-occasion`, `unknown-level`, `empty-level`,
  * `single-level`, `duplicate-name`, `group-changes`, `constant-outcome`, `too-few-observations`.
  */
-export function buildModelDesign(columns: Columns, plan: AnalysisPlan): BuiltDesign {
+export function buildModelDesign(
+	columns: Columns,
+	plan: AnalysisPlan,
+	options: DesignOptions = {}
+): BuiltDesign {
 	checkPlan(plan);
 	const data = readColumns(columns, plan);
 	const screening = screen(data);
 	const gathered = gather(data, screening);
-	const group = data.group ? factorOf(data.group, screening.use, undefined, 'the group') : null;
+	const group = data.group
+		? factorOf(data.group, screening.use, options.groupLevels, 'the group')
+		: null;
 	const subjectGroup = subjectGroups(data, gathered, group?.position ?? null);
 	refuseRepeats(data, gathered, plan);
 
