@@ -1,7 +1,7 @@
 import { describe, expect, test } from 'vitest';
 import { fitModel, type ModelFit } from '../fit/fit-model.js';
 import { profileAt } from '../fit/objective-of.js';
-import { chiSquareTail } from '../numeric/chi-square.js';
+import { chiSquareAbove } from '../numeric/distribution.js';
 import type { FitMethod } from '../plan.js';
 import { expectRelative, expectWithin } from '../reference/close.js';
 import { referenceDesign, type ReferenceSet } from '../reference/reference-design.js';
@@ -145,10 +145,10 @@ describe('likelihood-ratio tests agree with the collection', () => {
 describe('the chi-squared tail', () => {
 	test('is erfc(√(x/2)) with one and exp(−x/2) with two degrees of freedom, far out too', () => {
 		for (const x of [0.01, 1, 5, 40, 200, 700])
-			expectRelative(chiSquareTail(x, 2), Math.exp(-x / 2), 1e-11);
+			expectRelative(chiSquareAbove(x, 2), Math.exp(-x / 2), 1e-11);
 		// Abramowitz & Stegun, table 26.8, from memory: 3.84146 leaves 0.05, 10.8276 leaves 0.001.
-		expectWithin(chiSquareTail(3.841458820694124, 1), 0.05, 1e-12);
-		expectWithin(chiSquareTail(10.827566170662733, 1), 0.001, 1e-13);
-		expect(chiSquareTail(-1, 3)).toBe(1);
+		expectWithin(chiSquareAbove(3.841458820694124, 1), 0.05, 1e-12);
+		expectWithin(chiSquareAbove(10.827566170662733, 1), 0.001, 1e-13);
+		expect(chiSquareAbove(-1, 3)).toBe(1);
 	});
 });

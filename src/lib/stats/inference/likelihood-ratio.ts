@@ -1,6 +1,6 @@
 import { StatsError } from '../errors.js';
 import type { ModelFit } from '../fit/fit-model.js';
-import { chiSquareTail } from '../numeric/chi-square.js';
+import { chiSquareAbove } from '../numeric/distribution.js';
 import type { ErrorStructure, SubjectEffects } from '../plan.js';
 
 export interface LikelihoodRatioTest {
@@ -46,7 +46,7 @@ const none = (statistic: number, explanation: string): LikelihoodRatioTest => ({
 
 function mixed(statistic: number, mixture: number[], explanation: string): LikelihoodRatioTest {
 	const p = mixture.reduce(
-		(sum, w, df) => sum + (df === 0 ? (statistic > 0 ? 0 : w) : w * chiSquareTail(statistic, df)),
+		(sum, w, df) => sum + (df === 0 ? (statistic > 0 ? 0 : w) : w * chiSquareAbove(statistic, df)),
 		0
 	);
 	return { statistic, mixture, p, explanation };
