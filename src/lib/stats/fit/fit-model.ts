@@ -118,7 +118,9 @@ export function summariseAt(
 	);
 	if (!state.converged)
 		warnings.push(
-			'The search ended before the slope of the likelihood was flat; do not rely on these numbers.'
+			layout.shape >= 0
+				? 'The search did not come to rest. So many covariances may be too many for so few subjects; do not rely on these numbers, and try a structure with fewer parameters.'
+				: 'The search did not come to rest; do not rely on these numbers.'
 		);
 	const fit: ModelFit = {
 		prepared,
