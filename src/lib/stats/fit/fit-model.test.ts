@@ -320,8 +320,13 @@ describe('refusals', () => {
 			/one subject/
 		],
 		['not-identified', grid(9, 2, noisy), model('level-and-slope', 'independent'), /two occasions/],
-		['not-identified', grid(9, 2, noisy), model('none', 'serial-with-noise'), /two occasions/],
-		['not-identified', grid(9, 2, noisy), model('level', 'serial'), /two occasions/],
+		[
+			'not-identified',
+			grid(9, 2, noisy),
+			model('none', 'serial-with-noise'),
+			/only 1 different gap/
+		],
+		['not-identified', grid(9, 2, noisy), model('level', 'serial'), /only 1 different gap/],
 		[
 			'too-few-subjects',
 			grid(4, 5, noisy),
@@ -365,6 +370,26 @@ describe('refusals', () => {
 			expect((thrown as StatsError).message).toMatch(sentence);
 			expect((thrown as StatsError).message).toMatch(/\.$/);
 		}
+	});
+
+	test('a mean that takes up all there is between subjects, or between visits', () => {
+		expect(() =>
+			fitModel(grid(2, 6, noisy), model('level', 'independent'), { method: 'reml' })
+		).toThrow(/2 subjects cannot carry 2 coefficients/);
+		const two = grid(8, 2, noisy);
+		expect(() =>
+			fitModel(two, model('none', 'independent', { visitEffects: true }), { method: 'reml' })
+		).toThrow(/2 coefficients for 2 visits/);
+	});
+
+	test('level, serial errors and noise need three different gaps', () => {
+		expect(() =>
+			fitModel(grid(20, 3, noisy), model('level', 'serial-with-noise'), { method: 'reml' })
+		).toThrow(/only 2 different gaps.*a lasting level, serial errors and measurement noise/);
+		expect(
+			fitModel(grid(20, 4, noisy), model('level', 'serial-with-noise'), { method: 'reml' })
+				.converged
+		).toBe(true);
 	});
 
 	test('a pair of visits that nobody has, and a lag', () => {

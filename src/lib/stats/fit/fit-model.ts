@@ -1,5 +1,6 @@
 import { naturalModel, type NaturalModel, type NaturalParameter } from '../dependence/natural.js';
 import { refuseUnidentifiedModel, refuseWithoutVariation } from '../dependence/identification.js';
+import { refuseSaturated } from '../dependence/saturation.js';
 import type { ModelDesign } from '../design/model-design.js';
 import { StatsError } from '../errors.js';
 import { toCoefficients } from '../numeric/orthonormal.js';
@@ -167,7 +168,7 @@ export function fitPrepared(prepared: PreparedModel, options: ModelFitOptions): 
 /**
  * Fits y = Xβ + Zb + v + e by REML or ML for any dependence of a plan.
  *
- * Errors: those of `refuseUnidentifiedModel` besides those of `fitPrepared`.
+ * Errors: those of `refuseUnidentifiedModel` and `refuseSaturated` besides those of `fitPrepared`.
  * Source: Laird & Ware (1982), Biometrics 38:963-974; Jennrich & Schluchter (1986), Biometrics 42:805-820.
  */
 export function fitModel(
@@ -176,5 +177,8 @@ export function fitModel(
 	options: ModelFitOptions
 ): ModelFit {
 	refuseUnidentifiedModel(design, dependence);
-	return fitPrepared(prepareModel(design, dependence), options);
+	const prepared = prepareModel(design, dependence);
+	refuseWithoutVariation(prepared);
+	refuseSaturated(prepared);
+	return fitPrepared(prepared, options);
 }
