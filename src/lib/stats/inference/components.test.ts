@@ -121,6 +121,25 @@ describe('likelihood-ratio tests agree with the collection', () => {
 		if (expected.statistic > 1e-5) expectRelative(ours.p!, halved, 1e-4, 'p');
 	});
 
+	test('parameters inside their space are counted: chi-squared on their number', () => {
+		const cs = fitOf('orthodont', 'M8cs_cat.REML');
+		const others: [string, number][] = [
+			['M8csh_cat', 3],
+			['M8toep_cat', 2],
+			['M7_cat', 8]
+		];
+		for (const [model, df] of others) {
+			const larger = fitOf('orthodont', `${model}.REML`);
+			const ours = likelihoodRatioTest(cs, larger);
+			expectRelative(ours.statistic, 2 * (larger.logLikelihood - cs.logLikelihood), 1e-12);
+			expectRelative(ours.p!, chiSquareTail(ours.statistic, df), 1e-12);
+			expect(ours.mixture!.at(-1)).toBe(1);
+			expect(ours.mixture!.length).toBe(df + 1);
+		}
+		// And not the other way round.
+		expect(likelihoodRatioTest(fitOf('orthodont', 'M7_cat.REML'), cs).p).toBeNull();
+	});
+
 	test('a visit variance is left to the bootstrap, and so is level against serial', () => {
 		const visit = likelihoodRatioTest(
 			fitOf('penicillin', 'M1.REML'),
