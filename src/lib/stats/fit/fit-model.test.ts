@@ -165,6 +165,37 @@ describe('order and labels', () => {
 		);
 	});
 
+	test.each([
+		['serial along visits', model('none', 'serial', { along: 'visit' })],
+		['with a variance per visit', model('level', 'serial', { along: 'visit', varianceBy: 'visit' })]
+	])('%s: visits held in another order of time hang together by visit', (_, dependence) => {
+		const plain = grid(14, 5, noisy);
+		// The second and third visit of every third subject change places in time, and so in the rows.
+		const other: ModelDesign = {
+			...plain,
+			visit: plain.visit.slice(),
+			y: plain.y.slice(),
+			x: plain.x.slice()
+		};
+		for (let s = 0; s < 14; s += 3) {
+			const i = s * 5 + 1;
+			for (const [to, from] of [
+				[i, i + 1],
+				[i + 1, i]
+			] as const) {
+				other.visit[to] = plain.visit[from]!;
+				other.y[to] = plain.y[from]!;
+				for (let j = 0; j < plain.p; j++) other.x[j * plain.n + to] = plain.x[j * plain.n + from]!;
+			}
+		}
+		const a = fitModel(plain, dependence, { method: 'reml' });
+		const b = fitModel(other, dependence, { method: 'reml' });
+		expectWithin(b.logLikelihood, a.logLikelihood, 1e-8);
+		const [s, t] = [a, b].map((f) => precisionOf(f, 'kenward-roger').test([0, 1, 0]));
+		expectRelative(t!.df, s!.df, 1e-6);
+		expectRelative(t!.standardError, s!.standardError, 1e-6);
+	});
+
 	test('the same input gives the same bits', () => {
 		for (const dependence of Object.values(referenceModels)) {
 			if (dependence.errors.structure === 'serial-with-noise') continue;
