@@ -7,12 +7,18 @@ const TOLERANCE = 1e-9;
 
 /** How many directions of the mean (its orthonormal basis) are left when the means of each class are taken out. */
 function directionsWithin(sums: Float64Array, counts: ArrayLike<number>, p: number): number {
+	const taken = new Float64Array(p * p);
+	for (let k = 0; k < counts.length; k++) {
+		if (counts[k] === 0) continue;
+		const by = 1 / counts[k]!;
+		for (let i = 0; i < p; i++) {
+			const f = sums[k * p + i]! * by;
+			for (let j = 0; j < p; j++) taken[i * p + j]! += f * sums[k * p + j]!;
+		}
+	}
 	const left = Matrix.eye(p);
-	for (let k = 0; k < counts.length; k++)
-		for (let i = 0; i < p; i++)
-			for (let j = 0; j < p; j++)
-				if (counts[k]! > 0)
-					left.set(i, j, left.get(i, j) - (sums[k * p + i]! * sums[k * p + j]!) / counts[k]!);
+	for (let i = 0; i < p; i++)
+		for (let j = 0; j < p; j++) left.set(i, j, left.get(i, j) - taken[i * p + j]!);
 	const lengths = new EigenvalueDecomposition(left, { assumeSymmetric: true }).realEigenvalues;
 	return lengths.filter((l) => l > TOLERANCE).length;
 }

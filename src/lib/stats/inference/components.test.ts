@@ -95,6 +95,13 @@ describe('profile limits', () => {
 		expect(profileAt(fit.prepared, fit.method, Float64Array.from(fit.working))).not.toBeNull();
 	});
 
+	test('a range that the data bound from below only has no upper limit, rather than an enormous one', () => {
+		const limits = componentIntervals(fitOf('btheb', 'M3n.REML'));
+		const range = limits.find((c) => c.name === 'range')!;
+		expect(range.lower).toBeGreaterThan(0);
+		expect(range.upper).toBeNull();
+	});
+
 	test('a component at zero has zero for its lower limit and a positive upper one', () => {
 		const visit = componentIntervals(fitOf('sleepstudy', 'M5.REML')).find(
 			(c) => c.name === 'visit'
