@@ -27,7 +27,7 @@ export function gapKernel(rows: Rows, layout: Layout, design: ModelDesign): Kern
 	const known = new Map<number, GapSums>();
 	const first = new Float64Array(c * c);
 	let last: GapSums | undefined;
-	if (n === 0) return null;
+	if (n === 0 || rows.order) return null;
 	for (let s = 0; s + 1 < subjectStart.length; s++) {
 		const from = subjectStart[s]!;
 		for (let i = from; i < subjectStart[s + 1]!; i++) {
