@@ -90,7 +90,7 @@ export interface EffectiveSizes {
  * Both variances are those of generalised least squares with the estimated covariance taken as known. For the mean the
  * model has an intercept alone: n × 1'V⁻¹1 ÷ 1'D⁻¹1, which under a level is Σ n_i / (1 + (n_i − 1) ICC). A contrast within
  * subjects may exceed the rows; a visit effect shared by all may bring the mean below the subjects.
- * Needs a first column of X that is all ones. Errors: `out-of-range`.
+ * Needs a first column of X that is all ones. Errors: `out-of-range`, `shape-mismatch`.
  * Source: design effect, Kish (1965), Survey Sampling, 5.4, for the mean; the ratio of variances is its general form.
  */
 export function effectiveSizes(fit: ModelFit): EffectiveSizes {
@@ -105,6 +105,13 @@ export function effectiveSizes(fit: ModelFit): EffectiveSizes {
 		// The first direction of the basis is 1 / √n in every row, so that 1'V⁻¹1 is n times its precision.
 		mean: (n * n * precision[0]!) / weights,
 		of: (contrast) => {
+			if (contrast.length !== p) {
+				throw new StatsError(
+					'shape-mismatch',
+					`The contrast has ${contrast.length} weights for ${p} coefficients.`,
+					{ weights: contrast.length, coefficients: p }
+				);
+			}
 			const w = toBasis(basis, contrast);
 			return (n * quadratic(w, independent, p)) / quadratic(w, fit.coordinateCovariance, p);
 		}
