@@ -381,8 +381,10 @@ test('each role finds its own day', async ({ page, shared }) => {
 		await signIn(page, person.email);
 		await page.goto(`/studies/${scene.studyId}`);
 		await expect(page.getByRole('main').getByText(words).first()).toBeVisible();
-		if (role === 'board_member')
-			await expect(page.getByRole('main').getByRole('link')).toHaveText(['Board room']);
+		if (role === 'board_member') {
+			await expect(page).toHaveURL(/\/board$/);
+			await expect(page.getByRole('navigation').getByRole('link')).toHaveText(['Board room']);
+		}
 		await axe(page);
 	}
 });
