@@ -1,8 +1,10 @@
 // The engine alone: CPU seconds of fits with the columns already in memory, one thread, and how they grow with the rows.
 // Each line runs in a process of its own, so that its memory is its own. Nothing is judged.
 import { spawnSync } from 'node:child_process';
+import { mkdtempSync, rmSync, writeFileSync } from 'node:fs';
+import { cpus, tmpdir } from 'node:os';
+import { join } from 'node:path';
 import { fileURLToPath } from 'node:url';
-import { cpus } from 'node:os';
 import { withModules } from './support/load.mjs';
 
 /** Numbers that look like chance and are the same each time (a congruential generator). */
@@ -197,6 +199,40 @@ async function bootstrap(model) {
 	});
 }
 
+/** Longer than this nobody waits for the package beside us. */
+const patience = 180;
+const hasPackages =
+	spawnSync('Rscript', ['-e', 'library(lme4); library(nlme)'], { stdio: 'ignore' }).status === 0;
+
+/** The same fit by a general-purpose package, in CPU seconds; empty when there is none here. */
+function beside(model, size, rule) {
+	if (!hasPackages) return '';
+	const place = mkdtempSync(join(tmpdir(), 'heddle-bench-'));
+	try {
+		const { n, y, time, visit, subjectStart, subjectGroup } = study(size);
+		const lines = ['subject,time,visit,arm,y'];
+		for (let s = 0; s + 1 < subjectStart.length; s++)
+			for (let i = subjectStart[s]; i < subjectStart[s + 1]; i++)
+				lines.push(`${s},${time[i]},${visit[i]},${subjectGroup[s]},${y[i]}`);
+		if (lines.length !== n + 1) throw new Error('rows went missing');
+		const file = join(place, 'data.csv');
+		writeFileSync(file, lines.join('\n'));
+		const { stdout, signal } = spawnSync(
+			'Rscript',
+			[fileURLToPath(new URL('./support/reference.R', import.meta.url)), file, model, rule ?? ''],
+			{
+				encoding: 'utf8',
+				timeout: patience * 1000,
+				env: { ...process.env, OMP_NUM_THREADS: '1', OPENBLAS_NUM_THREADS: '1' }
+			}
+		);
+		if (signal) return `> ${patience}`;
+		return Number.isFinite(Number.parseFloat(stdout)) ? Number(stdout).toFixed(2) : 'gave up';
+	} finally {
+		rmSync(place, { recursive: true, force: true });
+	}
+}
+
 const self = fileURLToPath(import.meta.url);
 const child = (...args) => {
 	const { stdout, stderr } = spawnSync(process.execPath, [self, ...args], {
@@ -217,13 +253,13 @@ else if (what === 'bootstrap') await bootstrap(which);
 else {
 	console.log(`${cpus()[0]?.model}, ${cpus().length} processors, one thread\n`);
 	console.log(
-		`${'model'.padEnd(26)}${'rows'.padStart(9)}  ${'with'.padEnd(14)}${'first'.padStart(9)}${'warm'.padStart(9)}${'asked'.padStart(8)}${'evals'.padStart(7)}${'MB'.padStart(7)}`
+		`${'model'.padEnd(26)}${'rows'.padStart(9)}  ${'with'.padEnd(14)}${'first'.padStart(9)}${'warm'.padStart(9)}${'asked'.padStart(8)}${'evals'.padStart(7)}${'MB'.padStart(7)}${hasPackages ? 'package'.padStart(9) : ''}`
 	);
-	lines.forEach(([model, , rule, asked], index) => {
+	lines.forEach(([model, size, rule, asked], index) => {
 		if (which && !String(index).match(which)) return;
 		const r = child('line', String(index));
 		console.log(
-			`${model.padEnd(26)}${String(r.rows).padStart(9)}  ${(rule ?? '').padEnd(14)}${r.cold.toFixed(3).padStart(9)}${r.warm.toFixed(3).padStart(9)}${(asked === null ? '' : String(asked)).padStart(8)}${String(r.evaluations).padStart(7)}${r.memory.toFixed(0).padStart(7)}${r.converged ? '' : '  not converged'}`
+			`${model.padEnd(26)}${String(r.rows).padStart(9)}  ${(rule ?? '').padEnd(14)}${r.cold.toFixed(3).padStart(9)}${r.warm.toFixed(3).padStart(9)}${(asked === null ? '' : String(asked)).padStart(8)}${String(r.evaluations).padStart(7)}${r.memory.toFixed(0).padStart(7)}${beside(model, size, rule).padStart(hasPackages ? 9 : 0)}${r.converged ? '' : '  not converged'}`
 		);
 	});
 	console.log(
