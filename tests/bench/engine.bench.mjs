@@ -148,7 +148,9 @@ async function one(index) {
 			const fit = fitModel(design, models[model], { method: 'reml' });
 			if (rule) {
 				const precision = precisionOf(fit, rule);
-				design.names.forEach((_, j) => precision.test(design.names.map((__, k) => (k === j ? 1 : 0))));
+				design.names.forEach((_, j) =>
+					precision.test(design.names.map((__, k) => (k === j ? 1 : 0)))
+				);
 			}
 			return fit;
 		};
@@ -224,7 +226,9 @@ else {
 			`${model.padEnd(26)}${String(r.rows).padStart(9)}  ${(rule ?? '').padEnd(14)}${r.cold.toFixed(3).padStart(9)}${r.warm.toFixed(3).padStart(9)}${(asked === null ? '' : String(asked)).padStart(8)}${String(r.evaluations).padStart(7)}${r.memory.toFixed(0).padStart(7)}${r.converged ? '' : '  not converged'}`
 		);
 	});
-	console.log('\n1,000 refits of the demo study (240 subjects, 9 visits), one thread, from the fit:');
+	console.log(
+		'\n1,000 refits of the demo study (240 subjects, 9 visits), one thread, from the fit:'
+	);
 	for (const model of refits) {
 		const r = child('bootstrap', model);
 		console.log(`${model.padEnd(26)}${String(r.rows).padStart(9)}  ${r.seconds.toFixed(2)} s`);

@@ -56,18 +56,19 @@ function countsOf(design: ModelDesign): Counted {
 		distinctTimes: 0
 	};
 	const times = new Set<number>();
+	// The subject that was last seen at each visit.
+	const last = new Int32Array(Math.max(1, design.visits.length)).fill(-1);
 	for (let s = 0; s < counted.subjects; s++) {
 		const from = start[s]!;
 		const to = start[s + 1]!;
 		counted.most = Math.max(counted.most, to - from);
 		if (to - from > 1) counted.twice++;
-		const seen = new Set<number>();
 		for (let i = from; i < to; i++) {
 			if (times.size < 10) times.add(time[i]!);
 			if (i > from && time[i] === time[i - 1]) counted.sameTime = true;
 			if (i > from && time[i] !== time[i - 1]) counted.timesDiffer = true;
-			if (seen.has(visit[i]!)) counted.sameVisit = true;
-			seen.add(visit[i]!);
+			if (last[visit[i]!] === s) counted.sameVisit = true;
+			last[visit[i]!] = s;
 		}
 	}
 	counted.distinctTimes = times.size;
@@ -257,7 +258,7 @@ export function refuseWithoutVariation({ y, residual, design }: PreparedModel): 
 			'An outcome or a column of the mean is not a finite number.'
 		);
 	}
-	if (spread === 0 || spread <= n * (Math.abs(mean) * Number.EPSILON) ** 2) {
+	if (y.every((v) => v === y[0])) {
 		throw new StatsError(
 			'constant-outcome',
 			'Every outcome is the same, so there is no variation to explain.'

@@ -1,9 +1,11 @@
 import { layoutOf, isMatrixStructure, type Layout } from '../dependence/layout.js';
 import type { ModelDesign } from '../design/model-design.js';
 import { StatsError } from '../errors.js';
+import { orthonormaliseByRows } from '../numeric/orthonormal-by-rows.js';
 import { orthonormalise, project, type OrthonormalBasis } from '../numeric/orthonormal.js';
 import type { Dependence } from '../plan.js';
 import type { Kernel } from './kernel.js';
+import { gapKernel } from './kernel-gaps.js';
 import { offsetKernel } from './kernel-offset.js';
 import type { Sizes } from './profile.js';
 import { rowsOf, type Rows } from './rows.js';
@@ -33,8 +35,20 @@ export function kernelFor(rows: Rows, layout: Layout, design: ModelDesign): Kern
 		return subjectLoop(rows, layout, matrixWhitening(rows, layout, design));
 	if (layout.dependence.errors.structure === 'independent' && layout.scaleClasses === 1)
 		return offsetKernel(rows, layout);
+	if (
+		layout.dependence.errors.structure === 'serial' &&
+		layout.q === 0 &&
+		rows.visits === 0 &&
+		layout.scaleClasses === 1
+	) {
+		const kernel = gapKernel(rows, layout, design);
+		if (kernel) return kernel;
+	}
 	return subjectLoop(rows, layout, recursiveWhitening(rows, layout, design));
 }
+
+/** From here on the basis is made in three passes over the rows, if its columns allow it. */
+const MANY_ROWS = 2000;
 
 function basisOf(design: ModelDesign): OrthonormalBasis {
 	const { n, p } = design;
@@ -45,6 +59,8 @@ function basisOf(design: ModelDesign): OrthonormalBasis {
 			{ observations: n, coefficients: p }
 		);
 	}
+	const quick = n > MANY_ROWS ? orthonormaliseByRows(design.x, n, p) : null;
+	if (quick) return quick;
 	const found = orthonormalise(design.x, n, p);
 	if ('basis' in found) return found.basis;
 	const column = design.names[found.alias.column]!;
@@ -100,13 +116,17 @@ export function withOutcome(prepared: PreparedModel, y: Float64Array): PreparedM
 	return assemble(prepared.design, y, prepared.dependence, prepared.layout, prepared.basis);
 }
 
-/** Every so-manieth subject only, in the coordinates of the whole: where a search may begin cheaply. */
+/**
+ * About so many of the subjects, in the coordinates of the whole: where a search may begin cheaply.
+ *
+ * Chosen by Knuth's multiplicative hash of their position: the same each time, and in step with no alternation of arms.
+ */
 export function thinned(prepared: PreparedModel, subjects: number): PreparedModel {
 	const { design, rows, layout } = prepared;
 	const all = design.subjectStart.length - 1;
-	const stride = Math.max(1, Math.floor(all / subjects));
+	const below = (subjects / all) * 2 ** 32;
 	const chosen: number[] = [];
-	for (let s = 0; s < all; s += stride) chosen.push(s);
+	for (let s = 0; s < all; s++) if (Math.imul(s + 1, 2654435761) >>> 0 < below) chosen.push(s);
 	const start = new Int32Array(chosen.length + 1);
 	const index: number[] = [];
 	chosen.forEach((s, k) => {

@@ -31,6 +31,8 @@ export interface Profile {
 	slope: Float64Array;
 	/** ∂ deviance / ∂ (visit variance / σ²); 0 without visit effects. */
 	visitSlope: number;
+	/** ∂ deviance / ∂ log σ²; 0 at the best σ². */
+	scaleSlope: number;
 }
 
 export interface Sizes {
@@ -47,13 +49,15 @@ export interface Sizes {
  *
  * REML: (n − p)(log 2πσ² + 1) + log|V*| + log|X'V*⁻¹X|, σ² = r'V*⁻¹r / (n − p); ML: n(log 2πσ² + 1) + log|V*|.
  * Visit effects of variance uσ² enter by Woodbury on the K × K matrix S = (I/u + U'V*⁻¹U)⁻¹.
+ * With `fixedScale` σ² is held there, and the deviance is that of it; `scaleSlope` is its slope in log σ².
  * Source: Harville (1977), JASA 72:320-338; Woodbury's identity for the visit effects.
  */
 export function profileOf(
 	{ m, logDeterminant }: Moments,
 	sizes: Sizes,
 	method: FitMethod,
-	visitRatio: number
+	visitRatio: number,
+	fixedScale?: number
 ): Profile | null {
 	const { n, p, visits: K } = sizes;
 	const c = p + 1;
@@ -83,7 +87,7 @@ export function profileOf(
 			}
 	}
 	const xx = block(mean, c, 0, p, 0, p);
-	if (choleskyInPlace(xx, p) >= 0) return null;
+	if (choleskyInPlace(xx, p, 1e-12) >= 0) return null;
 	const logOfX = logDeterminantOf(xx, p);
 	const covariance = inverseFromFactor(xx, p);
 	const contrast = new Float64Array(c);
@@ -96,9 +100,10 @@ export function profileOf(
 		squares -= delta * mean[a * c + p]!;
 	}
 	const weight = method === 'reml' ? n - p : n;
-	const scale = squares / weight;
-	if (!(scale > 0) || !Number.isFinite(scale)) return null;
-	let deviance = weight * (Math.log(2 * Math.PI * scale) + 1) + log;
+	const scale = fixedScale ?? squares / weight;
+	if (!(scale > 0) || !(squares > 0) || !Number.isFinite(scale)) return null;
+	const scaleSlope = weight - squares / scale;
+	let deviance = weight * Math.log(2 * Math.PI * scale) + squares / scale + log;
 	if (method === 'reml') deviance += logOfX + sizes.logDeterminantOfX;
 	if (!Number.isFinite(deviance)) return null;
 
@@ -108,7 +113,7 @@ export function profileOf(
 			h[a * c + b] = (contrast[a]! * contrast[b]!) / scale;
 			if (method === 'reml' && a < p && b < p) h[a * c + b]! += covariance[a * p + b]!;
 		}
-	if (!uu) return { deviance, scale, covariance, contrast, slope: h, visitSlope };
+	if (!uu) return { deviance, scale, covariance, contrast, slope: h, visitSlope, scaleSlope };
 	const slope = new Float64Array(width * width);
 	const hs = product(h, aus!, c, c, K);
 	const auj = product(au!, j!, c, K, K);
@@ -127,5 +132,5 @@ export function profileOf(
 			slope[(c + k) * width + c + l] = sum;
 			visitSlope += j![k * K + l]! * uu[l * K + k]!;
 		}
-	return { deviance, scale, covariance, contrast, slope, visitSlope };
+	return { deviance, scale, covariance, contrast, slope, visitSlope, scaleSlope };
 }

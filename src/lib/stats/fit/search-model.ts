@@ -41,6 +41,27 @@ function refuseStop(supervision: Supervision): void {
 	if (supervision.shouldStop?.()) throw new StatsError('stopped', 'The fit was stopped.');
 }
 
+/** A ratio of variances above this is no ratio: nothing is left below it. */
+const ENDLESS = 1e8;
+
+/** Errors: `no-residual-variation`. */
+function refuseEndless({ layout, dependence }: PreparedModel, x: Float64Array): void {
+	const entries = dependence.subjectEffects === 'level-and-slope' ? 3 : layout.q;
+	const ratios = Array.from({ length: entries }, (_, i) => x[layout.subject + i]! ** 2);
+	if (layout.visit >= 0) ratios.push(x[layout.visit]! ** 2);
+	const serialForever =
+		layout.range >= 0 &&
+		layout.share < 0 &&
+		dependence.errors.along === 'time' &&
+		layout.gapUnit * Math.exp(x[layout.range]!) > 1e7 * layout.longestSpan;
+	if (serialForever || ratios.some((r) => r > ENDLESS)) {
+		throw new StatsError(
+			'no-residual-variation',
+			'The other parts of the model explain the outcomes (almost) exactly, so no residual variance is left to estimate beside them. Leave a part out.'
+		);
+	}
+}
+
 /** The objective over the coordinates that are free, the others as in `x`. */
 function restricted(prepared: PreparedModel, method: FitMethod, x: Float64Array, free: number[]) {
 	const f = objective(prepared, method);
@@ -205,6 +226,7 @@ export function searchModel(
 			}
 		}
 	}
+	refuseEndless(prepared, x);
 	const { range, share } = layout;
 	if (
 		range >= 0 &&

@@ -71,7 +71,10 @@ function writtenOut(fit: ReturnType<typeof summariseAt>) {
 	const vi = inverse(v);
 	const c = inverse(x.transpose().mmul(vi).mmul(x));
 	const y = Matrix.columnVector(design.y);
-	const r = y.clone().sub(x.mmul(c).mmul(x.transpose().mmul(vi).mmul(y))).div(Math.sqrt(fit.scale));
+	const r = y
+		.clone()
+		.sub(x.mmul(c).mmul(x.transpose().mmul(vi).mmul(y)))
+		.div(Math.sqrt(fit.scale));
 	const vr = vi.mmul(r);
 	const pm = vi.clone().sub(vi.mmul(x).mmul(c).mmul(x.transpose()).mmul(vi));
 	const pd = first.map((d) => pm.mmul(d));
@@ -118,7 +121,10 @@ describe('curvature at an arbitrary point is that of matrices written out in ful
 			return 0.35 + 0.1 * i;
 		});
 		const fit = summariseAt(prepared, 'reml', x, {
-			converged: true, gradient: 0, evaluations: 1, boundary: []
+			converged: true,
+			gradient: 0,
+			evaluations: 1,
+			boundary: []
 		});
 		const ours = curvatureAt(fit);
 		const theirs = writtenOut(fit);
@@ -130,7 +136,12 @@ describe('curvature at an arbitrary point is that of matrices written out in ful
 			theirs.expected[k]!.forEach((e, l) => {
 				const both = size * Math.sqrt(theirs.expected[l]![l]!);
 				expectWithin(ours.expected[k * count + l]!, e, 1e-9 * both, 'expected');
-				expectWithin(ours.observed[k * count + l]!, theirs.observed[k]![l]!, 1e-8 * both, 'observed');
+				expectWithin(
+					ours.observed[k * count + l]!,
+					theirs.observed[k]![l]!,
+					1e-8 * both,
+					'observed'
+				);
 			});
 		});
 		const precision = precisionOf(fit, 'kenward-roger');

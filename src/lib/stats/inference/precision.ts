@@ -253,6 +253,7 @@ export function precisionOf(fit: ModelFit, rule: DegreesOfFreedomRule): Precisio
 			const t = estimate / standardError;
 			if (![t, df].every(Number.isFinite) || !(standardError > 0)) outOfRange();
 			const reach = studentQuantile(confidence, df) * standardError;
+			if (!Number.isFinite(reach)) outOfRange();
 			return {
 				estimate,
 				standardError,

@@ -4,6 +4,11 @@ import { inner, product, solveLower } from '../numeric/dense.js';
 import { patternsOf, whitenPattern, type WhitenedPattern } from './block-curvature.js';
 import type { CurvatureSums } from './curvature-sums.js';
 
+interface Kept {
+	pattern: WhitenedPattern;
+	means: Float64Array[];
+}
+
 /** L⁻¹[X̂ r̂/σ] of a subject, n × (p + 1); `turn` (p × p) takes the basis to X̂. */
 export function whitenedMean(
 	prepared: PreparedModel,
@@ -56,13 +61,23 @@ export function sumsWithin(
 		bendSquares: square()
 	};
 	const patterns = patternsOf(prepared);
+	// Kept for `weighted` when they are not too many numbers.
+	const cells = patterns.reduce(
+		(sum, { occasions, subjects }) =>
+			sum + occasions.time.length * (count * occasions.time.length + c * subjects.length),
+		0
+	);
+	const kept = cells < 4e6 ? new Map<(typeof patterns)[number], Kept>() : null;
 	for (const found of patterns) {
 		const pattern = whitenPattern(natural, found);
+		const means: Float64Array[] = [];
+		kept?.set(found, { pattern, means });
 		const { n, subjects, first, second } = pattern;
 		const ofMean = new Float64Array(n * n);
 		const ofResidual = new Float64Array(n * n);
 		for (const s of subjects) {
 			const m = whitenedMean(prepared, pattern, s, turn, residual);
+			if (kept) means.push(m);
 			for (let i = 0; i < n; i++)
 				for (let j = 0; j <= i; j++) {
 					let sum = 0;
@@ -124,7 +139,8 @@ export function sumsWithin(
 		weighted(w, bends = true) {
 			const total = new Float64Array(p * p);
 			for (const found of patterns) {
-				const pattern = whitenPattern(natural, found);
+				const known = kept?.get(found);
+				const pattern = known?.pattern ?? whitenPattern(natural, found);
 				const { n, subjects, first, second } = pattern;
 				const g = new Float64Array(n * n);
 				first.forEach((d, k) => {
@@ -142,8 +158,9 @@ export function sumsWithin(
 						const f = (w[k * count + l]! * (k === l ? 1 : 2)) / 4;
 						for (let i = 0; i < g.length; i++) g[i]! -= f * matrix[i]!;
 					}
-				for (const s of subjects) {
-					const m = whitenedMean(prepared, pattern, s, turn, residual);
+				for (let at = 0; at < subjects.length; at++) {
+					const m =
+						known?.means[at] ?? whitenedMean(prepared, pattern, subjects[at]!, turn, residual);
 					const gm = product(g, m, n, n, c);
 					for (let i = 0; i < n; i++)
 						for (let a = 0; a < p; a++) {

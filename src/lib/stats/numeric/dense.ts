@@ -2,16 +2,15 @@
 
 /**
  * Puts the lower Cholesky factor of the symmetric n × n matrix `a` in its lower half; −1, or the row whose pivot
- * is not positive. The upper half is left as it was.
+ * is not positive: not above `least` of the diagonal it came from. The upper half is left as it was.
  */
-export function choleskyInPlace(a: Float64Array, n: number): number {
+export function choleskyInPlace(a: Float64Array, n: number, least = 1e-15): number {
 	for (let j = 0; j < n; j++) {
 		const rj = j * n;
 		let d = a[rj + j]!;
 		const whole = d;
 		for (let k = 0; k < j; k++) d -= a[rj + k]! * a[rj + k]!;
-		// What is left of a pivot below rounding of what it was is no number.
-		if (!(d > 1e-15 * whole) || !Number.isFinite(d)) return j;
+		if (!(d > least * whole) || !Number.isFinite(d)) return j;
 		const root = Math.sqrt(d);
 		a[rj + j] = root;
 		for (let i = j + 1; i < n; i++) {

@@ -19,7 +19,7 @@ export interface DescentOptions {
 	most: number;
 	/** Starts the approximate inverse; the unit matrix scaled to the first step when left out. */
 	inverse?: Float64Array;
-	/** No step changes a coordinate by more than this. */
+	/** No step changes a coordinate by more than this times 1 + half the largest coordinate. */
 	longest: number;
 	/** Asked before each step; throws when the work is to end. */
 	beforeStep?: (evaluations: number) => void;
@@ -74,7 +74,8 @@ export function descend(
 	let x: Float64Array = start.slice();
 	let { value, slope } = first;
 	let given = options.inverse !== undefined;
-	let b: Float64Array = options.inverse?.slice() ?? unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
+	let b: Float64Array =
+		options.inverse?.slice() ?? unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
 	let restarted = false;
 	for (;;) {
 		options.beforeStep?.(evaluations);
@@ -100,8 +101,11 @@ export function descend(
 		if (evaluations >= options.most) return done(false);
 		let largest = 0;
 		for (let i = 0; i < k; i++) largest = Math.max(largest, Math.abs(step[i]!));
-		let t = Math.min(1, options.longest / largest);
-		const noise = 4e-14 * (1 + Math.abs(value));
+		let reach = 0;
+		for (let i = 0; i < k; i++) reach = Math.max(reach, Math.abs(x[i]!));
+		let t = Math.min(1, (options.longest * (1 + reach / 2)) / largest);
+		// Sums over a million rows lose some twelve digits.
+		const noise = 2e-12 * (1 + Math.abs(value));
 		let found: { x: Float64Array; value: number; slope: Float64Array } | null = null;
 		for (let tries = 0; tries < 30; tries++) {
 			const next = x.map((v, i) => v + t * step[i]!);
