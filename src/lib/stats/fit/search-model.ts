@@ -25,6 +25,8 @@ export interface Found {
 export interface SearchOptions extends Supervision {
 	/** Working parameters of a fit to like data: the search starts there and nowhere else. */
 	start?: Float64Array;
+	/** Inverse of the second derivatives of −2 log-likelihood near `start`, k × k: the search need not learn it. */
+	inverse?: Float64Array;
 	/** √(g'Bg) below which it has converged; 1e-6 unless said otherwise. */
 	tolerance?: number;
 }
@@ -154,7 +156,7 @@ export function searchModel(
 			...(inverse ? { inverse } : {}),
 			beforeStep: () => refuseStop(options)
 		});
-	if (options.start) descent = descendFrom(options.start);
+	if (options.start) descent = descendFrom(options.start, options.inverse);
 	else if (subjects > MANY && layout.count > 0) {
 		const some = firstDescent(thinned(prepared, SOME), method, 1e-4, options);
 		if (some) {
