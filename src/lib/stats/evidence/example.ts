@@ -44,9 +44,7 @@ export function inventStudy(
 			const error = Math.sqrt(noise) * random.normal();
 			if (random.uniform() < missing && v > 0) continue;
 			time.push(v);
-			y.push(
-				10 + 0.2 * v + own + rate * v + Math.sqrt(serial) * carried + shared[v]! + error
-			);
+			y.push(10 + 0.2 * v + own + rate * v + Math.sqrt(serial) * carried + shared[v]! + error);
 			arm.push(s % 2);
 		}
 		start.push(time.length);

@@ -58,7 +58,8 @@ const kinds: Record<FamilyKind, KindRow> = {
 		words: 'errors that fade with time, and noise',
 		subjectEffects: 'none',
 		structure: 'serial-with-noise',
-		contains: ['independent', 'serial']
+		// A serial part that never fades, beside noise, is a level.
+		contains: ['independent', 'level', 'serial']
 	},
 	'level+serial': {
 		words: 'a lasting offset of each subject and errors that fade with time',

@@ -1,7 +1,11 @@
 import { StatsError } from '../errors.js';
 import { fitModel, type ModelFit } from '../fit/fit-model.js';
+import { withOutcome } from '../fit/prepare-model.js';
+import { searchModel } from '../fit/search-model.js';
 import { likelihoodRatioTest } from '../inference/likelihood-ratio.js';
 import type { ModelDesign } from '../design/model-design.js';
+import { randomStream } from '../numeric/random.js';
+import { drawerOf } from './draw.js';
 import { familyKinds, memberOf, withVisits, type FamilyKind, type FamilyMember } from './family.js';
 import { inverseAt, startOf } from './restart.js';
 import { sizesOf } from './sizes.js';
@@ -12,6 +16,7 @@ import type {
 	FittedMember,
 	PlannedComparison,
 	PlannedMember,
+	Start,
 	UnfittedMember,
 	World
 } from './types.js';
@@ -25,6 +30,9 @@ const VISITS_IN_ALL = 2;
 const WORTH_TWO_PARTS = 1.35;
 /** The share of the variance that a lasting offset holds in the world `weak`; a choice. */
 export const WEAK_SHARE = 0.1;
+
+/** The replicate of a world that only says where the others set out. */
+const PILOT = 2 ** 31;
 
 export const twoParts = ['level+slope', 'level+serial', 'serial+noise'] as const;
 
@@ -88,20 +96,29 @@ function readOptions(options: EvidenceOptions, design: ModelDesign) {
 	return { refits, seed, method, along };
 }
 
-/** Twofold gain of what is best of `rivals` over `held`. */
+/** What `work` gives; null where the statistics have no answer. */
+function attempt<T>(work: () => T): T | null {
+	try {
+		return work();
+	} catch (error) {
+		if (error instanceof StatsError && error.code !== 'stopped') return null;
+		throw error;
+	}
+}
+
+/** Gain of what is best of `rivals` over `held`. */
 const gainOf = (found: ReadonlyMap<string, number>, held: string, rivals: readonly string[]) =>
 	Math.max(...rivals.map((id) => found.get(id)!)) - found.get(held)!;
 
 /** The likelihood of a model is at least that of those within it, wherever the search for it ended. */
 export function noLessThanWithin(
 	value: number,
-	member: FamilyMember,
+	{ kind, visits, contains }: FamilyMember,
 	others: ReadonlyMap<string, number>
 ): number {
-	return member.contains.reduce(
-		(best, kind) => Math.max(best, others.get(withVisits(kind, member.visits)) ?? best),
-		value
-	);
+	const within = contains.map((other) => withVisits(other, visits));
+	if (visits) within.push(kind, ...contains);
+	return within.reduce((best, id) => Math.max(best, others.get(id) ?? best), value);
 }
 
 /**
@@ -185,40 +202,53 @@ export function planEvidence(design: ModelDesign, options: EvidenceOptions = {})
 				two.filter((id) => id !== at(kind))
 			);
 
-	const needed = new Map<string, Set<string>>();
-	for (const { held, rivals, under } of comparisons) {
-		const set = needed.get(under) ?? new Set<string>();
-		for (const id of [held, ...rivals]) set.add(id);
-		needed.set(under, set);
-	}
 	const order = [...models.keys()];
-	const worlds = [...needed].map(([id, set]): World => {
+	const worlds = [...new Set(comparisons.map((c) => c.under))].map((id): World => {
 		const from = id === 'weak' ? level : id;
-		const { fit } = fits.get(from)!;
+		const { fit, member } = fits.get(from)!;
+		const wanted = new Set(
+			comparisons.flatMap((c) => (c.under === id ? [c.held, ...c.rivals] : []))
+		);
+		// What lies within a model is refitted too, cheaply: it is the likelihood at that model's edges.
+		for (const of of [...wanted]) {
+			const { kind, visits, contains } = fits.get(of)!.member;
+			for (const other of contains) {
+				const within = withVisits(other, visits);
+				if (logs.has(within)) wanted.add(within);
+			}
+			if (visits && !member.visits) wanted.add(kind);
+		}
 		const working = [...fit.working];
 		if (id === 'weak')
 			working[fit.prepared.layout.subject] = Math.sqrt(WEAK_SHARE / (1 - WEAK_SHARE));
-		return {
-			id,
-			number: id === 'weak' ? numberOf.weak! : streamsOf(id),
-			from,
-			working,
-			// What lies within another is refitted before it.
-			refit: [...set].sort((a, b) => order.indexOf(a) - order.indexOf(b))
-		};
+		const number = id === 'weak' ? numberOf.weak! : streamsOf(id);
+		const refit = [...wanted].sort((a, b) => order.indexOf(a) - order.indexOf(b));
+		const boundary = id === 'weak' ? [] : fit.boundary;
+		const y = drawerOf(
+			fit.prepared,
+			method,
+			working
+		)(randomStream(seed, number * 2 ** 32 + PILOT).normal);
+		const starts = refit.map((to): Start => {
+			const pilot = withOutcome(fits.get(to)!.fit.prepared, y);
+			const found =
+				to === from
+					? { x: working, boundary }
+					: attempt(() => searchModel(pilot, method, supervision));
+			const { x, boundary: edges } = found ?? {
+				x: fits.get(to)!.fit.working,
+				boundary: fits.get(to)!.fit.boundary
+			};
+			const start = startOf(pilot, x, edges);
+			return { working: [...start], inverse: inverseAt(pilot, method, start) };
+		});
+		return { id, number, from, working, refit, starts };
 	});
 	const used = new Set(worlds.flatMap((world) => [world.from, ...world.refit]));
-	const members = [...used].map((id): PlannedMember => {
-		const { member, fit } = fits.get(id)!;
-		const start = startOf(fit);
-		return {
-			member,
-			logLikelihood: logs.get(id)!,
-			working: fit.working,
-			start: [...start],
-			inverse: inverseAt(fit, start)
-		};
-	});
+	const members = [...used].map((id): PlannedMember => ({
+		member: fits.get(id)!.member,
+		logLikelihood: logs.get(id)!
+	}));
 	return {
 		design,
 		method,

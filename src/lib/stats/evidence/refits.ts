@@ -1,19 +1,15 @@
 import { StatsError } from '../errors.js';
-import { summariseAt } from '../fit/fit-model.js';
 import { prepareModel, withOutcome, type PreparedModel } from '../fit/prepare-model.js';
-import { searchModel } from '../fit/search-model.js';
-import { outcomeDrawer } from '../fit/subject-view.js';
+import { searchModel, type SearchOptions } from '../fit/search-model.js';
 import { randomStream } from '../numeric/random.js';
 import type { Supervision } from '../types.js';
+import { drawerOf } from './draw.js';
+import type { FamilyMember } from './family.js';
 import { noLessThanWithin } from './plan-evidence.js';
-import type { EvidencePart, EvidencePlan, PlannedMember, World } from './types.js';
+import type { EvidencePart, EvidencePlan, Start } from './types.js';
 
 /** The slope at which a refit has converged; what is left of −2 log-likelihood is about its square, 1e-6. */
 const TOLERANCE = 1e-3;
-
-interface Refitter extends PlannedMember {
-	prepared: PreparedModel;
-}
 
 interface Refitted {
 	logLikelihood: number;
@@ -22,13 +18,14 @@ interface Refitted {
 
 /** Log-likelihood of one model on another outcome; null when the search did not converge, not even begun anew. */
 function refit(
-	{ prepared, start, inverse }: Refitter,
+	prepared: PreparedModel,
+	{ working, inverse }: Start,
 	plan: EvidencePlan,
 	y: Float64Array,
 	supervision: Supervision
 ): Refitted | null {
 	const another = withOutcome(prepared, y);
-	const attempt = (options: { start?: Float64Array; inverse?: Float64Array }) => {
+	const attempt = (options: SearchOptions) => {
 		try {
 			const found = searchModel(another, plan.method, {
 				...options,
@@ -41,23 +38,15 @@ function refit(
 			throw error;
 		}
 	};
+	// The likelihood at the edges is that of the models within this one, which are refitted before it.
 	const near = attempt({
-		start: Float64Array.from(start),
+		start: Float64Array.from(working),
+		edges: false,
 		...(inverse ? { inverse } : {})
 	});
 	if (near !== null) return { logLikelihood: near, restarted: false };
 	const anew = attempt({});
 	return anew === null ? null : { logLikelihood: anew, restarted: true };
-}
-
-function drawerOf(plan: EvidencePlan, world: World, prepared: PreparedModel) {
-	const fit = summariseAt(prepared, plan.method, Float64Array.from(world.working), {
-		converged: true,
-		gradient: 0,
-		evaluations: 0,
-		boundary: []
-	});
-	return outcomeDrawer(fit);
 }
 
 /**
@@ -81,16 +70,16 @@ export function evidencePart(
 		);
 	const supervision = shouldStop ? { shouldStop } : {};
 	const refitters = new Map(
-		plan.members.map((m): [string, Refitter] => [
+		plan.members.map((m): [string, { member: FamilyMember; prepared: PreparedModel }] => [
 			m.member.id,
-			{ ...m, prepared: prepareModel(plan.design, m.member.dependence) }
+			{ member: m.member, prepared: prepareModel(plan.design, m.member.dependence) }
 		])
 	);
 	const count = to - from;
 	const total = count * plan.worlds.reduce((sum, world) => sum + world.refit.length, 0);
 	let done = 0;
 	const worlds = plan.worlds.map((world) => {
-		const draw = drawerOf(plan, world, refitters.get(world.from)!.prepared);
+		const draw = drawerOf(refitters.get(world.from)!.prepared, plan.method, world.working);
 		const logLikelihood = world.refit.map(() => new Float64Array(count));
 		const failed = world.refit.map(() => new Uint8Array(count));
 		let restarted = 0;
@@ -100,12 +89,12 @@ export function evidencePart(
 			const found = new Map<string, number>();
 			world.refit.forEach((id, m) => {
 				if (shouldStop?.()) throw new StatsError('stopped', 'The refits were stopped.');
-				const refitter = refitters.get(id)!;
-				const value = refit(refitter, plan, y, supervision);
+				const { member, prepared } = refitters.get(id)!;
+				const value = refit(prepared, world.starts[m]!, plan, y, supervision);
 				if (value === null) failed[m]![k] = 1;
 				else {
 					const { logLikelihood: own } = value;
-					logLikelihood[m]![k] = noLessThanWithin(own, refitter.member, found);
+					logLikelihood[m]![k] = noLessThanWithin(own, member, found);
 					found.set(id, logLikelihood[m]![k]!);
 					if (value.restarted) restarted++;
 				}

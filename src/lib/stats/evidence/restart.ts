@@ -1,16 +1,20 @@
-import type { ModelFit } from '../fit/fit-model.js';
 import { objective } from '../fit/objective-of.js';
+import type { PreparedModel } from '../fit/prepare-model.js';
 import { invertPositive } from '../numeric/dense.js';
+import type { FitMethod } from '../plan.js';
 
 /**
  * Where refits to data like these set out: the estimates, with a component that stands at its edge moved inside, since
  * the slope is zero there and a search would never leave it.
  */
-export function startOf(fit: ModelFit): Float64Array {
-	const { layout } = fit.prepared;
-	const x = Float64Array.from(fit.working);
-	const last = layout.subject + (fit.dependence.subjectEffects === 'level-and-slope' ? 2 : 1);
-	for (const edge of fit.boundary) {
+export function startOf(
+	{ layout, dependence }: PreparedModel,
+	working: ArrayLike<number>,
+	boundary: readonly string[]
+): Float64Array {
+	const x = Float64Array.from(working);
+	const last = layout.subject + (dependence.subjectEffects === 'level-and-slope' ? 2 : 1);
+	for (const edge of boundary) {
 		if (edge === 'subject level') x[layout.subject] = 0.3;
 		if (edge === 'subject slope' || edge === 'level–slope correlation') x[last] = 0.2;
 		if (edge === 'visit') x[layout.visit] = 0.2;
@@ -18,7 +22,7 @@ export function startOf(fit: ModelFit): Float64Array {
 		if (edge === 'serial') x[layout.share] = 1.1;
 		if (edge === 'range' || edge === 'serial')
 			x[layout.range] =
-				fit.dependence.errors.along === 'visit'
+				dependence.errors.along === 'visit'
 					? 0.3
 					: Math.log(layout.smallestGap / layout.gapUnit / 1.5);
 		if (edge === 'range without end')
@@ -28,9 +32,13 @@ export function startOf(fit: ModelFit): Float64Array {
 }
 
 /** Inverse of the second derivatives of −2 log-likelihood at `x`, by central differences of its slope; or null. */
-export function inverseAt(fit: ModelFit, x: Float64Array): Float64Array | null {
+export function inverseAt(
+	prepared: PreparedModel,
+	method: FitMethod,
+	x: Float64Array
+): Float64Array | null {
 	const k = x.length;
-	const f = objective(fit.prepared, fit.method);
+	const f = objective(prepared, method);
 	const bend = new Float64Array(k * k);
 	const step = 1e-4;
 	for (let i = 0; i < k; i++) {

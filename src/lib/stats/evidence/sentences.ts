@@ -1,4 +1,5 @@
 import { memberOf, withVisits, type FamilyKind } from './family.js';
+import { twoParts } from './plan-evidence.js';
 import { RULED_OUT, SELDOM } from './verdict.js';
 import type {
 	Comparison,
@@ -76,8 +77,8 @@ function opening(plan: EvidencePlan, answers: EvidenceAnswers, find: Find): stri
 			seen,
 			'Whether this lasts or fades cannot be asked of these data, since only one of the two models can be fitted.'
 		];
-	const twoParts = standing.filter((id) => find(`more than ${kindOf(id)}` as ComparisonName));
-	const grounds = twoParts.map((id) => {
+	const mixed = standing.filter((id) => (twoParts as readonly string[]).includes(kindOf(id)));
+	const grounds = mixed.map((id) => {
 		const c = find(`more than ${kindOf(id)}` as ComparisonName)!;
 		const words = memberOf(kindOf(id), false).words;
 		return `Data drawn with ${words} would leave as much to another model of the family in ${howOften(c)}.`;
@@ -134,13 +135,14 @@ function opening(plan: EvidencePlan, answers: EvidenceAnswers, find: Find): stri
 
 const kindOf = (id: string) => id.replace(/\+visit$/, '') as FamilyKind;
 
-function drift(find: Find): string[] {
+function drift(answers: EvidenceAnswers, find: Find): string[] {
 	const c = find('slope beside level');
-	if (!c) return [];
+	// Where no lasting offset stands, a slope beside one is no question.
+	if (!c || answers.lastingOffset === 'no') return [];
 	const mixture =
 		c.mixture?.p == null
 			? ''
-			: `; the mixture of chi-squared distributions at the edge gives p = ${c.mixture.p < 1e-4 ? 'less than 0.0001' : c.mixture.p.toPrecision(2)}`;
+			: `; the mixture of chi-squared distributions at the edge gives ${c.mixture.p < 1e-4 ? 'p below 0.0001' : `p = ${c.mixture.p.toPrecision(2)}`}`;
 	return [
 		`A slope of its own for each subject, beside a lasting offset, gains ${digits(c.observed, 2)} in log-likelihood; with a lasting offset alone as much is gained in ${howOften(c)}${mixture}.`
 	];
@@ -153,7 +155,7 @@ function visits(plan: EvidencePlan, answers: EvidenceAnswers, find: Find): strin
 	if (given.length === 0) {
 		const why = plan.models.find((m) => m.id === 'level+visit' && !m.fitted);
 		return why && !why.fitted
-			? [`Whether visits move everyone together was not asked: ${why.reason}`]
+			? [`Whether visits move everyone together was not asked. ${why.reason}`]
 			: [];
 	}
 	const numbers = given.map((c) => {
@@ -195,15 +197,20 @@ export function sentencesOf(
 ): string[] {
 	const find: Find = (name) => result.comparisons.find((c) => c.name === name);
 	const { refits, restarted, failed } = result.refitted;
-	const unfitted = plan.models.filter((m) => !m.fitted && !m.id.endsWith('+visit'));
+	const reasons = new Map<string, string[]>();
+	for (const m of plan.models)
+		if (!m.fitted && !m.id.endsWith('+visit'))
+			reasons.set(m.reason, [...(reasons.get(m.reason) ?? []), m.words]);
 	const shaky = plan.models.filter((m) => m.fitted && !m.converged);
 	return [
 		...opening(plan, result.answers, find),
-		...drift(find),
+		...drift(result.answers, find),
 		...visits(plan, result.answers, find),
 		...sizes(result),
 		`Each model stands or falls by ${count(result.refits)} data sets drawn under it and refitted (seed ${result.seed}, ${count(refits)} refits): “often” is more than 1 in 20, and a model is ruled out at 1 in 100.${restarted > 0 ? ` ${count(restarted)} refits were begun anew.` : ''}${failed > 0 ? ` ${count(failed)} refits did not converge and count against every claim made here.` : ''}`,
-		...unfitted.map((m) => `Not fitted, ${m.words}: ${m.fitted ? '' : m.reason}`),
+		...[...reasons].map(
+			([reason, words]) => `Not fitted: ${words.map((w) => `“${w}”`).join(', ')}. ${reason}`
+		),
 		...shaky.map(
 			(m) => `The fit with ${m.words} did not converge; do not rely on what is said of it.`
 		)

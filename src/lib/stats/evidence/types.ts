@@ -140,10 +140,13 @@ export interface EvidenceResult {
 /** A model as a thread needs it: plain data. */
 export interface PlannedMember {
 	member: FamilyMember;
+	/** On the data as they are. */
 	logLikelihood: number;
-	/** Working parameters of the fit to the data, and where refits set out. */
+}
+
+/** Where refits of one model to the data sets of one world set out. */
+export interface Start {
 	working: number[];
-	start: number[];
 	/** Inverse of the second derivatives there, k × k; null where they are not positive definite. */
 	inverse: Float64Array | null;
 }
@@ -156,7 +159,10 @@ export interface World {
 	/** The model drawn from, and its working parameters. */
 	from: string;
 	working: number[];
+	/** What lies within another comes before it. */
 	refit: string[];
+	/** For each of `refit`. */
+	starts: Start[];
 }
 
 export interface PlannedComparison {

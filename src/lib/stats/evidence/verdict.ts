@@ -133,5 +133,7 @@ export function answersOf(plan: EvidencePlan, comparisons: readonly Comparison[]
 			lastingOffset: 'too-short',
 			fading: 'not-asked'
 		});
-	return finish(standingOfOnePart(p) ?? standingOfTwoParts(p));
+	const one = standingOfOnePart(p);
+	if (one && one.length > 1 && fitted('level+slope')) return finish(one, { drifting: 'too-short' });
+	return finish(one ?? standingOfTwoParts(p));
 }

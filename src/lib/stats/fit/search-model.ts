@@ -29,6 +29,8 @@ export interface SearchOptions extends Supervision {
 	inverse?: Float64Array;
 	/** √(g'Bg) below which it has converged; 1e-6 unless said otherwise. */
 	tolerance?: number;
+	/** False: components near their edge are left where the search ends; for those who know the likelihood there. */
+	edges?: boolean;
 }
 
 const MOST = 400;
@@ -185,7 +187,7 @@ export function searchModel(
 	let { value, gradient, converged } = descent;
 	const held = new Array<boolean>(layout.count).fill(false);
 	const boundary: string[] = [];
-	const edges = edgesOf(prepared);
+	const edges = options.edges === false ? [] : edgesOf(prepared);
 	for (let again = true; again;) {
 		again = false;
 		for (const edge of edges) {
