@@ -75,6 +75,21 @@ function countsOf(design: ModelDesign): Counted {
 	return counted;
 }
 
+/** How many different gaps lie between two rows of a subject, counted up to three; equal to nine digits is equal. */
+function distinctGaps(design: ModelDesign, along: 'time' | 'visit'): number {
+	const { subjectStart: start, time, visit } = design;
+	const found: number[] = [];
+	for (let s = 0; s + 1 < start.length && found.length < 3; s++)
+		for (let i = start[s]!; i < start[s + 1]!; i++)
+			for (let j = start[s]!; j < i; j++) {
+				const gap =
+					along === 'visit' ? Math.abs(visit[i]! - visit[j]!) : Math.abs(time[i]! - time[j]!);
+				const size = Math.abs(time[i]!) * 1e-15 + gap * 1e-9;
+				if (gap > 0 && found.every((g) => Math.abs(g - gap) > size)) found.push(gap);
+			}
+	return found.length;
+}
+
 /** Pairs of visits no subject has both of. */
 function unseenPair(design: ModelDesign): [string, string] | null {
 	const k = design.visits.length;
@@ -184,16 +199,19 @@ export function refuseUnidentifiedModel(design: ModelDesign, d: Dependence): voi
 			);
 		if (along === 'visit' && c.sameVisit)
 			refuse('A subject has two outcomes at the same visit, so errors cannot go by visit.');
-		if (structure === 'serial-with-noise' && c.most < 3)
+		const gaps = distinctGaps(design, along);
+		const needed = 1 + (structure === 'serial-with-noise' ? 1 : 0) + (hasLevel(d) ? 1 : 0);
+		if (gaps < needed) {
+			const parts = [
+				...(hasLevel(d) ? ['a lasting level'] : []),
+				'serial errors',
+				...(structure === 'serial-with-noise' ? ['measurement noise'] : [])
+			];
 			refuse(
-				'With two occasions per subject at most, serial errors cannot be told from measurement noise. Leave the noise out.',
-				{ occasions: c.most }
+				`Within subjects only ${gaps} different ${gaps === 1 ? 'gap' : 'gaps'} between occasions ${gaps === 1 ? 'is' : 'are'} seen, and ${parts.join(', ').replace(/, ([^,]*)$/, ' and $1')} can only be told apart by ${needed} or more. Leave a part out.`,
+				{ gaps, needed }
 			);
-		if (hasLevel(d) && c.most < 3)
-			refuse(
-				'With two occasions per subject at most, a lasting level cannot be told from serial errors. Leave one of them out.',
-				{ occasions: c.most }
-			);
+		}
 	}
 	if (
 		structure === 'toeplitz' ||

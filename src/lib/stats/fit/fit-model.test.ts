@@ -165,6 +165,37 @@ describe('order and labels', () => {
 		);
 	});
 
+	test.each([
+		['serial along visits', model('none', 'serial', { along: 'visit' })],
+		['with a variance per visit', model('level', 'serial', { along: 'visit', varianceBy: 'visit' })]
+	])('%s: visits held in another order of time hang together by visit', (_, dependence) => {
+		const plain = grid(14, 5, noisy);
+		// The second and third visit of every third subject change places in time, and so in the rows.
+		const other: ModelDesign = {
+			...plain,
+			visit: plain.visit.slice(),
+			y: plain.y.slice(),
+			x: plain.x.slice()
+		};
+		for (let s = 0; s < 14; s += 3) {
+			const i = s * 5 + 1;
+			for (const [to, from] of [
+				[i, i + 1],
+				[i + 1, i]
+			] as const) {
+				other.visit[to] = plain.visit[from]!;
+				other.y[to] = plain.y[from]!;
+				for (let j = 0; j < plain.p; j++) other.x[j * plain.n + to] = plain.x[j * plain.n + from]!;
+			}
+		}
+		const a = fitModel(plain, dependence, { method: 'reml' });
+		const b = fitModel(other, dependence, { method: 'reml' });
+		expectWithin(b.logLikelihood, a.logLikelihood, 1e-8);
+		const [s, t] = [a, b].map((f) => precisionOf(f, 'kenward-roger').test([0, 1, 0]));
+		expectRelative(t!.df, s!.df, 1e-6);
+		expectRelative(t!.standardError, s!.standardError, 1e-6);
+	});
+
 	test('the same input gives the same bits', () => {
 		for (const dependence of Object.values(referenceModels)) {
 			if (dependence.errors.structure === 'serial-with-noise') continue;
@@ -320,8 +351,13 @@ describe('refusals', () => {
 			/one subject/
 		],
 		['not-identified', grid(9, 2, noisy), model('level-and-slope', 'independent'), /two occasions/],
-		['not-identified', grid(9, 2, noisy), model('none', 'serial-with-noise'), /two occasions/],
-		['not-identified', grid(9, 2, noisy), model('level', 'serial'), /two occasions/],
+		[
+			'not-identified',
+			grid(9, 2, noisy),
+			model('none', 'serial-with-noise'),
+			/only 1 different gap/
+		],
+		['not-identified', grid(9, 2, noisy), model('level', 'serial'), /only 1 different gap/],
 		[
 			'too-few-subjects',
 			grid(4, 5, noisy),
@@ -365,6 +401,26 @@ describe('refusals', () => {
 			expect((thrown as StatsError).message).toMatch(sentence);
 			expect((thrown as StatsError).message).toMatch(/\.$/);
 		}
+	});
+
+	test('a mean that takes up all there is between subjects, or between visits', () => {
+		expect(() =>
+			fitModel(grid(2, 6, noisy), model('level', 'independent'), { method: 'reml' })
+		).toThrow(/2 subjects cannot carry 2 coefficients/);
+		const two = grid(8, 2, noisy);
+		expect(() =>
+			fitModel(two, model('none', 'independent', { visitEffects: true }), { method: 'reml' })
+		).toThrow(/2 coefficients for 2 visits/);
+	});
+
+	test('level, serial errors and noise need three different gaps', () => {
+		expect(() =>
+			fitModel(grid(20, 3, noisy), model('level', 'serial-with-noise'), { method: 'reml' })
+		).toThrow(/only 2 different gaps.*a lasting level, serial errors and measurement noise/);
+		expect(
+			fitModel(grid(20, 4, noisy), model('level', 'serial-with-noise'), { method: 'reml' })
+				.converged
+		).toBe(true);
 	});
 
 	test('a pair of visits that nobody has, and a lag', () => {

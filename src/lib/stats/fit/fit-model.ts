@@ -1,5 +1,6 @@
 import { naturalModel, type NaturalModel, type NaturalParameter } from '../dependence/natural.js';
 import { refuseUnidentifiedModel, refuseWithoutVariation } from '../dependence/identification.js';
+import { refuseSaturated } from '../dependence/saturation.js';
 import type { ModelDesign } from '../design/model-design.js';
 import { StatsError } from '../errors.js';
 import { toCoefficients } from '../numeric/orthonormal.js';
@@ -118,7 +119,9 @@ export function summariseAt(
 	);
 	if (!state.converged)
 		warnings.push(
-			'The search ended before the slope of the likelihood was flat; do not rely on these numbers.'
+			layout.shape >= 0
+				? 'The search did not come to rest. So many covariances may be too many for so few subjects; do not rely on these numbers, and try a structure with fewer parameters.'
+				: 'The search did not come to rest; do not rely on these numbers.'
 		);
 	const fit: ModelFit = {
 		prepared,
@@ -165,7 +168,7 @@ export function fitPrepared(prepared: PreparedModel, options: ModelFitOptions): 
 /**
  * Fits y = Xβ + Zb + v + e by REML or ML for any dependence of a plan.
  *
- * Errors: those of `refuseUnidentifiedModel` besides those of `fitPrepared`.
+ * Errors: those of `refuseUnidentifiedModel` and `refuseSaturated` besides those of `fitPrepared`.
  * Source: Laird & Ware (1982), Biometrics 38:963-974; Jennrich & Schluchter (1986), Biometrics 42:805-820.
  */
 export function fitModel(
@@ -174,5 +177,8 @@ export function fitModel(
 	options: ModelFitOptions
 ): ModelFit {
 	refuseUnidentifiedModel(design, dependence);
-	return fitPrepared(prepareModel(design, dependence), options);
+	const prepared = prepareModel(design, dependence);
+	refuseWithoutVariation(prepared);
+	refuseSaturated(prepared);
+	return fitPrepared(prepared, options);
 }

@@ -27,7 +27,7 @@ export function gapKernel(rows: Rows, layout: Layout, design: ModelDesign): Kern
 	const known = new Map<number, GapSums>();
 	const first = new Float64Array(width * width);
 	let last: GapSums | undefined;
-	if (n === 0) return null;
+	if (n === 0 || rows.order) return null;
 	let here = new Float64Array(width);
 	let back = new Float64Array(width);
 	for (let s = 0; s + 1 < subjectStart.length; s++) {

@@ -8,7 +8,7 @@ import type { Kernel } from './kernel.js';
 import { gapKernel } from './kernel-gaps.js';
 import { offsetKernel } from './kernel-offset.js';
 import type { Sizes } from './profile.js';
-import { rowsOf, type Rows } from './rows.js';
+import { rowsOf, visitOrder, type Rows } from './rows.js';
 import { subjectLoop } from './subject-loop.js';
 import { matrixWhitening } from './whiten-matrix.js';
 import { recursiveWhitening } from './whiten-recursive.js';
@@ -152,7 +152,8 @@ export function thinned(prepared: PreparedModel, subjects: number): PreparedMode
 		a: pick(rows.a, rows.c),
 		z: pick(rows.z, rows.q),
 		visit: less.visit,
-		subjectStart: start
+		subjectStart: start,
+		order: visitOrder(less, layout)
 	};
 	return {
 		...prepared,

@@ -1,5 +1,5 @@
 import type { ModelDesign } from '../design/model-design.js';
-import type { Layout } from '../dependence/layout.js';
+import { isSerial, type Layout } from '../dependence/layout.js';
 
 /** The columns of the likelihood, a row after the other: [Q r | visit indicators | Z]. */
 export interface Rows {
@@ -15,8 +15,26 @@ export interface Rows {
 	/** n × q; level 1, slope (time − origin) / unit. */
 	z: Float64Array;
 	subjectStart: Int32Array;
+	/** Row at each place when serial errors go by visit and somebody's visits are not in the order of time; else null. */
+	order: Int32Array | null;
 	/** c + visits: width of the moments. */
 	width: number;
+}
+
+/** Rows of each subject in the order of visits, or null when they already are or it does not matter. */
+export function visitOrder(design: ModelDesign, layout: Layout): Int32Array | null {
+	const { dependence } = layout;
+	if (!isSerial(dependence) || dependence.errors.along !== 'visit') return null;
+	const { subjectStart: start, visit } = design;
+	const order = Int32Array.from({ length: design.n }, (_, i) => i);
+	let disturbed = false;
+	for (let s = 0; s + 1 < start.length; s++) {
+		const own = order.subarray(start[s]!, start[s + 1]!);
+		if (!own.some((i, at) => at > 0 && visit[i]! < visit[i - 1]!)) continue;
+		disturbed = true;
+		own.sort((a, b) => visit[a]! - visit[b]!);
+	}
+	return disturbed ? order : null;
 }
 
 export function rowsOf(
@@ -52,6 +70,7 @@ export function rowsOf(
 		q,
 		z,
 		subjectStart: design.subjectStart,
+		order: visitOrder(design, layout),
 		width: c + visits
 	};
 }

@@ -34,6 +34,8 @@ export interface SearchOptions extends Supervision {
 }
 
 const MOST = 400;
+/** Starts that are followed to the end where there may be several valleys. */
+const STARTS = 8;
 /** More subjects than this and the first look is at some of them only. */
 const MANY = 1500;
 const SOME = 500;
@@ -107,16 +109,17 @@ function firstDescent(
 		.filter(({ value }) => Number.isFinite(value))
 		.sort((a, b) => a.value - b.value);
 	let best: Descent | null = null;
-	const { range, share } = prepared.layout;
-	// Serial errors may have a valley on either side: start from the best two that lie apart.
+	const { range, share, scale } = prepared.layout;
 	const chosen = points.slice(0, 1);
-	if (range >= 0) {
-		const other = points.find(
-			({ x }) =>
-				x[range] !== chosen[0]?.x[range] || (share >= 0 && x[share] !== chosen[0]?.x[share])
-		);
-		if (other) chosen.push(other);
-	}
+	// Serial errors may have several valleys: one start for each way of fading, the best few of them.
+	if (range >= 0)
+		for (const point of points) {
+			const other = ({ x }: { x: Float64Array }) =>
+				x[range] !== point.x[range] ||
+				(share >= 0 && x[share] !== point.x[share]) ||
+				(scale >= 0 && x[scale] !== point.x[scale]);
+			if (chosen.length < STARTS && chosen.every(other)) chosen.push(point);
+		}
 	for (const { x } of chosen) {
 		const found = descend(f, x, {
 			tolerance,

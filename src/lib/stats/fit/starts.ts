@@ -73,7 +73,7 @@ export function startingPoints(prepared: PreparedModel): Float64Array[] {
 	}
 	if (layout.visit >= 0) base[layout.visit] = 0.4;
 	const levels = layout.range >= 0 ? [0.5, 1.5] : [0.7];
-	const ranges = dependence.errors.along === 'visit' ? [0.2, 0.9] : [-0.5, 1, 2.5];
+	const ranges = dependence.errors.along === 'visit' ? [-0.6, 0.2, 1, 2] : [-0.7, 0.8, 2.5, 4];
 	const shares = [0.3, 0.9];
 	let points = [base];
 	const vary = (at: number, values: number[]) => {
@@ -94,5 +94,12 @@ export function startingPoints(prepared: PreparedModel): Float64Array[] {
 	}
 	vary(layout.range, ranges);
 	vary(layout.share, shares);
+	// Variances that differ have valleys of their own beside serial errors: also start from equal ones.
+	if (layout.range >= 0 && layout.scale >= 0)
+		points = points.flatMap((point) => {
+			const equal = point.slice();
+			equal.fill(0, layout.scale, layout.scale + layout.scaleClasses - 1);
+			return [point, equal];
+		});
 	return points;
 }

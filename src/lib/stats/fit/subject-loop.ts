@@ -22,19 +22,20 @@ export interface Whitening {
 
 /** Copies a subject's rows of [Q r U Z] into `columns`. */
 export function loadColumns(rows: Rows, subject: number, columns: Float64Array): number {
-	const { c, a, visits, visit, q, z, subjectStart, width } = rows;
+	const { c, a, visits, visit, q, z, subjectStart, order, width } = rows;
 	const w = width + q;
 	const from = subjectStart[subject]!;
 	const count = subjectStart[subject + 1]! - from;
 	for (let i = 0; i < count; i++) {
 		const to = i * w;
-		const at = (from + i) * c;
+		const row = order ? order[from + i]! : from + i;
+		const at = row * c;
 		for (let j = 0; j < c; j++) columns[to + j] = a[at + j]!;
 		if (visits > 0) {
 			for (let k = c; k < width; k++) columns[to + k] = 0;
-			columns[to + c + visit[from + i]!] = 1;
+			columns[to + c + visit[row]!] = 1;
 		}
-		for (let e = 0; e < q; e++) columns[to + width + e] = z[(from + i) * q + e]!;
+		for (let e = 0; e < q; e++) columns[to + width + e] = z[row * q + e]!;
 	}
 	return count;
 }

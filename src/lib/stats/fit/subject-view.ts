@@ -1,4 +1,4 @@
-import { occasionsOf, patternKey } from '../dependence/natural.js';
+import { occasionsOf, patternKey } from '../dependence/occasions.js';
 import { subjectCovariance } from '../dependence/layout.js';
 import { StatsError } from '../errors.js';
 import { choleskyInPlace } from '../numeric/dense.js';

@@ -19,6 +19,8 @@ export function recursiveWhitening(rows: Rows, layout: Layout, design: ModelDesi
 	const serial = isSerial(dependence);
 	const w = rows.width + rows.q;
 	const most = layout.mostPerSubject;
+	const { order } = rows;
+	const rowAt = (place: number) => (order ? order[place]! : place);
 	const classOf = (subject: number, row: number) =>
 		errors.varianceBy === 'visit'
 			? design.visit[row]!
@@ -54,7 +56,7 @@ export function recursiveWhitening(rows: Rows, layout: Layout, design: ModelDesi
 		for (let i = 0; i < count; i++) {
 			if (serial && i > 0) {
 				if (errors.along === 'visit') {
-					const gap = design.visit[from + i]! - design.visit[from + i - 1]!;
+					const gap = design.visit[rowAt(from + i)]! - design.visit[rowAt(from + i - 1)]!;
 					phi[i] = rho ** gap;
 					rest[i] = 1 - phi[i]! ** 2;
 					phiSlope[i] = gap * rho ** (gap - 1) * (1 - rho * rho);
@@ -66,7 +68,7 @@ export function recursiveWhitening(rows: Rows, layout: Layout, design: ModelDesi
 				}
 			}
 			if (atScale >= 0) {
-				const sd = deviations[classOf(subject, from + i)]!;
+				const sd = deviations[classOf(subject, rowAt(from + i))]!;
 				const by = 1 / sd;
 				for (let j = 0; j < w; j++) columns[i * w + j]! *= by;
 				log += 2 * Math.log(sd);
@@ -146,7 +148,7 @@ export function recursiveWhitening(rows: Rows, layout: Layout, design: ModelDesi
 						for (let k = 0; k < w; k++) sum += h[j * w + k]! * columns[i * w + k]!;
 						form += sum * columns[i * w + j]!;
 					}
-					scaleSlope[classOf(subject, from + i)]! += 2 - 2 * form;
+					scaleSlope[classOf(subject, rowAt(from + i))]! += 2 - 2 * form;
 				}
 				return;
 			}
@@ -223,7 +225,7 @@ export function recursiveWhitening(rows: Rows, layout: Layout, design: ModelDesi
 					for (let k = 0; k < w; k++) sum += h[j * w + k]! * he[k]!;
 					form += sum * columns[at + j]!;
 				}
-				scaleSlope[classOf(subject, from + i)]! += 2 - 2 * form;
+				scaleSlope[classOf(subject, rowAt(from + i))]! += 2 - 2 * form;
 			}
 		},
 		finish(slope) {

@@ -210,12 +210,20 @@ export function componentIntervals(
 		const first = kind === 'covariance' ? 0.2 * size : 0.3;
 		const find = (direction: 1 | -1) =>
 			limit(constrained(fit, name, kind, supervision), scale, from, direction, rise, lowest, first);
+		// Farther out than any data can tell from infinity.
+		const endless =
+			kind === 'positive'
+				? 1e6 * fit.prepared.layout.longestSpan
+				: kind === 'variance' && !name.startsWith('subject slope')
+					? 1e8 * size
+					: Infinity;
+		const found = find(1);
 		const floor = kind === 'correlation' ? -1 : kind === 'covariance' ? null : 0;
 		const ceiling = kind === 'correlation' || kind === 'share' ? 1 : null;
 		return {
 			...component,
 			lower: zero ? 0 : (find(-1) ?? floor),
-			upper: find(1) ?? ceiling
+			upper: found !== null && found < endless ? found : ceiling
 		};
 	});
 }

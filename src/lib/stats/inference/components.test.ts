@@ -95,6 +95,13 @@ describe('profile limits', () => {
 		expect(profileAt(fit.prepared, fit.method, Float64Array.from(fit.working))).not.toBeNull();
 	});
 
+	test('a range that the data bound from below only has no upper limit, rather than an enormous one', () => {
+		const limits = componentIntervals(fitOf('btheb', 'M3n.REML'));
+		const range = limits.find((c) => c.name === 'range')!;
+		expect(range.lower).toBeGreaterThan(0);
+		expect(range.upper).toBeNull();
+	});
+
 	test('a component at zero has zero for its lower limit and a positive upper one', () => {
 		const visit = componentIntervals(fitOf('sleepstudy', 'M5.REML')).find(
 			(c) => c.name === 'visit'
@@ -119,6 +126,25 @@ describe('likelihood-ratio tests agree with the collection', () => {
 		// The collection calls a vanishing continuous-time correlation interior and says to halve it.
 		const halved = expected.alternative === 'M3' ? expected.p_mixture / 2 : expected.p_mixture;
 		if (expected.statistic > 1e-5) expectRelative(ours.p!, halved, 1e-4, 'p');
+	});
+
+	test('parameters inside their space are counted: chi-squared on their number', () => {
+		const cs = fitOf('orthodont', 'M8cs_cat.REML');
+		const others: [string, number][] = [
+			['M8csh_cat', 3],
+			['M8toep_cat', 2],
+			['M7_cat', 8]
+		];
+		for (const [model, df] of others) {
+			const larger = fitOf('orthodont', `${model}.REML`);
+			const ours = likelihoodRatioTest(cs, larger);
+			expectRelative(ours.statistic, 2 * (larger.logLikelihood - cs.logLikelihood), 1e-12);
+			expectRelative(ours.p!, chiSquareTail(ours.statistic, df), 1e-12);
+			expect(ours.mixture!.at(-1)).toBe(1);
+			expect(ours.mixture!.length).toBe(df + 1);
+		}
+		// And not the other way round.
+		expect(likelihoodRatioTest(fitOf('orthodont', 'M7_cat.REML'), cs).p).toBeNull();
 	});
 
 	test('a visit variance is left to the bootstrap, and so is level against serial', () => {

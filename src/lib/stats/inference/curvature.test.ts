@@ -1,13 +1,14 @@
 import { Matrix, inverse } from 'ml-matrix';
 import { describe, expect, test } from 'vitest';
-import { occasionsOf } from '../dependence/natural.js';
+import { occasionsOf } from '../dependence/occasions.js';
 import { summariseAt } from '../fit/fit-model.js';
 import { prepareModel } from '../fit/prepare-model.js';
 import { layoutOf } from '../dependence/layout.js';
 import type { Dependence } from '../plan.js';
 import { expectWithin } from '../reference/close.js';
 import { firstSubjects, referenceDesign } from '../reference/reference-design.js';
-import { covarianceFrom, curvatureAt, precisionOf } from './precision.js';
+import { covarianceFrom, curvatureAt } from './fit-curvature.js';
+import { precisionOf } from './precision.js';
 
 const design = firstSubjects(
 	referenceDesign('btheb', ['(Intercept)', 'baseline', 'time', 'arm', 'time:arm']),

@@ -1,5 +1,5 @@
 import type { ModelFit } from '../fit/fit-model.js';
-import { covarianceFrom, curvatureAt } from './precision.js';
+import { covarianceFrom, curvatureAt } from './fit-curvature.js';
 
 /**
  * Covariance of the estimated parameters of the covariance, from the observed information; on the data's own scale,

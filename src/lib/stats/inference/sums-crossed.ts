@@ -8,7 +8,7 @@ import {
 	product,
 	solveLower
 } from '../numeric/dense.js';
-import { patternsOf, whitenPattern } from './block-curvature.js';
+import { patternsOf, whitenPattern } from './whitened-pattern.js';
 import type { CurvatureSums } from './curvature-sums.js';
 import { whitenedMean } from './sums-within.js';
 

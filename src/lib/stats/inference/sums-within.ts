@@ -1,7 +1,7 @@
 import type { NaturalModel } from '../dependence/natural.js';
 import type { PreparedModel } from '../fit/prepare-model.js';
 import { inner, product, solveLower } from '../numeric/dense.js';
-import { patternsOf, whitenPattern, type WhitenedPattern } from './block-curvature.js';
+import { patternsOf, whitenPattern, type WhitenedPattern } from './whitened-pattern.js';
 import type { CurvatureSums } from './curvature-sums.js';
 
 interface Kept {

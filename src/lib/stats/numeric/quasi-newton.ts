@@ -25,6 +25,9 @@ export interface DescentOptions {
 	beforeStep?: (evaluations: number) => void;
 }
 
+/** Length of the first step, before anything is known of the curvature: short, so as not to leave the valley. */
+const FIRST = 0.25;
+
 const dot = (a: Float64Array, b: Float64Array) => {
 	let sum = 0;
 	for (let i = 0; i < a.length; i++) sum += a[i]! * b[i]!;
@@ -75,7 +78,7 @@ export function descend(
 	let { value, slope } = first;
 	let given = options.inverse !== undefined;
 	let b: Float64Array =
-		options.inverse?.slice() ?? unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
+		options.inverse?.slice() ?? unit(k, FIRST / Math.max(1, Math.sqrt(dot(slope, slope))));
 	let restarted = false;
 	for (;;) {
 		options.beforeStep?.(evaluations);
@@ -83,7 +86,7 @@ export function descend(
 		for (let i = 0; i < k; i++) step[i] = -step[i]!;
 		let along = dot(step, slope);
 		if (!(along <= 0)) {
-			b = unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
+			b = unit(k, FIRST / Math.max(1, Math.sqrt(dot(slope, slope))));
 			step = slope.map((g, i) => -g * b[i * k + i]!);
 			along = dot(step, slope);
 		}
@@ -135,7 +138,7 @@ export function descend(
 			if (restarted) return done(gradient <= 1e3 * options.tolerance);
 			restarted = true;
 			given = false;
-			b = unit(k, 1 / Math.max(1, Math.sqrt(dot(slope, slope))));
+			b = unit(k, FIRST / Math.max(1, Math.sqrt(dot(slope, slope))));
 			continue;
 		}
 		restarted = false;

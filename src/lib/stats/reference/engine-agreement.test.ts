@@ -1,7 +1,8 @@
 import { describe, expect, test } from 'vitest';
 import { fitPrepared, type ModelFit } from '../fit/fit-model.js';
 import { prepareModel } from '../fit/prepare-model.js';
-import { curvatureAt, precisionOf } from '../inference/precision.js';
+import { curvatureAt } from '../inference/fit-curvature.js';
+import { precisionOf } from '../inference/precision.js';
 import { parameterCovariance } from '../inference/parameter-covariance.js';
 import type { FitMethod } from '../plan.js';
 import { expectRelative, expectWithin } from './close.js';
@@ -121,7 +122,9 @@ describe.each(inside)('$set, $key', ({ set, key, expected }) => {
 	if (expected.cov_varcomp_observed_information)
 		test('the covariance of the parameters agrees', () => {
 			const { names, covariance } = parameterCovariance(fit);
-			const theirs = Object.keys(expected.varcomp).map((name) => names.indexOf(parameterName(key, name)));
+			const theirs = Object.keys(expected.varcomp).map((name) =>
+				names.indexOf(parameterName(key, name))
+			);
 			const want = expected.cov_varcomp_observed_information!;
 			theirs.forEach((a, i) =>
 				theirs.forEach((b, j) =>
@@ -192,7 +195,8 @@ describe.each(inside)('$set, $key', ({ set, key, expected }) => {
 	const packages = expected.pbkrtest ?? expected.lmerTest_satterthwaite;
 	if (packages)
 		test('the packages that publish these degrees of freedom agree', () => {
-			const weights = (name: string) => expected.coef_names.map((other) => (other === name ? 1 : 0));
+			const weights = (name: string) =>
+				expected.coef_names.map((other) => (other === name ? 1 : 0));
 			if (expected.pbkrtest) {
 				const precision = precisionOf(fit, 'kenward-roger');
 				for (const [name, e] of Object.entries(expected.pbkrtest.coef)) {

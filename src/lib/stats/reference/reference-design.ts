@@ -40,7 +40,10 @@ export function referenceDesign(set: ReferenceSet, names: readonly string[]): Mo
 		all
 			.map((row, i) => ({ row, i }))
 			.filter(({ row }) => row.subject === label)
-			.sort((a, b) => Number(a.row.time) - Number(b.row.time) || Number(a.row.visit) - Number(b.row.visit))
+			.sort(
+				(a, b) =>
+					Number(a.row.time) - Number(b.row.time) || Number(a.row.visit) - Number(b.row.visit)
+			)
 	);
 	const n = order.length;
 	const p = names.length;
@@ -64,7 +67,7 @@ export function referenceDesign(set: ReferenceSet, names: readonly string[]): Mo
 		subjectStart: start,
 		subjects: labels,
 		subjectGroup: Int32Array.from(labels, (label) =>
-			Math.max(0, arms.indexOf(all.find((r) => r.subject === label)!.arm ?? ""))
+			Math.max(0, arms.indexOf(all.find((r) => r.subject === label)!.arm ?? ''))
 		),
 		groups: arms,
 		rowOf: Int32Array.from(order, ({ i }) => i),

@@ -1,5 +1,6 @@
-import type { Derivatives, NaturalModel, Occasions } from '../dependence/natural.js';
-import { occasionsOf, patternKey } from '../dependence/natural.js';
+import type { NaturalModel } from '../dependence/natural.js';
+import type { Derivatives, Occasions } from '../dependence/occasions.js';
+import { occasionsOf, patternKey } from '../dependence/occasions.js';
 import { StatsError } from '../errors.js';
 import type { PreparedModel } from '../fit/prepare-model.js';
 import { choleskyInPlace, solveLower } from '../numeric/dense.js';
