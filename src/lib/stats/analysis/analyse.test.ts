@@ -1,7 +1,7 @@
 import fc from 'fast-check';
 import { describe, expect, test } from 'vitest';
 import type { Columns } from '../design/columns.js';
-import { occasionsOf } from '../dependence/natural.js';
+import { occasionsOf } from '../dependence/occasions.js';
 import { StatsError } from '../errors.js';
 import type { AnalysisPlan, Mean } from '../plan.js';
 import { readPlan } from '../read-plan.js';
