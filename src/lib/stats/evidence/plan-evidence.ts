@@ -35,6 +35,8 @@ export const WEAK_SHARE = 0.1;
 const PILOT = 2 ** 31;
 
 export const twoParts = ['level+slope', 'level+serial', 'serial+noise'] as const;
+/** The one model of three parts; asked of only where it gains as much over every model of two. */
+export const threeParts = 'level+serial+noise';
 
 /** The random streams of a world; they stay what they are whichever worlds there are. */
 const numberOf: Record<string, number> = {
@@ -44,7 +46,8 @@ const numberOf: Record<string, number> = {
 	'level+slope': 4,
 	'level+serial': 5,
 	'serial+noise': 6,
-	weak: 7
+	weak: 7,
+	'level+serial+noise': 8
 };
 const streamsOf = (id: string) => {
 	const visits = id.endsWith('+visit');
@@ -156,7 +159,8 @@ export function planEvidence(design: ModelDesign, options: EvidenceOptions = {})
 	};
 	const visitsInAll =
 		Math.max(gain('level', 'level+visit'), gain('serial', 'serial+visit')) > VISITS_IN_ALL;
-	if (visitsInAll) for (const kind of ['independent', ...twoParts] as const) add(kind, true);
+	if (visitsInAll)
+		for (const kind of ['independent', ...twoParts, threeParts] as const) add(kind, true);
 	const at = (kind: FamilyKind) => withVisits(kind, visitsInAll);
 
 	const comparisons: PlannedComparison[] = [];
@@ -194,13 +198,17 @@ export function planEvidence(design: ModelDesign, options: EvidenceOptions = {})
 	compare('visit beside serial', 'serial', ['serial+visit']);
 	const best = Math.max(...[level, serial].map((id) => logs.get(id) ?? -Infinity));
 	const bestOfTwo = Math.max(...two.map((id) => logs.get(id) ?? -Infinity));
-	if (Number.isFinite(best) && bestOfTwo - best > WORTH_TWO_PARTS)
-		for (const kind of twoParts)
+	if (Number.isFinite(best) && bestOfTwo - best > WORTH_TWO_PARTS) {
+		const three = at(threeParts);
+		const worth = (logs.get(three) ?? -Infinity) - bestOfTwo > WORTH_TWO_PARTS;
+		const candidates = worth ? [...two, three] : two;
+		for (const kind of worth ? ([...twoParts, threeParts] as const) : twoParts)
 			compare(
 				`more than ${kind}`,
 				at(kind),
-				two.filter((id) => id !== at(kind))
+				candidates.filter((id) => id !== at(kind))
 			);
+	}
 
 	const order = [...models.keys()];
 	const worlds = [...new Set(comparisons.map((c) => c.under))].map((id): World => {

@@ -1,5 +1,5 @@
 import { memberOf, withVisits, type FamilyKind } from './family.js';
-import { twoParts } from './plan-evidence.js';
+import { threeParts, twoParts } from './plan-evidence.js';
 import { RULED_OUT, SELDOM } from './verdict.js';
 import type {
 	Comparison,
@@ -77,7 +77,7 @@ function opening(plan: EvidencePlan, answers: EvidenceAnswers, find: Find): stri
 			seen,
 			'Whether this lasts or fades cannot be asked of these data, since only one of the two models can be fitted.'
 		];
-	const mixed = standing.filter((id) => (twoParts as readonly string[]).includes(kindOf(id)));
+	const mixed = standing.filter((id) => [...twoParts, threeParts].includes(kindOf(id) as never));
 	const grounds = mixed.map((id) => {
 		const c = find(`more than ${kindOf(id)}` as ComparisonName)!;
 		const words = memberOf(kindOf(id), false).words;

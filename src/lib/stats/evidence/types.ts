@@ -89,7 +89,8 @@ export type ComparisonName =
 	| 'visit beside serial'
 	| 'more than level+slope'
 	| 'more than level+serial'
-	| 'more than serial+noise';
+	| 'more than serial+noise'
+	| 'more than level+serial+noise';
 
 export type Answer = 'yes' | 'no' | 'too-short' | 'not-asked';
 

@@ -1,5 +1,5 @@
 import { hasDrift, hasFading, hasLevel, memberOf, withVisits, type FamilyKind } from './family.js';
-import { twoParts } from './plan-evidence.js';
+import { threeParts, twoParts } from './plan-evidence.js';
 import type {
 	Answer,
 	Comparison,
@@ -18,7 +18,7 @@ export const SELDOM = 0.05;
 export const RULED_OUT = 0.01;
 
 type OnePart = 'level' | 'serial';
-type TwoPart = (typeof twoParts)[number];
+type ManyPart = (typeof twoParts)[number] | typeof threeParts;
 
 const answerOf = (standing: readonly FamilyKind[], has: (kind: FamilyKind) => boolean): Answer =>
 	standing.length === 0
@@ -47,11 +47,13 @@ function standingOfOnePart(p: (name: ComparisonName) => number | null): OnePart[
 	return often.length === 0 ? [...tenable] : often;
 }
 
-/** Models of two parts that would often produce data like these; failing that, those not ruled out. */
-function standingOfTwoParts(p: (name: ComparisonName) => number | null): TwoPart[] {
-	const known = twoParts.filter((kind) => p(`more than ${kind}`) !== null);
-	const often = known.filter((kind) => p(`more than ${kind}`)! > SELDOM);
-	return often.length > 0 ? often : known.filter((kind) => p(`more than ${kind}`)! > RULED_OUT);
+/** Models of two parts that would often produce data like these; failing that, those not ruled out; then that of three. */
+function standingOfManyParts(p: (name: ComparisonName) => number | null): ManyPart[] {
+	const above = (kind: ManyPart, share: number) => (p(`more than ${kind}`) ?? 0) > share;
+	const often = twoParts.filter((kind) => above(kind, SELDOM));
+	if (often.length > 0) return often;
+	const left = twoParts.filter((kind) => above(kind, RULED_OUT));
+	return left.length === 0 && above(threeParts, RULED_OUT) ? [threeParts] : left;
 }
 
 function verdictOf(standing: readonly FamilyKind[]): Verdict {
@@ -90,7 +92,7 @@ function togetherOf(
  * those left, one stands that would often (above 1 in 20) leave the other so far behind when the other would not; both, when
  * both would (or neither): `too-short`.
  * 3. Both ruled out: models of two parts, each against the best of the others under itself. Those that would often lose by as
- * much stand; failing any, those not ruled out; failing these, `outside`.
+ * much stand; failing any, those not ruled out; failing these, the model of three parts unless it is ruled out; else `outside`.
  * Without a lasting offset in the family (one subject) the data never speak for one.
  */
 export function answersOf(plan: EvidencePlan, comparisons: readonly Comparison[]): EvidenceAnswers {
@@ -135,5 +137,5 @@ export function answersOf(plan: EvidencePlan, comparisons: readonly Comparison[]
 		});
 	const one = standingOfOnePart(p);
 	if (one && one.length > 1 && fitted('level+slope')) return finish(one, { drifting: 'too-short' });
-	return finish(one ?? standingOfTwoParts(p));
+	return finish(one ?? standingOfManyParts(p));
 }
