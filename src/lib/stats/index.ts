@@ -36,6 +36,7 @@ export { subjectEffects } from './prediction/subject-effects.js';
 export { fittedLines } from './prediction/lines.js';
 export { marginalResiduals, residualPoints } from './prediction/residuals.js';
 export * from './monitoring/index.js';
+export * from './evidence/index.js';
 export * from './power/index.js';
 export { randomStream, type RandomStream } from './numeric/random.js';
 export type * from './types.js';

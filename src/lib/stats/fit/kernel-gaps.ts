@@ -6,7 +6,7 @@ import type { Rows } from './rows.js';
 /** More different gaps than this and the rows are passed at every evaluation instead. */
 const MOST_GAPS = 100;
 
-/** Sums over the neighbouring rows that lie a gap apart, lower halves of c × c: of a a', a b' + b a' and b b'. */
+/** Sums over the neighbouring rows that lie a gap apart, lower halves of w × w, w the width of [Q r U]: of a a', a b' + b a' and b b'. */
 interface GapSums {
 	gap: number;
 	count: number;
@@ -22,19 +22,29 @@ interface GapSums {
  * too many. Source: Jones & Boadi-Boateng (1991), Biometrics 47:161-175, for unequal gaps.
  */
 export function gapKernel(rows: Rows, layout: Layout, design: ModelDesign): Kernel | null {
-	const { n, c, a, subjectStart } = rows;
+	const { n, c, a, visits, visit, width, subjectStart } = rows;
 	const byVisit = layout.dependence.errors.along === 'visit';
 	const known = new Map<number, GapSums>();
-	const first = new Float64Array(c * c);
+	const first = new Float64Array(width * width);
 	let last: GapSums | undefined;
 	if (n === 0 || rows.order) return null;
+	let here = new Float64Array(width);
+	let back = new Float64Array(width);
 	for (let s = 0; s + 1 < subjectStart.length; s++) {
 		const from = subjectStart[s]!;
 		for (let i = from; i < subjectStart[s + 1]!; i++) {
+			[here, back] = [back, here];
 			const at = i * c;
+			for (let j = 0; j < c; j++) here[j] = a[at + j]!;
+			if (visits > 0) {
+				here.fill(0, c);
+				here[c + visit[i]!] = 1;
+			}
 			if (i === from) {
-				for (let j = 0; j < c; j++)
-					for (let k = 0; k <= j; k++) first[j * c + k]! += a[at + j]! * a[at + k]!;
+				for (let j = 0; j < width; j++) {
+					const u = here[j]!;
+					if (u !== 0) for (let k = 0; k <= j; k++) first[j * width + k]! += u * here[k]!;
+				}
 				continue;
 			}
 			const gap = byVisit
@@ -44,22 +54,22 @@ export function gapKernel(rows: Rows, layout: Layout, design: ModelDesign): Kern
 				last = known.get(gap);
 				if (!last) {
 					if (known.size >= MOST_GAPS) return null;
-					const make = () => new Float64Array(c * c);
+					const make = () => new Float64Array(width * width);
 					last = { gap, count: 0, now: make(), both: make(), before: make() };
 					known.set(gap, last);
 				}
 			}
 			last.count++;
 			const { now, both, before } = last;
-			const back = at - c;
-			for (let j = 0; j < c; j++) {
-				const u = a[at + j]!;
-				const v = a[back + j]!;
-				const to = j * c;
+			for (let j = 0; j < width; j++) {
+				const u = here[j]!;
+				const v = back[j]!;
+				if (u === 0 && v === 0) continue;
+				const to = j * width;
 				for (let k = 0; k <= j; k++) {
-					now[to + k]! += u * a[at + k]!;
-					both[to + k]! += u * a[back + k]! + v * a[at + k]!;
-					before[to + k]! += v * a[back + k]!;
+					now[to + k]! += u * here[k]!;
+					both[to + k]! += u * back[k]! + v * here[k]!;
+					before[to + k]! += v * back[k]!;
 				}
 			}
 		}
@@ -86,7 +96,8 @@ export function gapKernel(rows: Rows, layout: Layout, design: ModelDesign): Kern
 				for (let i = 0; i < m.length; i++)
 					m[i]! += (now[i]! - phi * both[i]! + phi * phi * before[i]!) / rest;
 			}
-			for (let j = 0; j < c; j++) for (let k = 0; k < j; k++) m[k * c + j] = m[j * c + k]!;
+			for (let j = 0; j < width; j++)
+				for (let k = 0; k < j; k++) m[k * width + j] = m[j * width + k]!;
 			return { m, logDeterminant: log };
 		},
 		backward(x, h, slope) {
@@ -94,9 +105,9 @@ export function gapKernel(rows: Rows, layout: Layout, design: ModelDesign): Kern
 			for (const { gap, count, now, both, before } of gaps) {
 				const { phi, rest, slope: dphi } = stepAt(x, gap);
 				let sum = (-2 * phi * count) / rest;
-				for (let j = 0; j < c; j++)
+				for (let j = 0; j < width; j++)
 					for (let k = 0; k <= j; k++) {
-						const i = j * c + k;
+						const i = j * width + k;
 						const form = now[i]! - phi * both[i]! + phi * phi * before[i]!;
 						const change =
 							(2 * phi * before[i]! - both[i]!) / rest + (2 * phi * form) / (rest * rest);

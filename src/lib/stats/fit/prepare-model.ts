@@ -38,7 +38,6 @@ export function kernelFor(rows: Rows, layout: Layout, design: ModelDesign): Kern
 	if (
 		layout.dependence.errors.structure === 'serial' &&
 		layout.q === 0 &&
-		rows.visits === 0 &&
 		layout.scaleClasses === 1
 	) {
 		const kernel = gapKernel(rows, layout, design);

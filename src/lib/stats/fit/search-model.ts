@@ -25,8 +25,12 @@ export interface Found {
 export interface SearchOptions extends Supervision {
 	/** Working parameters of a fit to like data: the search starts there and nowhere else. */
 	start?: Float64Array;
+	/** Inverse of the second derivatives of −2 log-likelihood near `start`, k × k: the search need not learn it. */
+	inverse?: Float64Array;
 	/** √(g'Bg) below which it has converged; 1e-6 unless said otherwise. */
 	tolerance?: number;
+	/** False: components near their edge are left where the search ends; for those who know the likelihood there. */
+	edges?: boolean;
 }
 
 const MOST = 400;
@@ -157,7 +161,7 @@ export function searchModel(
 			...(inverse ? { inverse } : {}),
 			beforeStep: () => refuseStop(options)
 		});
-	if (options.start) descent = descendFrom(options.start);
+	if (options.start) descent = descendFrom(options.start, options.inverse);
 	else if (subjects > MANY && layout.count > 0) {
 		const some = firstDescent(thinned(prepared, SOME), method, 1e-4, options);
 		if (some) {
@@ -186,7 +190,7 @@ export function searchModel(
 	let { value, gradient, converged } = descent;
 	const held = new Array<boolean>(layout.count).fill(false);
 	const boundary: string[] = [];
-	const edges = edgesOf(prepared);
+	const edges = options.edges === false ? [] : edgesOf(prepared);
 	for (let again = true; again;) {
 		again = false;
 		for (const edge of edges) {
