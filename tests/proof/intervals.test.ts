@@ -18,7 +18,7 @@ test.each<[string, Question]>([
 	['level and slope, everybody stays', slopes(0.6, stays)],
 	['level and slope, three in ten leave', slopes(0.6, leaves)]
 ])(
-	'20 subjects, %s: 95 %% intervals by REML and Kenward–Roger cover as often as they say',
+	'20 subjects, %s: intervals by REML and Kenward–Roger at 95 in 100 cover as often as they say',
 	(what, question) => {
 		const study = {
 			question,
