@@ -21,20 +21,20 @@ export {
 	type SubjectHistory,
 	type SubjectOccasion
 } from './prediction/next-value.js';
+export {
+	subjectEffects,
+	visitEffects,
+	type PredictedEffect,
+	type SubjectEffects,
+	type VisitEffect
+} from './prediction/subject-effects.js';
+export { fittedRows, type FittedRows } from './prediction/conditional-fit.js';
+export { fittedLines, type MeanLine, type MeanPoint } from './prediction/lines.js';
 export { occasionsOf, type Due, type Occasions } from './missing/occasions.js';
 export { missingPatterns, type MissingPattern } from './missing/patterns.js';
 export { dropoutByGroup, type DropoutByGroup } from './missing/dropout.js';
 export { historyTest, type HistoryTest } from './missing/history.js';
 export { analyseGrowth } from './growth/analyse-growth.js';
-export { buildDesign, type Design } from './design/design.js';
-export { fitMixed, type Fit, type FitOptions } from './fit/fit-mixed.js';
-export { precisionRule, type PrecisionRule } from './inference/degrees-of-freedom.js';
-export { testContrast } from './inference/contrast.js';
-export { effectiveSampleSize, intraclassCorrelation } from './inference/effective-size.js';
-export { varianceIntervals } from './inference/variance-intervals.js';
-export { subjectEffects } from './prediction/subject-effects.js';
-export { fittedLines } from './prediction/lines.js';
-export { marginalResiduals, residualPoints } from './prediction/residuals.js';
 export * from './monitoring/index.js';
 export * from './power/index.js';
 export { randomStream, type RandomStream } from './numeric/random.js';
