@@ -15,12 +15,9 @@ export * as contrasts from './design/contrasts.js';
 export { readPlan } from './read-plan.js';
 export { checkPlan } from './plan-rules.js';
 export type * from './plan.js';
-export {
-	nextValue,
-	type NextValue,
-	type SubjectHistory,
-	type SubjectOccasion
-} from './prediction/next-value.js';
+export { nextValue } from './prediction/next-value.js';
+export { predictNext, predictor, type Predictor } from './prediction/predictor.js';
+export type { NextValue, SubjectHistory, SubjectOccasion } from './prediction/occasion.js';
 export {
 	subjectEffects,
 	visitEffects,

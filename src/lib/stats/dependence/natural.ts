@@ -42,6 +42,9 @@ export interface NaturalModel {
 	covariance(occasions: Occasions): Float64Array;
 }
 
+/** What names of parameters are made of. */
+type Labels = Pick<ModelDesign, 'visits' | 'groups'>;
+
 export function occasionsOf(design: ModelDesign, layout: Layout, subject: number): Occasions {
 	const from = design.subjectStart[subject]!;
 	const to = design.subjectStart[subject + 1]!;
@@ -176,7 +179,7 @@ interface Leftover {
 }
 
 /** Sums of fixed matrices: independent rows, compound symmetry, unstructured, serial with noise as two variances. */
-function unstructuredLeftover(layout: Layout, design: ModelDesign, x: Float64Array): Leftover {
+function unstructuredLeftover(layout: Layout, design: Labels, x: Float64Array): Leftover {
 	const k = layout.positions;
 	const l = unstructuredFactor(layout, x);
 	const names: string[] = [];
@@ -316,7 +319,7 @@ function componentsLeftover(layout: Layout, x: Float64Array): Leftover {
 	};
 }
 
-function leftoverOf(layout: Layout, design: ModelDesign, x: Float64Array): Leftover {
+function leftoverOf(layout: Layout, design: Labels, x: Float64Array): Leftover {
 	const { structure, varianceBy } = layout.dependence.errors;
 	if (structure === 'unstructured') return unstructuredLeftover(layout, design, x);
 	const one = layout.scaleClasses === 1;
@@ -354,7 +357,7 @@ const silenced: Record<string, string[]> = {
  * result depends on it. `edges`: names of components at their edge, whose parameters are not differentiated.
  */
 export function naturalModel(
-	design: ModelDesign,
+	design: Labels,
 	layout: Layout,
 	x: Float64Array,
 	scale: number,
