@@ -31,6 +31,34 @@ export { occasionsOf, type Due, type Occasions } from './missing/occasions.js';
 export { missingPatterns, type MissingPattern } from './missing/patterns.js';
 export { dropoutByGroup, type DropoutByGroup } from './missing/dropout.js';
 export { historyTest, type HistoryTest } from './missing/history.js';
+export {
+	deltaSensitivity,
+	poolSensitivity,
+	sensitivityReplicates,
+	type ContrastSensitivity,
+	type Sensitivity,
+	type SensitivityOptions,
+	type SensitivityReplicates,
+	type SensitivityRow
+} from './missing/sensitivity.js';
+export { poolEstimates, type Pooled } from './missing/pool.js';
+export { residualsOf, type Residuals } from './diagnostics/residuals.js';
+export {
+	quantilePlot,
+	type QuantilePlot,
+	type QuantilePlotOptions,
+	type QuantilePoint
+} from './diagnostics/quantile-plot.js';
+export {
+	semivariogram,
+	type Semivariogram,
+	type SemivariogramBin
+} from './diagnostics/semivariogram.js';
+export {
+	subjectInfluence,
+	type ContrastWithout,
+	type SubjectInfluence
+} from './diagnostics/influence.js';
 export { analyseGrowth } from './growth/analyse-growth.js';
 export * from './monitoring/index.js';
 export * from './power/index.js';
