@@ -15,26 +15,51 @@ export * as contrasts from './design/contrasts.js';
 export { readPlan } from './read-plan.js';
 export { checkPlan } from './plan-rules.js';
 export type * from './plan.js';
+export { nextValue } from './prediction/next-value.js';
+export { predictNext, predictor, type Predictor } from './prediction/predictor.js';
+export type { NextValue, SubjectHistory, SubjectOccasion } from './prediction/occasion.js';
 export {
-	nextValue,
-	type NextValue,
-	type SubjectHistory,
-	type SubjectOccasion
-} from './prediction/next-value.js';
+	subjectEffects,
+	visitEffects,
+	type PredictedEffect,
+	type SubjectEffects,
+	type VisitEffect
+} from './prediction/subject-effects.js';
+export { fittedRows, type FittedRows } from './prediction/conditional-fit.js';
+export { fittedLines, type MeanLine, type MeanPoint } from './prediction/lines.js';
 export { occasionsOf, type Due, type Occasions } from './missing/occasions.js';
 export { missingPatterns, type MissingPattern } from './missing/patterns.js';
 export { dropoutByGroup, type DropoutByGroup } from './missing/dropout.js';
 export { historyTest, type HistoryTest } from './missing/history.js';
+export {
+	deltaSensitivity,
+	poolSensitivity,
+	sensitivityReplicates,
+	type ContrastSensitivity,
+	type Sensitivity,
+	type SensitivityOptions,
+	type SensitivityReplicates,
+	type SensitivityRow
+} from './missing/sensitivity.js';
+export { poolEstimates, type Pooled } from './missing/pool.js';
+export { residualsOf, type Residuals } from './diagnostics/residuals.js';
+export {
+	quantilePlot,
+	type QuantilePlot,
+	type QuantilePlotOptions,
+	type QuantilePoint
+} from './diagnostics/quantile-plot.js';
+export {
+	semivariogram,
+	type Semivariogram,
+	type SemivariogramBin
+} from './diagnostics/semivariogram.js';
+export {
+	subjectInfluence,
+	type ContrastWithout,
+	type SubjectInfluence
+} from './diagnostics/influence.js';
 export { analyseGrowth } from './growth/analyse-growth.js';
-export { buildDesign, type Design } from './design/design.js';
-export { fitMixed, type Fit, type FitOptions } from './fit/fit-mixed.js';
-export { precisionRule, type PrecisionRule } from './inference/degrees-of-freedom.js';
-export { testContrast } from './inference/contrast.js';
-export { effectiveSampleSize, intraclassCorrelation } from './inference/effective-size.js';
-export { varianceIntervals } from './inference/variance-intervals.js';
-export { subjectEffects } from './prediction/subject-effects.js';
-export { fittedLines } from './prediction/lines.js';
-export { marginalResiduals, residualPoints } from './prediction/residuals.js';
 export * from './monitoring/index.js';
 export * from './evidence/index.js';
 export * from './power/index.js';

@@ -99,6 +99,9 @@ const none: Correlation = {
 	}
 };
 
+/** What names of parameters are made of. */
+export type Labels = Pick<ModelDesign, 'visits' | 'groups'>;
+
 /** The leftover part: its parameters (values ÷ σ²) and derivatives. */
 export interface Leftover {
 	names: string[];
@@ -108,7 +111,7 @@ export interface Leftover {
 }
 
 /** A variance for each visit and a covariance for each pair. */
-function unstructuredLeftover(layout: Layout, design: ModelDesign, x: Float64Array): Leftover {
+function unstructuredLeftover(layout: Layout, design: Labels, x: Float64Array): Leftover {
 	const k = layout.positions;
 	const l = unstructuredFactor(layout, x);
 	const names: string[] = [];
@@ -249,7 +252,7 @@ function componentsLeftover(layout: Layout, x: Float64Array): Leftover {
 }
 
 /** The leftover errors of a model at working parameters `x`, in natural parameters ÷ σ². */
-export function leftoverOf(layout: Layout, design: ModelDesign, x: Float64Array): Leftover {
+export function leftoverOf(layout: Layout, design: Labels, x: Float64Array): Leftover {
 	const { structure, varianceBy } = layout.dependence.errors;
 	if (structure === 'unstructured') return unstructuredLeftover(layout, design, x);
 	const one = layout.scaleClasses === 1;

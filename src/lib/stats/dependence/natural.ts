@@ -1,6 +1,5 @@
-import type { ModelDesign } from '../design/model-design.js';
 import { subjectCovariance, type Layout } from './layout.js';
-import { leftoverOf } from './leftover.js';
+import { leftoverOf, type Labels } from './leftover.js';
 import type { Derivatives, Occasions } from './occasions.js';
 
 /** A parameter of the covariance as people know it: a variance, a covariance, a correlation. */
@@ -46,7 +45,7 @@ const silenced: Record<string, string[]> = {
  * result depends on it. `edges`: names of components at their edge, whose parameters are not differentiated.
  */
 export function naturalModel(
-	design: ModelDesign,
+	design: Labels,
 	layout: Layout,
 	x: Float64Array,
 	scale: number,

@@ -1,17 +1,18 @@
-import type { Design } from '../design/design.js';
+import type { BuiltDesign } from '../design/build-model-design.js';
+import type { MeanTerm } from '../design/mean-terms.js';
 import type { NamedContrast } from '../types.js';
 
 type Untested = Pick<NamedContrast, 'name' | 'kind' | 'group' | 'reference' | 'time' | 'weights'>;
 
 /** Weights of the slope of a group: the common slope and what the group adds to it. */
-function slopeWeights(design: Design, group: number): number[] {
-	return design.terms.map((term) =>
+function slopeWeights(terms: readonly MeanTerm[], group: number): number[] {
+	return terms.map((term) =>
 		term.kind === 'time' || (term.kind === 'time-by-group' && term.level === group) ? 1 : 0
 	);
 }
 
-function differenceWeights(design: Design, group: number, time: number): number[] {
-	return design.terms.map((term) => {
+function differenceWeights(terms: readonly MeanTerm[], group: number, time: number): number[] {
+	return terms.map((term) => {
 		if (term.kind === 'group' && term.level === group) return 1;
 		return term.kind === 'time-by-group' && term.level === group ? time : 0;
 	});
@@ -21,8 +22,12 @@ function differenceWeights(design: Design, group: number, time: number): number[
  * What a growth model is asked: the slope of each group, each group's slope against the reference group's, and
  * each group's mean against the reference group's at the given times. Without a group: the slope alone.
  */
-export function contrastsOf(design: Design, differenceTimes: readonly number[]): Untested[] {
-	const { groups, groupByTime } = design;
+export function contrastsOf(
+	{ parts, columns: { terms } }: BuiltDesign,
+	differenceTimes: readonly number[]
+): Untested[] {
+	const { groups } = parts;
+	const groupByTime = parts.timeByGroup.length > 0;
 	const [reference = null, ...others] = groups;
 	const slope = (name: string, group: string | null, level: number): Untested => ({
 		name,
@@ -30,7 +35,7 @@ export function contrastsOf(design: Design, differenceTimes: readonly number[]):
 		group,
 		reference: null,
 		time: null,
-		weights: slopeWeights(design, level)
+		weights: slopeWeights(terms, level)
 	});
 	const slopes = groupByTime
 		? groups.map((group, level) => slope(`slope[${group}]`, group, level))
@@ -41,7 +46,7 @@ export function contrastsOf(design: Design, differenceTimes: readonly number[]):
 		group,
 		reference,
 		time: null,
-		weights: design.terms.map((t) => (t.kind === 'time-by-group' && t.level === i + 1 ? 1 : 0))
+		weights: terms.map((t) => (t.kind === 'time-by-group' && t.level === i + 1 ? 1 : 0))
 	}));
 	const differences = others.flatMap((group, i) =>
 		differenceTimes.map((time): Untested => ({
@@ -50,7 +55,7 @@ export function contrastsOf(design: Design, differenceTimes: readonly number[]):
 			group,
 			reference,
 			time,
-			weights: differenceWeights(design, i + 1, time)
+			weights: differenceWeights(terms, i + 1, time)
 		}))
 	);
 	return [...slopes, ...(groupByTime ? slopeDifferences : []), ...differences];

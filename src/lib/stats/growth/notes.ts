@@ -1,5 +1,4 @@
-import type { Fit } from '../fit/fit-mixed.js';
-import type { DegreesOfFreedom, ModelDescription, Note } from '../types.js';
+import type { Counts, DegreesOfFreedom, ModelDescription, Note } from '../types.js';
 
 const dfWords: Record<DegreesOfFreedom, string> = {
 	'kenward-roger': 'Kenward–Roger standard errors and degrees of freedom',
@@ -12,17 +11,21 @@ function count(n: number, one: string, many = `${one}s`): string {
 }
 
 /** The sentences a reader must see beside the numbers. */
-export function notesOf(fit: Fit, model: ModelDescription, askedTimes: readonly number[]): Note[] {
+export function notesOf(
+	model: ModelDescription,
+	counts: Counts,
+	fit: { converged: boolean; boundary: readonly string[] },
+	askedTimes: readonly number[]
+): Note[] {
 	const notes: Note[] = [];
 	const add = (code: Note['code'], sentence: string) => notes.push({ code, sentence });
-	const { counts } = fit.design;
 	if (!fit.converged) {
 		add(
 			'not-converged',
 			'The search for the best variances did not settle; treat every number here as provisional.'
 		);
 	}
-	if (fit.boundary) {
+	if (fit.boundary.length > 0) {
 		add(
 			'subject-variance-zero',
 			`The variance between subjects is estimated as zero: these data show no lasting offset of subjects. ${dfWords[model.degreesOfFreedom]} are those of the model without it.`

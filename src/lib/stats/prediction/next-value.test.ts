@@ -6,6 +6,8 @@ import { randomStream } from '../numeric/random.js';
 import { readPlan } from '../read-plan.js';
 import { expectRelative } from '../reference/close.js';
 import { nextValue } from './next-value.js';
+import { predictNext, predictor, type Predictor } from './predictor.js';
+import { subjectEffects } from './subject-effects.js';
 
 /** Level sd 3, slope sd 0.5, error sd 1, about 50 + 2 t (+ 5 in group b) + bmi; one visit a unit of time. */
 function draw(random: ReturnType<typeof randomStream>, group: string, visits: number) {
@@ -46,7 +48,8 @@ const analysisOf = (change: object = {}) =>
 			group: 'arm',
 			mean: { covariates: [{ name: 'bmi', kind: 'numeric' }] },
 			...change
-		})
+		}),
+		{ componentLimits: false }
 	);
 const level = analysisOf();
 const slopes = analysisOf({ subjectEffects: 'level-and-slope' });
@@ -137,12 +140,80 @@ describe('the next value of a subject', () => {
 
 	test('at a visit already seen shares its effect with it', () => {
 		const shared = analysisOf({ visitEffects: true });
-		// Put into the fit, so that there is something to share.
-		shared.fit.natural.visitRatio = 4;
+		const model = predictor(shared);
+		// A ratio of 4 put into it, so that there is something to share.
+		model.dependence.working[model.dependence.layout.visit] = 2;
 		const history = { group: 'a', past: [{ ...past[0]!, visit: 'v0' }] };
-		const there = nextValue(shared, history, { ...next, visit: 'v0' }).standardDeviation;
-		const elsewhere = nextValue(shared, history, { ...next, visit: 'v2' }).standardDeviation;
+		const there = predictNext(model, history, { ...next, visit: 'v0' }).standardDeviation;
+		const elsewhere = predictNext(model, history, { ...next, visit: 'v2' }).standardDeviation;
 		expect(there).toBeLessThan(elsewhere);
+	});
+
+	test('of a subject who was fitted is the mean with the subject’s own level and slope', () => {
+		const { built, fit } = slopes;
+		const own = subjectEffects(fit)[7]!;
+		const at = Array.from({ length: 5 }, (_, v) => built.design.subjectStart[7]! + v);
+		const bmi = data.bmi![built.design.rowOf[at[0]!]!] as number;
+		const covariates = { bmi };
+		const value = nextValue(
+			slopes,
+			{
+				group: built.design.groups[built.design.subjectGroup[7]!]!,
+				past: at.map((i) => ({
+					time: built.design.time[i]!,
+					covariates,
+					outcome: built.design.y[i]!
+				}))
+			},
+			{ time: 6, covariates }
+		);
+		const b = (name: string) => slopes.result.coefficients.find((c) => c.name === name)!.estimate;
+		const line =
+			b('intercept') + b('group b') + 6 * (b('time') + b('time × group b')) + bmi * b('bmi');
+		expect(built.design.groups[built.design.subjectGroup[7]!]).toBe('b');
+		expectRelative(value.estimate, line + own.level!.estimate + 6 * own.slope!.estimate, 1e-8);
+	});
+
+	test.each<[string, object]>([
+		['independent', { subjectEffects: 'none' }],
+		['level, cubic in time', { mean: { time: { degree: 3 } } }],
+		['a common start and a knot', { mean: { time: { knots: [2] }, commonBaseline: true } }],
+		['level, slope and visits', { subjectEffects: 'level-and-slope', visitEffects: true }],
+		['serial with noise', { subjectEffects: 'none', errors: { structure: 'serial-with-noise' } }],
+		['level and serial', { errors: { structure: 'serial' } }],
+		[
+			'Toeplitz with a variance for each visit, categories',
+			{
+				subjectEffects: 'none',
+				mean: { time: 'categorical' },
+				errors: { structure: 'toeplitz', varianceBy: 'visit' }
+			}
+		],
+		['variances by arm', { errors: { structure: 'independent', varianceBy: 'group' } }],
+		['unstructured', { subjectEffects: 'none', errors: { structure: 'unstructured' } }],
+		['logarithms, baseline', { scale: 'log', mean: { covariates: [{ kind: 'baseline' }] } }]
+	])('needs no data: coefficients through JSON give the same bits; %s', (_, change) => {
+		const analysis = analysisOf(change);
+		const text = JSON.stringify(predictor(analysis));
+		expect(text.length).toBeLessThan(8000);
+		const model = JSON.parse(text) as Predictor;
+		const covariates = { bmi: 20, baseline: 70 };
+		const seen = past.map((o) => ({ ...o, covariates, visit: `v${o.time + 1}`, time: o.time + 1 }));
+		for (const history of [[], seen.slice(0, 1), seen])
+			for (const time of [3, 4]) {
+				const ask = { time, visit: `v${time}`, covariates };
+				const there = nextValue(analysis, { group: 'a', past: history }, ask);
+				expect(predictNext(model, { group: 'a', past: history }, ask)).toEqual(there);
+				expect(there.lower).toBeGreaterThan(40);
+				expect(there.upper).toBeLessThan(120);
+			}
+	});
+
+	test('coefficients of another engine are refused', () => {
+		const model = { ...predictor(level), engine: 'another' };
+		expect(() => predictNext(model, { group: 'a', past }, next)).toThrow(
+			expect.objectContaining({ code: 'bad-option' })
+		);
 	});
 
 	test.each<[string, () => unknown, RegExp]>([
