@@ -270,7 +270,9 @@ export function refuseWithoutVariation({ y, residual, design }: PreparedModel): 
 	for (const v of y) mean += v / n;
 	let spread = 0;
 	for (const v of y) spread += (v - mean) ** 2;
-	if (!Number.isFinite(spread) || !Number.isFinite(left)) {
+	const finite = y.every(Number.isFinite);
+	// A square that overflows is no fault of the number it came from.
+	if (!finite || (Number.isNaN(left) && Number.isFinite(spread))) {
 		throw new StatsError(
 			'not-finite',
 			'An outcome or a column of the mean is not a finite number.'
@@ -282,7 +284,7 @@ export function refuseWithoutVariation({ y, residual, design }: PreparedModel): 
 			'Every outcome is the same, so there is no variation to explain.'
 		);
 	}
-	if (!(spread / n > SMALLEST && spread / n < LARGEST)) {
+	if (!(spread / n > SMALLEST && spread / n < LARGEST && Number.isFinite(left))) {
 		throw new StatsError(
 			'out-of-range',
 			'The outcomes are too large or too small to be squared safely. Put them in a unit nearer to 1.'

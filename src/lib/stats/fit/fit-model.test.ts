@@ -531,3 +531,10 @@ describe('small and odd data end in a flagged result or a typed error, never in 
 		);
 	});
 });
+
+test('finite outcomes whose squares overflow are too large, not “not finite”', () => {
+	const huge = grid(6, 4, (s, v) => 1e200 * (1 + s + ((s * 7 + v * 3) % 5)));
+	expect(() => fitModel(huge, model('level', 'independent'), { method: 'reml' })).toThrow(
+		expect.objectContaining({ code: 'out-of-range' })
+	);
+});

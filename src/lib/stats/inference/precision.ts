@@ -152,6 +152,12 @@ export function precisionOf(fit: ModelFit, rule: DegreesOfFreedomRule): Precisio
 				df = singleDf(w);
 				variance = scale * adjustedForm(w, w);
 			}
+			if (curvature && !(variance > 0 && df > 0)) {
+				throw new StatsError(
+					'singular-information',
+					'The data tell too little of the covariance to correct this test for it. Ask for naive degrees of freedom, or for a simpler dependence.'
+				);
+			}
 			const standardError = Math.sqrt(variance);
 			const t = estimate / standardError;
 			if (![t, df].every(Number.isFinite) || !(standardError > 0)) outOfRange();
