@@ -3,6 +3,14 @@ import type { StudyDefinition } from '../study/definition';
 type Criterion = StudyDefinition['eligibility'][number];
 export type Answers = Readonly<Record<string, 'yes' | 'no'>>;
 
+/** Answers as the screening holds them. */
+export const answersOf = (eligibility: unknown): Answers =>
+	(eligibility as { answers?: Answers } | null)?.answers ?? {};
+
+/** The protocol version whose criteria these answers are to; null before anything was answered. */
+export const answeredVersionOf = (eligibility: unknown): number | null =>
+	(eligibility as { protocolVersion?: number } | null)?.protocolVersion ?? null;
+
 /** An inclusion criterion is met by yes, an exclusion criterion by no; null while it is not answered. */
 export function isMet(
 	criterion: Pick<Criterion, 'key' | 'kind'>,
