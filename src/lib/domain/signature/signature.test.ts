@@ -24,6 +24,7 @@ const facts = {
 	number: 7,
 	screenedOn: '2026-03-02',
 	protocolVersion: 1,
+	answeredAt: '2026-03-02T09:30:00.000Z',
 	criteria: [
 		{ key: 'adult', kind: 'inclusion' as const, text: 'Is 18 or older.' },
 		{ key: 'pregnant', kind: 'exclusion' as const, text: 'Is pregnant.' }
@@ -39,12 +40,21 @@ describe('what is signed', () => {
 			'Site 02',
 			'Screened on 2 Mar 2026',
 			'Protocol version 1',
+			'Answered at 2026-03-02T09:30:00.000Z',
 			'Inclusion: Is 18 or older. yes: met',
 			'Exclusion: Is pregnant. no: met'
 		]);
 		expect(
 			eligibilitySheet({ ...facts, answers: { pregnant: 'yes' } }).lines.map(({ value }) => value)
-		).toEqual(['AMR-01', '02', '2 Mar 2026', '1', 'not answered', 'yes: not met']);
+		).toEqual([
+			'AMR-01',
+			'02',
+			'2 Mar 2026',
+			'1',
+			facts.answeredAt,
+			'not answered',
+			'yes: not met'
+		]);
 	});
 
 	test('has one text, whatever the order of its keys, and comes back from it whole', () => {

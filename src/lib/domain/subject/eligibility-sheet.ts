@@ -11,6 +11,8 @@ export interface ChecklistFacts {
 	screenedOn: string;
 	/** The version whose criteria were answered. */
 	protocolVersion: number;
+	/** When the answers were given, in UTC. Answers changed and changed back are other answers than those signed. */
+	answeredAt: string | null;
 	criteria: StudyDefinition['eligibility'];
 	answers: Answers;
 }
@@ -25,6 +27,7 @@ export const eligibilitySheet = (facts: ChecklistFacts): Sheet => ({
 		{ key: 'site', label: 'Site', value: facts.site },
 		{ key: 'screened', label: 'Screened on', value: shortDateText(plainDateOf(facts.screenedOn)) },
 		{ key: 'protocol', label: 'Protocol version', value: String(facts.protocolVersion) },
+		{ key: 'answered', label: 'Answered at', value: facts.answeredAt ?? 'not yet' },
 		...facts.criteria.map((criterion) => ({
 			key: `criterion ${criterion.key}`,
 			label: `${criterion.kind === 'inclusion' ? 'Inclusion' : 'Exclusion'}: ${criterion.text}`,

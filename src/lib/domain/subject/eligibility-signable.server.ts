@@ -4,13 +4,14 @@ import { canonical, type Json } from '../cut/canonical';
 import type { SignableKind } from '../signature/signable';
 import type { StudyDefinition } from '../study/definition';
 import { getVersionByNumber, publishedNumbers } from '../study/study.reads.server';
-import { answeredVersionOf, answersOf, standing } from './eligibility';
+import { answeredAtOf, answeredVersionOf, answersOf, standing } from './eligibility';
 import { eligibilitySheet } from './eligibility-sheet';
 
 /** The part of a screening that an eligibility signature is about, as one text. */
 const signedPart = (eligibility: unknown): string =>
 	canonical({
 		answers: answersOf(eligibility) as Json,
+		answeredAt: answeredAtOf(eligibility),
 		protocolVersion: answeredVersionOf(eligibility)
 	});
 
@@ -79,6 +80,7 @@ export const eligibilityKind: SignableKind = {
 					number: row.number,
 					screenedOn: row.screened_on,
 					protocolVersion: number,
+					answeredAt: answeredAtOf(row.eligibility),
 					criteria: definition.eligibility,
 					answers: answersOf(row.eligibility)
 				}),

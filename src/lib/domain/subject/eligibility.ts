@@ -11,6 +11,16 @@ export const answersOf = (eligibility: unknown): Answers =>
 export const answeredVersionOf = (eligibility: unknown): number | null =>
 	(eligibility as { protocolVersion?: number } | null)?.protocolVersion ?? null;
 
+/** When these answers were given, in UTC; null before anything was answered. */
+export const answeredAtOf = (eligibility: unknown): string | null =>
+	(eligibility as { answeredAt?: string } | null)?.answeredAt ?? null;
+
+/** Whether two sets of answers say the same, in whatever order. */
+export const sameAnswers = (one: Answers, other: Answers): boolean => {
+	const text = (of: Answers) => JSON.stringify(Object.entries(of).sort());
+	return text(one) === text(other);
+};
+
 /** An inclusion criterion is met by yes, an exclusion criterion by no; null while it is not answered. */
 export function isMet(
 	criterion: Pick<Criterion, 'key' | 'kind'>,
