@@ -40,7 +40,7 @@ describe('what is signed', () => {
 			'Site 02',
 			'Screened on 2 Mar 2026',
 			'Protocol version 1',
-			'Answered at 2026-03-02T09:30:00.000Z',
+			'Answered at 2 Mar 2026, 09:30:00.000 UTC',
 			'Inclusion: Is 18 or older. yes: met',
 			'Exclusion: Is pregnant. no: met'
 		]);
@@ -51,7 +51,7 @@ describe('what is signed', () => {
 			'02',
 			'2 Mar 2026',
 			'1',
-			facts.answeredAt,
+			'2 Mar 2026, 09:30:00.000 UTC',
 			'not answered',
 			'yes: not met'
 		]);

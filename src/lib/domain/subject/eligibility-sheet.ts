@@ -27,7 +27,7 @@ export const eligibilitySheet = (facts: ChecklistFacts): Sheet => ({
 		{ key: 'site', label: 'Site', value: facts.site },
 		{ key: 'screened', label: 'Screened on', value: shortDateText(plainDateOf(facts.screenedOn)) },
 		{ key: 'protocol', label: 'Protocol version', value: String(facts.protocolVersion) },
-		{ key: 'answered', label: 'Answered at', value: facts.answeredAt ?? 'not yet' },
+		{ key: 'answered', label: 'Answered at', value: answeredText(facts.answeredAt) },
 		...facts.criteria.map((criterion) => ({
 			key: `criterion ${criterion.key}`,
 			label: `${criterion.kind === 'inclusion' ? 'Inclusion' : 'Exclusion'}: ${criterion.text}`,
@@ -40,4 +40,10 @@ function answered(criterion: StudyDefinition['eligibility'][number], answers: An
 	const met = isMet(criterion, answers);
 	if (met === null) return 'not answered';
 	return `${answers[criterion.key]}: ${met ? 'met' : 'not met'}`;
+}
+
+/** '2 Mar 2026, 09:30:12.345 UTC': exact, so that answers given again within a minute are told apart. */
+function answeredText(at: string | null): string {
+	if (at === null) return 'not yet';
+	return `${shortDateText(plainDateOf(at.slice(0, 10)))}, ${at.slice(11, 23)} UTC`;
 }
