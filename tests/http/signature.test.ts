@@ -140,7 +140,7 @@ test('what was not shown as it stands is refused with problem details, and nothi
 test('a locked screen signs nothing, and unlocking it asks for the address again', async () => {
 	const screening = await answered();
 	const item = await itemOf(screening.id);
-	expect((await investigator.send('POST', '/api/session/lock')).status).toBe(200);
+	expect((await investigator.send('POST', '/api/session/lock', {})).status).toBe(200);
 	const secrets = { email: scene.investigator.email, password };
 	expect((await investigator.send('POST', of(''), { items: [item], ...secrets })).status).toBe(423);
 	expect((await investigator.send('POST', '/api/session/unlock', { password })).status).toBe(200);
