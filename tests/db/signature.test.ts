@@ -435,7 +435,7 @@ describe('signing again proves who signs', () => {
 
 	test('R-15: address and password first, then the password; after a break both again; a session that is over signs nothing', async () => {
 		const actor = await investigator();
-		const screenings = [];
+		const screenings: string[] = [];
 		for (let n = 0; n < 5; n++) screenings.push((await answered()).id);
 		const attempt = async (at: number, secrets: { email?: string; password: string }) =>
 			sign(actor, scene.studyId, {
