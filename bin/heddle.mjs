@@ -38,6 +38,7 @@ heddle demo               fills an empty installation with the demo
 heddle backup FOLDER      database, stored files and keys into a new folder
 heddle restore FOLDER     the same back, into an empty installation, whole or not at all
 heddle verify-audit       checks the audit trail's chain; status 1 when it is broken
+heddle verify-signatures  holds each signature against its record; status 1 when one is damaged
 heddle seal               seals the audit trail up to now
 heddle setup-link         a one-time link for the first administrator
 heddle fit --plan PLAN DATA [--table] [--limits]
@@ -119,6 +120,7 @@ const commands = {
 	},
 
 	'verify-audit': () => admin('verify-audit'),
+	'verify-signatures': () => admin('verify-signatures'),
 	seal: () => admin('seal'),
 	'setup-link': () => admin('setup-link'),
 

@@ -4,9 +4,10 @@ import { newId } from '$lib/id';
 import { systemActor } from '$lib/server/actor';
 import { readOwn } from '$lib/server/change';
 import { database } from '$lib/server/db/db';
+import { verifySignatures } from '$lib/domain/signature/verify.server';
 import { sealNow } from '$lib/server/jobs/seal';
 
-/** Small offices of the command line: setup-link, seal, verify-audit. The status is 1 when something is wrong. */
+/** Small offices of the command line: setup-link, seal, verify-audit, verify-signatures. The status is 1 when something is wrong. */
 const offices: Record<string, () => Promise<number>> = {
 	async 'setup-link'() {
 		const link = await setUpLink(newId());
@@ -20,6 +21,11 @@ const offices: Record<string, () => Promise<number>> = {
 	async seal() {
 		console.log(`${await sealNow()} events sealed.`);
 		return 0;
+	},
+	async 'verify-signatures'() {
+		const { lines, damaged } = await verifySignatures(systemActor(newId()));
+		for (const line of lines) console.log(line);
+		return damaged === 0 ? 0 : 1;
 	},
 	async 'verify-audit'() {
 		return readOwn(systemActor(newId()), async (reader) => {

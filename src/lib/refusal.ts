@@ -81,6 +81,29 @@ export const refusals = {
 		status: 422,
 		say: (f) => `The consent version was approved on ${f.approved}; a consent cannot be earlier.`
 	},
+	SIGNING_SECRET: {
+		status: 422,
+		say: () => 'That is not how you sign in here. Nothing was signed.'
+	},
+	SIGNING_PASSWORD: {
+		status: 409,
+		say: () =>
+			'Signing needs a password of your own here, besides your organisation’s account. Sign out, choose “Password forgotten?” on the sign-in page, and set one by the link you receive.'
+	},
+	SHOWN_CHANGED: {
+		status: 409,
+		say: (f) =>
+			`${f.title ?? 'A record'} changed after it was shown to you. Nothing was signed: look at it again as it stands now.`
+	},
+	NOT_SIGNABLE: { status: 422, say: (f) => `${f.title} cannot be signed now. ${f.why}` },
+	SIGNED_ALREADY: {
+		status: 409,
+		say: (f) => `${f.title} is signed already, and the signature stands. Nothing was signed again.`
+	},
+	SIGNATURE_NEEDED: {
+		status: 422,
+		say: () => 'The investigator’s standing signature of the eligibility checklist is needed first.'
+	},
 	NOT_ELIGIBLE: { status: 422, say: (f) => `Not every criterion is met: ${f.which}` },
 	ALREADY_ENTERED: { status: 409, say: () => 'This person was entered already.' },
 	ALREADY_RANDOMISED: {

@@ -192,7 +192,14 @@ describe('R-19: every role on every route and method', () => {
 		async (role) => {
 			const visitor = people.by[`${role} elsewhere`] as Visitor;
 			const wrong: string[] = [];
-			const siteThings = ['subject', 'visit', 'screening', 'measurement', 'appointment'];
+			const siteThings = [
+				'subject',
+				'visit',
+				'screening',
+				'signature',
+				'measurement',
+				'appointment'
+			];
 			for (const { route, method } of walked()) {
 				if (method !== 'GET') continue;
 				const named = route.params.filter((param) => siteThings.includes(param));

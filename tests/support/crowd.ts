@@ -6,9 +6,12 @@ import type { Role } from '../../src/lib/domain/person/roles';
 import { freezeCut } from '../../src/lib/domain/cut/cut.commands.server';
 import { uploadImport } from '../../src/lib/domain/import/import.commands.server';
 import { requestLook } from '../../src/lib/domain/look/look.commands.server';
+import { sign } from '../../src/lib/domain/signature/signature.commands.server';
+import { findWaiting } from '../../src/lib/domain/signature/signature.reads.server';
+import { startSession } from '../../src/lib/server/auth/session';
 import { systemActor } from '../../src/lib/server/actor';
 import { actorFor } from '../../src/lib/server/auth/actor';
-import { useEnvironment } from './database';
+import { useEnvironment, type FreshDatabase } from './database';
 import { addPerson, addRole, asOwner, signIn, type Visitor } from './people';
 import type { RunningServer } from './server';
 import { addSubject, around, visitScene, type Scene } from './visit-scene';
@@ -41,8 +44,58 @@ export interface Crowd {
 	close(): Promise<void>;
 }
 
+/** A checklist that an investigator of the site has signed, by the application's own command. */
+async function signedChecklist(
+	database: FreshDatabase,
+	scene: Scene,
+	siteIndex: 0 | 1,
+	passwordHash: string
+): Promise<string> {
+	const site = scene.sites[siteIndex];
+	const email = `signer-${newId()}@walk.example`;
+	const name = 'Ida Reyes';
+	const id = await addPerson(database, { email, name, passwordHash });
+	await addRole(database, id, 'investigator', scene.studyId, site.id);
+	const screening = newId();
+	const answers = Object.fromEntries(
+		scene.definition.eligibility.map((each) => [each.key, each.kind === 'inclusion' ? 'yes' : 'no'])
+	);
+	await asOwner(database, (client) =>
+		client.query(
+			`insert into app.screening (id, study_id, site_id, number, screened_on, eligibility)
+			values ($1, $2, $3, $4, '2026-01-06', $5)`,
+			[
+				screening,
+				scene.studyId,
+				site.id,
+				950 + siteIndex,
+				JSON.stringify({ answers, protocolVersion: 1 })
+			]
+		)
+	);
+	const sessionId = await startSession({ id, name, email }, 'password', 'scene', 'scene');
+	const actor = { ...(await actorFor(id, 'scene')), sessionId };
+	const { items } = await findWaiting(actor, scene.studyId);
+	const { signatures } = await sign(actor, scene.studyId, {
+		items: items.map(({ record, recordId, meaning, sha256 }) => ({
+			record,
+			recordId,
+			meaning,
+			sha256
+		})),
+		email,
+		password
+	});
+	return signatures[0]?.id as string;
+}
+
 /** One of everything in a study, put there by its owner: what matters is that it is there. */
-async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): Promise<Things> {
+async function furnish(
+	server: RunningServer,
+	scene: Scene,
+	siteIndex: 0 | 1,
+	passwordHash: string
+): Promise<Things> {
 	const { database } = server;
 	const site = scene.sites[siteIndex];
 	const keys = Object.keys(scene.plannedVisits);
@@ -99,6 +152,7 @@ async function furnish(server: RunningServer, scene: Scene, siteIndex: 0 | 1): P
 		method: 'REML',
 		df: 'kenward-roger'
 	});
+	made.signature = await signedChecklist(database, scene, siteIndex, passwordHash);
 	Object.assign(made, { batch: batch.id, cut: cut.id, look: look.id });
 	await asOwner(database, async (client) => {
 		const insert = (text: string, values: unknown[]) => client.query(text, values);
@@ -124,9 +178,9 @@ export async function crowd(server: RunningServer): Promise<Crowd> {
 	const passwordHash = await hashPassword(password);
 	const scene = await visitScene(server.database, { code: 'WLK-1', passwordHash });
 	const other = await visitScene(server.database, { code: 'FGN-2', passwordHash });
-	const things = await furnish(server, scene, 0);
-	const otherSite = await furnish(server, scene, 1);
-	const foreign = { scene: other, things: await furnish(server, other, 0) };
+	const things = await furnish(server, scene, 0, passwordHash);
+	const otherSite = await furnish(server, scene, 1, passwordHash);
+	const foreign = { scene: other, things: await furnish(server, other, 0, passwordHash) };
 
 	const emails: Record<string, string> = {};
 	const add = async (who: string, ...grants: [Role, string | null, string | null][]) => {

@@ -72,6 +72,11 @@ async function examples(
 			await one(`(select 'entered' as name, id, study_id from app.screening where site_id = ${saltreach} and outcome = 'entered' limit 1)
 			union all (select 'in progress', id, study_id from app.screening where site_id = ${saltreach} and outcome = 'in progress' limit 1)`)
 		),
+		signature: as(
+			await one(
+				`select 'signed' as name, id, study_id from app.signature where site_id = ${saltreach} order by id limit 1`
+			)
+		),
 		batch: as(await one(`select 'imported' as name, id, study_id from app.import_batch limit 1`)),
 		look: as(
 			await one(

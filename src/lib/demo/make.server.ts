@@ -164,6 +164,7 @@ async function castOf(ids: Record<string, string>, studyId: string, sides: Sides
 		casts.push({
 			id: site.id,
 			coordinator: await acting(id(ids, `coordinator${suffixes[n]}`)),
+			investigator: await acting(id(ids, `investigator${suffixes[n]}`)),
 			pairs: [
 				{ roomId: own[0]?.id ?? '', nurse: await acting(id(ids, `nurse${suffixes[n]}`)) },
 				{ roomId: own[1]?.id ?? '', nurse: await acting(id(ids, `nurse${suffixes[n]}-2`)) }

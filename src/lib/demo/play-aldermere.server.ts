@@ -1,6 +1,8 @@
 import { sql } from 'kysely';
 import { recordMeasurement } from '$lib/domain/measurement/measurement.commands.server';
 import { formulas } from '$lib/domain/measurement/formulas';
+import { sign } from '$lib/domain/signature/signature.commands.server';
+import { findWaiting } from '$lib/domain/signature/signature.reads.server';
 import { recordExit } from '$lib/domain/subject/exit.commands.server';
 import {
 	addScreening,
@@ -12,6 +14,7 @@ import { enrolSubject, randomiseSubject } from '$lib/domain/subject/subject.comm
 import { bookVisit, moveAppointment } from '$lib/domain/visit/booking.commands.server';
 import { declareMissed, logContact } from '$lib/domain/visit/chase.commands.server';
 import { finishVisit, startVisit } from '$lib/domain/visit/conduct.commands.server';
+import { endSession, startSession } from '$lib/server/auth/session';
 import type { Actor } from '$lib/server/actor';
 import { systemActor } from '$lib/server/actor';
 import { readOwn } from '$lib/server/change';
@@ -26,11 +29,12 @@ import {
 	type StoryVisit
 } from './aldermere';
 import { Places, workingDay } from './calendar';
-import { at, besideOthers } from './stage.server';
+import { at, besideOthers, demoPassword } from './stage.server';
 
 export interface SiteCast {
 	id: string;
 	coordinator: Actor;
+	investigator: Actor;
 	/** Nurse and room go together. */
 	pairs: { roomId: string; nurse: Actor }[];
 }
@@ -151,10 +155,55 @@ export class Trial {
 					siteId: cast.id,
 					screenedOn: day
 				});
+				await this.answered(cast, day);
 			});
+			this.diary.add(site, this.local(site, day, '15:40'), () => this.signWaiting(cast));
+			// One more waits for the investigator.
+			this.diary.add(site, this.local(site, day, '16:20'), () => this.answered(cast, day));
 		}
 		const first = people[0]?.enrolsOn ?? this.today;
 		await this.diary.play(addDays(first, -2), addDays(this.today, 1), each);
+	}
+
+	/** Somebody in screening whose checklist is complete. */
+	private async answered(cast: SiteCast, day: PlainDate): Promise<void> {
+		const { studyId } = this.cast;
+		const screening = await addScreening(cast.coordinator, studyId, {
+			siteId: cast.id,
+			screenedOn: day
+		});
+		await answerEligibility(
+			cast.coordinator,
+			studyId,
+			screening.id,
+			{ answers: this.metAnswers() },
+			screening.version
+		);
+	}
+
+	private metAnswers = (): Record<string, 'yes' | 'no'> =>
+		Object.fromEntries(
+			this.cast.criteria.map((each) => [each.key, each.kind === 'inclusion' ? 'yes' : 'no'])
+		);
+
+	/** The investigator signs in, signs what waits, and signs out. */
+	private async signWaiting({ investigator }: SiteCast): Promise<void> {
+		const { studyId } = this.cast;
+		const { personId, name, email, requestId } = investigator;
+		const sessionId = await startSession({ id: personId, name, email }, 'password', '', requestId);
+		const actor = { ...investigator, sessionId };
+		const { items } = await findWaiting(actor, studyId);
+		await sign(actor, studyId, {
+			items: items.map(({ record, recordId, meaning, sha256 }) => ({
+				record,
+				recordId,
+				meaning,
+				sha256
+			})),
+			email,
+			password: demoPassword
+		});
+		await endSession(actor, sessionId);
 	}
 
 	private async turnAway(site: number, on: PlainDate, reason: string): Promise<void> {
@@ -185,11 +234,7 @@ export class Trial {
 			coordinator,
 			studyId,
 			screening.id,
-			{
-				answers: Object.fromEntries(
-					this.cast.criteria.map((each) => [each.key, each.kind === 'inclusion' ? 'yes' : 'no'])
-				)
-			},
+			{ answers: this.metAnswers() },
 			screening.version
 		);
 		const entered = await enrolSubject(

@@ -13,6 +13,7 @@ const places: Place[] = [
 	{ label: 'Windows', path: '/windows', capability: 'visit.book' },
 	{ label: 'Subjects', path: '/subjects', capability: 'subject.read' },
 	{ label: 'Screening', path: '/screening', capability: 'screening.read' },
+	{ label: 'To sign', path: '/signing', capability: 'signature.sign' },
 	{ label: 'Schedule', path: '/schedule', capability: 'study.read' },
 	{ label: 'Allocation', path: '/allocation', capability: 'allocation.make' },
 	{ label: 'Import', path: '/import', capability: 'import.run' },

@@ -46,6 +46,12 @@ const table = {
 	'subject.randomise': ['coordinator', 'investigator'],
 	'subject.exit': ['coordinator', 'investigator'],
 
+	/** To read what was signed, with the record it is about. */
+	'signature.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
+	/** To sign at all; each kind of record asks the door for its own right again. */
+	'signature.sign': ['investigator'],
+	'signature.eligibility': ['investigator'],
+
 	'visit.book': ['coordinator'],
 	'visit.chase': ['coordinator'],
 	'visit.measure': ['nurse', 'investigator'],

@@ -27,6 +27,7 @@ export const recordWords = {
 	consent_version: 'consent version',
 	screening: 'screening',
 	consent: 'consent',
+	signature: 'signature',
 	subject: 'subject',
 	contact_details: 'contact details',
 	study_exit: 'end of participation',
@@ -69,6 +70,7 @@ export const historyRecords = [
 	'subject',
 	'screening',
 	'consent',
+	'signature',
 	'study_exit',
 	'contact_attempt',
 	'deviation',
@@ -108,7 +110,10 @@ const technical = new Set([
 	'calendar_uid',
 	'token_hash',
 	'storage_key',
-	'message_id'
+	'message_id',
+	'session_id',
+	'form_version',
+	'digest'
 ]);
 
 /** Of personal records, the fields that name nobody. */

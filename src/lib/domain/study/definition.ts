@@ -248,7 +248,11 @@ export const studyDefinition = z
 					text: line(1000)
 				})
 			)
-			.max(100)
+			.max(100),
+		eligibilitySigned: z.boolean().optional().meta({
+			description:
+				'Whether nobody is enrolled or randomised before the investigator has signed the eligibility checklist; no when left out.'
+		})
 	})
 	.meta({
 		id: 'heddle.study/1',

@@ -117,6 +117,39 @@ export async function getDefinition(
 	return held(found.definition);
 }
 
+/** Within a read or a change: the definition of a published version by its number. */
+export async function getVersionByNumber(
+	reader: Reader,
+	studyId: string,
+	number: number
+): Promise<StudyDefinition> {
+	const found = await reader
+		.selectFrom('protocol_version')
+		.select('definition')
+		.where('study_id', '=', studyId)
+		.where('number', '=', number)
+		.where('status', '=', 'published')
+		.executeTakeFirst();
+	if (!found) throw new Refusal('NOT_FOUND');
+	return held(found.definition);
+}
+
+/** Within a read or a change: the number of the newest published version of each of these studies. */
+export async function publishedNumbers(
+	reader: Reader,
+	studyIds: readonly string[]
+): Promise<Map<string, number>> {
+	if (studyIds.length === 0) return new Map();
+	const rows = await reader
+		.selectFrom('protocol_version')
+		.select((e) => ['study_id', e.fn.max('number').as('number')])
+		.where('study_id', 'in', studyIds)
+		.where('status', '=', 'published')
+		.groupBy('study_id')
+		.execute();
+	return new Map(rows.map((row) => [row.study_id, row.number]));
+}
+
 /** The newest protocol version, draft or published, with the sites as they stand. */
 export const getProtocol = (actor: Actor, studyId: string): Promise<ProtocolVersion> =>
 	read(actor, 'study.read', { studyId }, async (reader) => {

@@ -3,6 +3,24 @@ import type { StudyDefinition } from '../study/definition';
 type Criterion = StudyDefinition['eligibility'][number];
 export type Answers = Readonly<Record<string, 'yes' | 'no'>>;
 
+/** Answers as the screening holds them. */
+export const answersOf = (eligibility: unknown): Answers =>
+	(eligibility as { answers?: Answers } | null)?.answers ?? {};
+
+/** The protocol version whose criteria these answers are to; null before anything was answered. */
+export const answeredVersionOf = (eligibility: unknown): number | null =>
+	(eligibility as { protocolVersion?: number } | null)?.protocolVersion ?? null;
+
+/** When these answers were given, in UTC; null before anything was answered. */
+export const answeredAtOf = (eligibility: unknown): string | null =>
+	(eligibility as { answeredAt?: string } | null)?.answeredAt ?? null;
+
+/** Whether two sets of answers say the same, in whatever order. */
+export const sameAnswers = (one: Answers, other: Answers): boolean => {
+	const text = (of: Answers) => JSON.stringify(Object.entries(of).sort());
+	return text(one) === text(other);
+};
+
 /** An inclusion criterion is met by yes, an exclusion criterion by no; null while it is not answered. */
 export function isMet(
 	criterion: Pick<Criterion, 'key' | 'kind'>,

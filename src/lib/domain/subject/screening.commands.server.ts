@@ -7,6 +7,7 @@ import { clock } from '$lib/time/clock';
 import { plainDateOf, shortDateText } from '$lib/time/dates';
 import { dateInZone, instantFromLocal } from '$lib/time/zones';
 import { getPublished } from '../study/study.reads.server';
+import { answeredVersionOf, answersOf, sameAnswers } from './eligibility';
 import { getSite, siteOf } from './site.reads.server';
 import type { ConsentInput, EligibilityInput, ScreeningInput } from './subject.input';
 
@@ -83,15 +84,23 @@ export async function answerEligibility(
 				{},
 				{ [`answers.${strange}`]: 'This study has no such criterion.' }
 			);
+		// The same answers sent once more are no new answers: who gave them and when stays, and so does a signature.
+		const same =
+			answeredVersionOf(screening.eligibility) === published.number &&
+			sameAnswers(answersOf(screening.eligibility), input.answers);
 		const changed = await writer
 			.updateTable('screening')
 			.set({
-				eligibility: JSON.stringify({
-					answers: input.answers,
-					protocolVersion: published.number,
-					answeredBy: actor.personId,
-					answeredAt: clock.now().toISOString()
-				})
+				eligibility: JSON.stringify(
+					same
+						? screening.eligibility
+						: {
+								answers: input.answers,
+								protocolVersion: published.number,
+								answeredBy: actor.personId,
+								answeredAt: clock.now().toISOString()
+							}
+				)
 			})
 			.where('id', '=', screening.id)
 			.where('version', '=', version)

@@ -3,11 +3,13 @@ import type { Actor } from '$lib/server/actor';
 import { read } from '$lib/server/change';
 import { may, sitesAllowing } from '$lib/server/permission';
 import { instantText } from '$lib/time/zones';
+import type { SignatureView } from '../signature/signature.input';
+import { signaturesOf } from '../signature/signature.reads.server';
 import { isRandomised, type StudyDefinition } from '../study/definition';
 import { getPublished } from '../study/study.reads.server';
-import type { Answers } from './eligibility';
+import { answersOf, type Answers } from './eligibility';
+import { eligibilityKind } from './eligibility-signable.server';
 import { getSite, siteOf, type SiteNow } from './site.reads.server';
-import { answersOf } from './subject.commands.server';
 import type { ScreeningsQuery } from './subject.input';
 
 export interface ScreeningRow {
@@ -103,6 +105,10 @@ export interface ScreeningDetail {
 		'eligibility' | 'strata' | 'stratifyBySite' | 'characteristics' | 'sites'
 	>;
 	randomised: boolean;
+	/** The investigator's signatures of the checklist, the newest first. */
+	signatures: SignatureView[];
+	/** Whether the protocol asks for one before enrolment, and whether the actor can sign now. */
+	signing: { asked: boolean; obstacle: string | null; mine: boolean };
 	consentVersions: { id: string; label: string; approvedOn: string }[];
 	/** Who may have explained the study: people with a role at the site. */
 	explainers: { id: string; name: string }[];
@@ -170,6 +176,7 @@ export async function getScreening(
 			.where('p.active', '=', true)
 			.orderBy('p.name')
 			.execute();
+		const [signable] = await eligibilityKind.find(reader, [screeningId]);
 		return {
 			id: row.id,
 			number: row.number,
@@ -198,6 +205,12 @@ export async function getScreening(
 				sites: definition.sites
 			},
 			randomised: isRandomised(definition),
+			signatures: await signaturesOf(reader, 'eligibility', screeningId),
+			signing: {
+				asked: definition.eligibilitySigned ?? false,
+				obstacle: signable?.obstacle ?? null,
+				mine: may(actor.grants, eligibilityKind.capability, { studyId, siteId })
+			},
 			consentVersions,
 			explainers,
 			mayEdit: may(actor.grants, 'screening.edit', { studyId, siteId }),

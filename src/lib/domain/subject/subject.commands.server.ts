@@ -6,7 +6,8 @@ import { change, mustHaveChanged, type Writer } from '$lib/server/change';
 import { may } from '$lib/server/permission';
 import { getPublished } from '../study/study.reads.server';
 import { isRandomised } from '../study/definition';
-import { standing, type Answers } from './eligibility';
+import { isSigned } from '../signature/signature.reads.server';
+import { answeredVersionOf, answersOf, standing } from './eligibility';
 import { mostSubjectsPerSite, subjectNumber } from './number';
 import { characteristicsOf, stratumOf } from './particulars';
 import { planSubjectVisits } from './plan-visits.server';
@@ -32,10 +33,6 @@ export async function nextSubjectNumbers(
 	return Array.from({ length: count }, (_, at) => subjectNumber(site.code, last + 1 + at));
 }
 
-/** Answers as the screening holds them. */
-export const answersOf = (eligibility: unknown): Answers =>
-	(eligibility as { answers?: Answers } | null)?.answers ?? {};
-
 /**
  * Enters a screened person into the study: with a consent on or before the day and every criterion of the version in
  * force met. Gives the subject number and plans the visits counted from enrolment.
@@ -52,7 +49,11 @@ export async function enrolSubject(
 		const screening = await openScreening(writer, studyId, siteId, screeningId);
 		if (screening.version !== version) throw new Refusal('STALE');
 		const site = await getSite(writer, studyId, siteId);
-		const { id: protocolVersionId, definition } = await getPublished(writer, studyId);
+		const {
+			id: protocolVersionId,
+			number: protocolVersion,
+			definition
+		} = await getPublished(writer, studyId);
 
 		if (input.enrolledOn > site.today)
 			throw new Refusal(
@@ -75,6 +76,13 @@ export async function enrolSubject(
 			throw new Refusal('NOT_ELIGIBLE', {
 				which: [...unmet, ...unanswered].map((criterion) => criterion.text).join(' ')
 			});
+		// The answers may be those to an older version, while the ones in force ask for more.
+		if (
+			definition.eligibilitySigned &&
+			(answeredVersionOf(screening.eligibility) !== protocolVersion ||
+				!(await isSigned(writer, 'eligibility', screening.id)))
+		)
+			throw new Refusal('SIGNATURE_NEEDED');
 		const strata = stratumOf(definition, input.stratum, site.code);
 		const known = characteristicsOf(definition, input.characteristics, site.today);
 		const errors: FieldErrors = { ...strata.errors, ...known.errors };
@@ -173,6 +181,17 @@ export async function saveContactDetails(
 	});
 }
 
+/** Refused when the checklist the subject came in by is not signed, or the signature is broken. */
+async function mustStandSigned(writer: Writer, subjectId: string): Promise<void> {
+	const screening = await writer
+		.selectFrom('screening')
+		.select('id')
+		.where('subject_id', '=', subjectId)
+		.executeTakeFirst();
+	if (!screening || !(await isSigned(writer, 'eligibility', screening.id)))
+		throw new Refusal('SIGNATURE_NEEDED');
+}
+
 /**
  * The subject's allocation, once: the closed side gives a kit number and nothing else, in open studies too. Visits
  * counted from randomisation get their windows in the same change.
@@ -196,6 +215,7 @@ export async function randomiseSubject(
 		const { definition } = await getPublished(writer, studyId);
 		if (!isRandomised(definition))
 			throw new Refusal('RULE', { why: 'This study has one arm: nobody is randomised.' });
+		if (definition.eligibilitySigned) await mustStandSigned(writer, subjectId);
 		const exits = await writer
 			.selectFrom('study_exit')
 			.select('kind')

@@ -98,7 +98,8 @@ export async function unlockSession(actor: Actor, password: string): Promise<boo
 	await changeOwn(actor, 'session.unlock', (writer) =>
 		writer
 			.updateTable('session')
-			.set({ locked_at: null, seen_at: new Date() })
+			// A break: the next signature asks for the address again.
+			.set({ locked_at: null, seen_at: new Date(), signing_since: null })
 			.where('id', '=', actor.sessionId)
 			.execute()
 	);

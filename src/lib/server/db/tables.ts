@@ -422,8 +422,30 @@ interface SessionTable {
 	seen_at: Generated<Timestamp>;
 	locked_at: Timestamp | null;
 	ended_at: Timestamp | null;
+	signing_since: Timestamp | null;
 	device: Generated<string>;
 	version: Generated<number>;
+}
+
+interface SignatureTable {
+	id: string;
+	study_id: string;
+	site_id: string | null;
+	record: string;
+	record_id: string;
+	meaning: 'eligibility' | 'responsibility' | 'review' | 'approval';
+	statement: string;
+	form_version: number;
+	content: string;
+	sha256: string;
+	signer_id: string;
+	session_id: string;
+	/** From here on the database fills in what stands, whatever is given. */
+	printed_name: Generated<string>;
+	role: Generated<string>;
+	at: Generated<Timestamp>;
+	zone: Generated<string>;
+	digest: Generated<Buffer>;
 }
 
 interface SiteTable {
@@ -632,6 +654,7 @@ export interface Tables {
 	room: RoomTable;
 	screening: ScreeningTable;
 	session: SessionTable;
+	signature: SignatureTable;
 	site: SiteTable;
 	study: StudyTable;
 	study_exit: StudyExitTable;

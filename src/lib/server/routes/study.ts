@@ -10,6 +10,8 @@ export const studyRoutes: RouteTable = {
 	[`${study}/allocation`]: { GET: 'study.read', POST: 'allocation.make' },
 	[`${study}/screening`]: { GET: 'screening.read', POST: 'screening.edit' },
 	[`${study}/screening/[screening=id]`]: { GET: 'screening.read', POST: 'subject.enrol' },
+	[`${study}/signing`]: { GET: 'signature.sign', POST: 'signature.sign' },
+	[`${study}/signatures/[signature=id]`]: { GET: 'signature.read' },
 	[`${study}/subjects`]: { GET: 'subject.read' },
 	[`${study}/subjects/[subject=id]`]: { GET: 'subject.read', POST: 'subject.exit' },
 
@@ -23,6 +25,9 @@ export const studyRoutes: RouteTable = {
 	[`${api}/screenings/[screening=id]/closing`]: { POST: 'screening.edit' },
 	[`${api}/screenings/[screening=id]/consents`]: { POST: 'consent.record' },
 	[`${api}/screenings/[screening=id]/enrolment`]: { POST: 'subject.enrol' },
+	[`${api}/signatures`]: { POST: 'signature.sign' },
+	[`${api}/signatures/waiting`]: { GET: 'signature.sign' },
+	[`${api}/signatures/[signature=id]`]: { GET: 'signature.read' },
 	[`${api}/subjects`]: { GET: 'subject.read' },
 	[`${api}/subjects/[subject=id]`]: { GET: 'subject.read' },
 	[`${api}/subjects/[subject=id]/randomisation`]: { POST: 'subject.randomise' },

@@ -1,6 +1,7 @@
 import { redirect } from '@sveltejs/kit';
 import { findCuts } from '$lib/domain/cut/cut.reads.server';
 import { findLooks } from '$lib/domain/look/look.reads.server';
+import { findWaiting } from '$lib/domain/signature/signature.reads.server';
 import {
 	countScreenings,
 	getSiteCounts,
@@ -31,7 +32,7 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 		const atSites = has('coordinator', 'nurse', 'investigator');
 		const coordinator = roles.has('coordinator');
 		const analyst = has('statistician', 'independent_statistician');
-		const [work, windows, counts, screenings, state, cuts, looks] = await Promise.all([
+		const [work, windows, counts, screenings, state, cuts, looks, toSign] = await Promise.all([
 			atSites ? getWorkAtSites(actor, studyId) : null,
 			coordinator
 				? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
@@ -40,7 +41,8 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 			has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
 			roles.has('data_manager') ? getStudyState(actor, studyId) : null,
 			analyst ? findCuts(actor, studyId) : null,
-			analyst ? findLooks(actor, studyId) : null
+			analyst ? findLooks(actor, studyId) : null,
+			may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null
 		]);
 		return {
 			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
@@ -49,6 +51,15 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 			counts,
 			screenings,
 			state,
+			toSign:
+				toSign &&
+				toSign.items.map(({ record, recordId, title, place, broken }) => ({
+					record,
+					recordId,
+					title,
+					place,
+					again: broken !== null
+				})),
 			may: {
 				book: coordinator,
 				chase: coordinator,

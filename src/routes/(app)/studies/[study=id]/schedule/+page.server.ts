@@ -79,6 +79,7 @@ export const load: PageServerLoad = async ({ locals, params, url }) => {
 			rooms: site.rooms.map((room) => room.name).join(', ')
 		})),
 		eligibility: definition.eligibility,
+		eligibilitySigned: definition.eligibilitySigned ?? false,
 		consentVersions: definition.consentVersions.map((version) => ({
 			version: version.version,
 			name: version.name,

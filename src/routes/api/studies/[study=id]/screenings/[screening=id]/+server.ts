@@ -1,4 +1,5 @@
 import { z } from 'zod';
+import { signatureView } from '$lib/domain/signature/signature.input';
 import { getScreening } from '$lib/domain/subject/screening.reads.server';
 import { endpoint } from '$lib/server/api/endpoint';
 
@@ -21,11 +22,24 @@ export const GET = endpoint({
 				explainedBy: z.string()
 			})
 		),
+		signatures: z.array(signatureView),
 		subject: z.object({ id: z.uuid(), number: z.string() }).nullable()
 	}),
 	handle: async ({ actor, params }) => {
-		const { id, number, version, screenedOn, outcome, reason, answers, consents, subject } =
+		const { id, number, version, screenedOn, outcome, reason, answers, ...rest } =
 			await getScreening(actor, params.study as string, params.screening as string);
-		return { id, number, version, screenedOn, outcome, reason, answers, consents, subject };
+		const { consents, signatures, subject } = rest;
+		return {
+			id,
+			number,
+			version,
+			screenedOn,
+			outcome,
+			reason,
+			answers,
+			consents,
+			signatures,
+			subject
+		};
 	}
 });
