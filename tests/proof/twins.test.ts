@@ -49,6 +49,7 @@ beforeAll(async () => {
 	since = Date.now() - 1000;
 	const told = {
 		passwordHash: await hashPassword(password),
+		password,
 		begin: addDays(dateInZone(new Date(), 'UTC'), -150)
 	};
 	const played: [FreshDatabase, Twin][] = [];

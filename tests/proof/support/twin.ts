@@ -28,6 +28,8 @@ import {
 	createStudyFrom,
 	publishProtocol
 } from '../../../src/lib/domain/study/study.commands.server';
+import { sign } from '../../../src/lib/domain/signature/signature.commands.server';
+import { findWaiting } from '../../../src/lib/domain/signature/signature.reads.server';
 import { recordExit } from '../../../src/lib/domain/subject/exit.commands.server';
 import {
 	addScreening,
@@ -49,6 +51,7 @@ import { finishVisit, startVisit } from '../../../src/lib/domain/visit/conduct.c
 import { ids, newId, tokens } from '../../../src/lib/id';
 import type { Actor } from '../../../src/lib/server/actor';
 import { actorFor } from '../../../src/lib/server/auth/actor';
+import { startSession } from '../../../src/lib/server/auth/session';
 import { closedConfig, config, readClosedConfig, readConfig } from '../../../src/lib/server/config';
 import { byArmLookJob, lookJob } from '../../../src/lib/server/looks/jobs';
 import {
@@ -83,6 +86,8 @@ interface Told {
 	/** Whether each place of the list has the other arm than in the twin. */
 	swapped: boolean;
 	passwordHash: string;
+	/** What the hash is of: signing asks for it. */
+	password: string;
 	/** The day on which the study begins; everything is counted from it. */
 	begin: PlainDate;
 }
@@ -205,7 +210,10 @@ async function unmasked(db: FreshDatabase, work: () => Promise<void>): Promise<v
 	end = useAs(db.appUrl);
 }
 
-async function play(db: FreshDatabase, { swapped, passwordHash, begin }: Told): Promise<Twin> {
+async function play(
+	db: FreshDatabase,
+	{ swapped, passwordHash, password, begin }: Told
+): Promise<Twin> {
 	const day = (n: number) => addDays(begin, n);
 	const goTo = (n: number) => clock.set(`${day(n)}T10:00:00Z`);
 	const people: Record<string, TwinPerson> = {};
@@ -308,7 +316,32 @@ async function play(db: FreshDatabase, { swapped, passwordHash, begin }: Told): 
 		screenedOn: day(9)
 	});
 	await closeScreening(as('coordinator'), studyId, out.id, 'Lives too far away.', out.version);
-	await addScreening(as('coordinator'), studyId, { siteId: sites[0].id, screenedOn: day(9) });
+	const later = await addScreening(as('coordinator'), studyId, {
+		siteId: sites[0].id,
+		screenedOn: day(9)
+	});
+	await answerEligibility(as('coordinator'), studyId, later.id, { answers }, later.version);
+	const investigator = people.investigator as TwinPerson;
+	const signer = {
+		...investigator.actor,
+		sessionId: await startSession(
+			{ id: investigator.actor.personId, name: investigator.name, email: investigator.email },
+			'password',
+			'twin',
+			'twin'
+		)
+	};
+	const { items } = await findWaiting(signer, studyId);
+	await sign(signer, studyId, {
+		items: items.map(({ record, recordId, meaning, sha256 }) => ({
+			record,
+			recordId,
+			meaning,
+			sha256
+		})),
+		email: investigator.email,
+		password
+	});
 
 	const visitOf = async (subjectId: string, key: string) =>
 		(

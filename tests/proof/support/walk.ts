@@ -49,7 +49,8 @@ export async function fillings(
 		look: await idsOf('select id from app.look order by id'),
 		report: await idsOf('select id from app.report order by id'),
 		release: await idsOf('select id from app.release order by id'),
-		batch: await idsOf('select id from app.import_batch order by id')
+		batch: await idsOf('select id from app.import_batch order by id'),
+		signature: await idsOf('select id from app.signature order by id')
 	};
 	return (route, param) => {
 		if (param === 'token')
