@@ -67,8 +67,10 @@ const time = z
 	.string()
 	.refine((text) => minutesOfTime(text) !== null, 'Give a time on a 24-hour clock: 09:30.');
 
+const siteCode = z.string().regex(/^\d{2}$/, 'A site code has two digits: 02.');
+
 const site = z.strictObject({
-	code: z.string().regex(/^\d{2}$/, 'A site code has two digits: 02.'),
+	code: siteCode,
 	name: line(100),
 	zone: z
 		.string()
@@ -78,8 +80,17 @@ const site = z.strictObject({
 		.array(z.strictObject({ weekday: whole(1, 7), opens: time, closes: time }))
 		.max(50)
 		.meta({ description: 'Weekday 1 is Monday. Times are those of the site’s own zone.' }),
-	rooms: z.array(named).max(100)
+	rooms: z.array(named).max(100),
+	closures: z
+		.array(z.strictObject({ from: plainDate, to: plainDate, reason: line(100) }))
+		.max(200)
+		.optional()
+		.meta({ description: 'Days on which the site sees nobody, first and last included.' })
 });
+
+const yearMonth = z
+	.string()
+	.regex(/^(19|20|21)\d{2}-(0[1-9]|1[0-2])$/, 'Give a month as year and month: 2026-06.');
 
 const characteristic = z.discriminatedUnion('kind', [
 	z.strictObject({
@@ -120,18 +131,34 @@ const visit = z.strictObject({
 	lengthMinutes: whole(5, 1440)
 });
 
+/** Who may be named to enter what could reveal the arm; whoever does is not masked to it. */
+export const revealingRoles = ['pharmacist', 'nurse', 'investigator'] as const;
+
 const common = {
 	key: keySchema,
 	name: line(100),
 	showLast: z
 		.enum(['before', 'after', 'never'])
-		.meta({ description: 'Whether the last value is shown before entry, only after it, or never.' })
+		.meta({
+			description: 'Whether the last value is shown before entry, only after it, or never.'
+		}),
+	couldRevealArm: z
+		.strictObject({ enteredBy: z.enum(revealingRoles) })
+		.optional()
+		.meta({
+			description:
+				'A value from which the arm could be guessed: entered and read by this role only, and kept from everybody masked with all that is derived from it.'
+		})
 };
 const notDoneReasons = z.array(line(100)).min(1).max(20);
 
 const limits = {
 	unit,
 	decimals: whole(0, 6),
+	scale: z.enum(['linear', 'log']).optional().meta({
+		description:
+			'Scale on which a value is judged against a subject’s own earlier ones: log for a concentration; linear when left out.'
+	}),
 	alsoIn: z
 		.array(unit)
 		.max(5)
@@ -218,7 +245,24 @@ export const studyDefinition = z
 		arms: z.array(arm).max(8),
 		strata: z.array(stratum).max(4),
 		stratifyBySite: z.boolean(),
+		allocation: z
+			.strictObject({ method: z.enum(['permuted-blocks', 'minimisation']) })
+			.optional()
+			.meta({
+				description:
+					'How arms are allocated; permuted blocks when left out. Block sizes, seeds and chances are not part of a definition.'
+			}),
 		sites: z.array(site).max(99),
+		enrolmentPlan: z
+			.strictObject({
+				from: yearMonth,
+				months: whole(1, 240),
+				sites: z.array(z.strictObject({ site: siteCode, subjects: whole(0, 100_000) })).max(99)
+			})
+			.optional()
+			.meta({
+				description: 'Subjects each site means to enrol, spread evenly over the months.'
+			}),
 		characteristics: z
 			.array(characteristic)
 			.max(20)
@@ -238,8 +282,35 @@ export const studyDefinition = z
 			.enum(['day', 'week', 'month', 'year'])
 			.meta({ description: 'Unit of time in the analysis.' }),
 		consentVersions: z
-			.array(z.strictObject({ version: line(20), name: line(200), from: plainDate }))
+			.array(
+				z.strictObject({
+					version: line(20),
+					name: line(200),
+					from: plainDate,
+					language: z
+						.enum(['en', 'de'])
+						.optional()
+						.meta({ description: 'Language of the form; English when left out.' })
+				})
+			)
 			.max(50),
+		minors: z
+			.strictObject({ majority: whole(12, 25), assentFrom: whole(3, 24) })
+			.optional()
+			.meta({
+				description:
+					'Where minors take part: the age at which they decide for themselves, and from which they are asked to assent.'
+			}),
+		lostAfterAttempts: whole(1, 50).optional().meta({
+			description:
+				'Contact attempts without answer before somebody may be called lost to follow-up; one when left out.'
+		}),
+		adverseEvents: z
+			.boolean()
+			.optional()
+			.meta({
+				description: 'Whether the study keeps a list of adverse events; yes when left out.'
+			}),
 		eligibility: z
 			.array(
 				z.strictObject({
