@@ -45,6 +45,22 @@ const table = {
 	'subject.enrol': ['coordinator', 'investigator'],
 	'subject.randomise': ['coordinator', 'investigator'],
 	'subject.exit': ['coordinator', 'investigator'],
+	'subject.correct': ['coordinator', 'investigator'],
+	/** To be shown one subject's arm in an emergency; to write down that an arm became known; to read that it did. */
+	'subject.unmask': ['investigator'],
+	'unmasking.record': ['coordinator', 'investigator'],
+	'unmasking.read': [
+		'data_manager',
+		'investigator',
+		'monitor',
+		'auditor',
+		'independent_statistician'
+	],
+	'code.print': ['independent_statistician'],
+
+	'kit.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
+	'kit.plan': ['data_manager'],
+	'kit.keep': ['coordinator'],
 
 	/** To read what was signed, with the record it is about. */
 	'signature.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
