@@ -431,7 +431,8 @@ begin
 end $$;
 
 -- A sealed code that was opened, told afterwards. Only who opened the envelope can know it, and it is taken once.
-create function closed.use_code(p_id uuid, p_subject uuid, p_hash text, p_happened timestamptz, p_known_to text, p_reason text) returns void
+create function closed.use_code(p_id uuid, p_subject uuid, p_hash text, p_happened timestamptz, p_known_to text, p_reason text, p_impact text)
+returns void
 language plpgsql security definer set search_path = pg_catalog as $$
 declare s app.subject; code closed.sealed_code;
 begin
@@ -446,8 +447,8 @@ begin
 	if code.used_at is not null then
 		raise exception using errcode = 'HD017', message = 'CODE_USED';
 	end if;
-	insert into app.unmasking (id, study_id, site_id, subject_id, kind, person_id, known_to, happened_at, reason)
-		values (p_id, s.study_id, s.site_id, s.id, 'sealed code', app.actor(), p_known_to, p_happened, p_reason);
+	insert into app.unmasking (id, study_id, site_id, subject_id, kind, person_id, known_to, happened_at, reason, impact)
+		values (p_id, s.study_id, s.site_id, s.id, 'sealed code', app.actor(), p_known_to, p_happened, p_reason, p_impact);
 	update closed.sealed_code set used_at = app.now(), unmasking_id = p_id where id = code.id;
 end $$;
 
@@ -492,7 +493,7 @@ const allocate = (db: Kysely<unknown>) =>
 	sql`
 create or replace function closed.allocate(p_subject uuid) returns text language plpgsql security definer set search_path = pg_catalog as $$
 declare
-	s app.subject; l closed.allocation_list; place closed.list_position; chance closed.chance; chosen text; given text; zone text;
+	s app.subject; l closed.allocation_list; place closed.list_position; numbers closed.chance; chosen text; given text; zone text;
 	v app.kit_level; kept integer; at timestamptz := app.now();
 begin
 	select * into s from app.subject where id = p_subject for update;
@@ -512,11 +513,11 @@ begin
 	if exists (select from closed.minimisation m where m.list_id = l.id) then
 		-- Each allocation depends on all those before it.
 		perform pg_advisory_xact_lock(hashtextextended('allocate:' || s.study_id::text, 0));
-		select c.* into chance from closed.chance c where c.list_id = l.id and c.subject_id is null order by c.position limit 1;
+		select c.* into numbers from closed.chance c where c.list_id = l.id and c.subject_id is null order by c.position limit 1;
 		if found then
-			chosen := closed.minimised_arm(l.id, s.stratum, chance.coin, chance.draw);
+			chosen := closed.minimised_arm(l.id, s.stratum, numbers.coin, numbers.draw);
 			update closed.chance set subject_id = s.id, used_at = at, levels = s.stratum, arm_key = chosen
-				where list_id = l.id and position = chance.position;
+				where list_id = l.id and position = numbers.position;
 			select p.* into place from closed.list_position p
 				where p.list_id = l.id and p.arm_key = chosen and p.subject_id is null order by p.position limit 1;
 		end if;

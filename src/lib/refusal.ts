@@ -141,6 +141,10 @@ export const refusals = {
 		status: 409,
 		say: () => 'There is no masked allocation of this subject to show.'
 	},
+	UNMASK_SECRET: {
+		status: 422,
+		say: () => 'That is not how you sign in here. Nothing was shown.'
+	},
 	CODE_UNKNOWN: {
 		status: 422,
 		say: () =>

@@ -61,6 +61,8 @@ const table = {
 	'kit.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
 	'kit.plan': ['data_manager'],
 	'kit.keep': ['coordinator'],
+	/** To plan, send, receive or write off: each act asks the door for its own right again. */
+	'kit.act': ['data_manager', 'coordinator'],
 
 	/** To read what was signed, with the record it is about. */
 	'signature.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],

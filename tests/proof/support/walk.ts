@@ -50,7 +50,9 @@ export async function fillings(
 		report: await idsOf('select id from app.report order by id'),
 		release: await idsOf('select id from app.release order by id'),
 		batch: await idsOf('select id from app.import_batch order by id'),
-		signature: await idsOf('select id from app.signature order by id')
+		signature: await idsOf('select id from app.signature order by id'),
+		delivery: await idsOf('select id from app.kit_delivery order by id'),
+		print: await idsOf('select id from app.code_print order by id')
 	};
 	return (route, param) => {
 		if (param === 'token')

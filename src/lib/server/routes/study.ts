@@ -15,6 +15,12 @@ export const studyRoutes: RouteTable = {
 	[`${study}/subjects`]: { GET: 'subject.read' },
 	[`${study}/subjects/[subject=id]`]: { GET: 'subject.read', POST: 'subject.exit' },
 
+	[`${study}/subjects/[subject=id]/unmask`]: { GET: 'unmasking.record', POST: 'unmasking.record' },
+	[`${study}/unmaskings`]: { GET: 'unmasking.read' },
+	[`${study}/codes`]: { GET: 'code.print', POST: 'code.print' },
+	[`${study}/codes/[print=id]/sheets.pdf`]: { GET: 'code.print' },
+	[`${study}/kits`]: { GET: 'kit.read', POST: 'kit.act' },
+
 	'/api/studies': { POST: 'study.create' },
 	[`${api}/protocol`]: { GET: 'study.read', PATCH: 'study.edit' },
 	[`${api}/protocol/publication`]: { POST: 'study.publish' },
@@ -31,6 +37,16 @@ export const studyRoutes: RouteTable = {
 	[`${api}/subjects`]: { GET: 'subject.read' },
 	[`${api}/subjects/[subject=id]`]: { GET: 'subject.read' },
 	[`${api}/subjects/[subject=id]/randomisation`]: { POST: 'subject.randomise' },
+	[`${api}/subjects/[subject=id]/stratum`]: { PUT: 'subject.correct' },
+	[`${api}/subjects/[subject=id]/unmasking`]: { POST: 'subject.unmask' },
+	[`${api}/subjects/[subject=id]/unmasking-record`]: { POST: 'unmasking.record' },
+	[`${api}/unmaskings`]: { GET: 'unmasking.read' },
+	[`${api}/code-prints`]: { POST: 'code.print' },
+	[`${api}/kits`]: { GET: 'kit.read', POST: 'kit.plan' },
+	[`${api}/kits/levels`]: { PUT: 'kit.plan' },
+	[`${api}/kits/deliveries`]: { POST: 'kit.plan' },
+	[`${api}/kits/deliveries/[delivery=id]/receipt`]: { POST: 'kit.keep' },
+	[`${api}/kits/losses`]: { POST: 'kit.keep' },
 	[`${api}/subjects/[subject=id]/contact-details`]: { PUT: 'contact.edit' },
 	[`${api}/subjects/[subject=id]/exits`]: { POST: 'subject.exit' }
 };

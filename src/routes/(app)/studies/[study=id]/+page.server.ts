@@ -1,6 +1,9 @@
 import { redirect } from '@sveltejs/kit';
 import { findCuts } from '$lib/domain/cut/cut.reads.server';
 import { findLooks } from '$lib/domain/look/look.reads.server';
+import { findLowStock } from '$lib/domain/kit/kit.reads.server';
+import { toldRoles } from '$lib/domain/unmasking/notice.server';
+import { findRecentUnmaskings } from '$lib/domain/unmasking/unmasking.reads.server';
 import { findWaiting } from '$lib/domain/signature/signature.reads.server';
 import {
 	countScreenings,
@@ -32,21 +35,25 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 		const atSites = has('coordinator', 'nurse', 'investigator');
 		const coordinator = roles.has('coordinator');
 		const analyst = has('statistician', 'independent_statistician');
-		const [work, windows, counts, screenings, state, cuts, looks, toSign] = await Promise.all([
-			atSites ? getWorkAtSites(actor, studyId) : null,
-			coordinator
-				? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
-				: null,
-			has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
-			has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
-			roles.has('data_manager') ? getStudyState(actor, studyId) : null,
-			analyst ? findCuts(actor, studyId) : null,
-			analyst ? findLooks(actor, studyId) : null,
-			may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null
-		]);
+		const [work, windows, counts, screenings, state, cuts, looks, toSign, unmaskings, low] =
+			await Promise.all([
+				atSites ? getWorkAtSites(actor, studyId) : null,
+				coordinator
+					? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
+					: null,
+				has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
+				has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
+				roles.has('data_manager') ? getStudyState(actor, studyId) : null,
+				analyst ? findCuts(actor, studyId) : null,
+				analyst ? findLooks(actor, studyId) : null,
+				may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null,
+				has(...toldRoles) ? findRecentUnmaskings(actor, studyId) : [],
+				has('coordinator', 'data_manager') ? findLowStock(actor, studyId) : []
+			]);
 		return {
 			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
 			work,
+			notices: { unmaskings, low },
 			windows,
 			counts,
 			screenings,
