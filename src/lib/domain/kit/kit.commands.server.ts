@@ -199,11 +199,14 @@ export async function tellLowStock(writer: Writer, studyId: string, siteId: stri
 		.where('site_id', '=', siteId)
 		.executeTakeFirst();
 	if (!level || level.told_at !== null || level.kits > level.resupply_at) return;
-	await writer
+	const told = await writer
 		.updateTable('kit_level')
 		.set({ told_at: clock.now() })
 		.where('site_id', '=', siteId)
+		.where('told_at', 'is', null)
+		.returning('site_id')
 		.execute();
+	if (told.length === 0) return;
 	for (const personId of await peopleWith(writer, studyId, siteId, [
 		'coordinator',
 		'pharmacist',

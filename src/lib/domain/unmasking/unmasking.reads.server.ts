@@ -52,7 +52,7 @@ const lines = (reader: Reader, studyId: string) =>
 		])
 		.where('u.study_id', '=', studyId)
 		.orderBy('u.recorded_at', 'desc')
-		.orderBy('u.id');
+		.orderBy('u.id', 'desc');
 
 type Row = Awaited<ReturnType<ReturnType<typeof lines>['execute']>>[number];
 const lineOf = (row: Row): UnmaskingLine => ({
