@@ -9,6 +9,7 @@ import {
 	recordConsent
 } from '../../src/lib/domain/subject/screening.commands.server';
 import { enrolSubject } from '../../src/lib/domain/subject/subject.commands.server';
+import { approveSites } from './approve';
 import { createStudy, publishProtocol } from '../../src/lib/domain/study/study.commands.server';
 import type { CreateStudyInput } from '../../src/lib/domain/study/study.input';
 import { getProtocol } from '../../src/lib/domain/study/study.reads.server';
@@ -80,6 +81,7 @@ export async function makeScene(
 	});
 	const draft = await getProtocol(manager, studyId);
 	await publishProtocol(manager, studyId, draft.version);
+	await approveSites(manager, studyId);
 	const [sites = [], consents = []] = (await db.sql(
 		`select id, code from app.site where study_id = '${studyId}' order by code`,
 		`select id from app.consent_version where study_id = '${studyId}'`

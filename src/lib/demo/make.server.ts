@@ -1,5 +1,7 @@
 import { recommend } from '$lib/domain/board/board.server';
 import { mapImport, startImport, uploadImport } from '$lib/domain/import/import.commands.server';
+import { approveSite } from '$lib/domain/site/site.commands.server';
+import { findSiteViews } from '$lib/domain/site/site.reads.server';
 import { downloadCopy } from '$lib/domain/report/report-file.server';
 import {
 	approveRelease,
@@ -250,6 +252,8 @@ async function trial(
 	);
 	at(new Date(`${addDays(begun, -5)}T10:00:00Z`));
 	await publishProtocol(manager, studyId, 1);
+	for (const site of await findSiteViews(manager, studyId))
+		await approveSite(manager, studyId, site.id, { approvedOn: addDays(begun, -30) }, site.version);
 	await signPlan(await acting(id(ids, 'statistician')), studyId, plan);
 	const independent = await acting(id(ids, 'independent'));
 	const { jobRunId } = await askForList(independent, studyId);

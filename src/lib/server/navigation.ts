@@ -15,6 +15,7 @@ const places: Place[] = [
 	{ label: 'Screening', path: '/screening', capability: 'screening.read' },
 	{ label: 'To sign', path: '/signing', capability: 'signature.sign' },
 	{ label: 'Schedule', path: '/schedule', capability: 'study.read' },
+	{ label: 'Sites', path: '/sites', capability: 'study.read' },
 	{ label: 'Allocation', path: '/allocation', capability: 'allocation.make' },
 	{ label: 'Import', path: '/import', capability: 'import.run' },
 	{ label: 'Data cuts', path: '/cuts', capability: 'cut.read' },

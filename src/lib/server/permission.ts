@@ -15,6 +15,7 @@ const table = {
 		'data_manager',
 		'coordinator',
 		'nurse',
+		'pharmacist',
 		'investigator',
 		'monitor',
 		'auditor',
@@ -25,6 +26,7 @@ const table = {
 		'data_manager',
 		'coordinator',
 		'nurse',
+		'pharmacist',
 		'investigator',
 		'monitor',
 		'auditor',
@@ -34,9 +36,19 @@ const table = {
 	],
 	'study.edit': ['data_manager'],
 	'study.publish': ['data_manager'],
+	'site.approve': ['data_manager'],
+	'site.close': ['data_manager', 'coordinator'],
 	'import.run': ['data_manager'],
 
-	'subject.read': ['data_manager', 'coordinator', 'nurse', 'investigator', 'monitor', 'auditor'],
+	'subject.read': [
+		'data_manager',
+		'coordinator',
+		'nurse',
+		'pharmacist',
+		'investigator',
+		'monitor',
+		'auditor'
+	],
 	'contact.read': ['coordinator', 'investigator'],
 	'contact.edit': ['coordinator'],
 	'screening.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
@@ -55,6 +67,8 @@ const table = {
 	'visit.book': ['coordinator'],
 	'visit.chase': ['coordinator'],
 	'visit.measure': ['nurse', 'investigator'],
+	/** To keep a value: an open one asks for the right to measure, another one for the role its measure names. */
+	'visit.record': ['nurse', 'investigator', 'pharmacist'],
 	'feed.own': ['coordinator', 'nurse', 'investigator'],
 
 	'cut.make': ['data_manager', 'statistician'],
