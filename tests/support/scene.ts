@@ -9,8 +9,13 @@ import {
 	recordConsent
 } from '../../src/lib/domain/subject/screening.commands.server';
 import { enrolSubject } from '../../src/lib/domain/subject/subject.commands.server';
+import { findTemplate } from '../../src/lib/domain/study/templates.server';
 import { approveSites } from './approve';
-import { createStudy, publishProtocol } from '../../src/lib/domain/study/study.commands.server';
+import {
+	createStudyFrom,
+	definitionFrom,
+	publishProtocol
+} from '../../src/lib/domain/study/study.commands.server';
 import type { CreateStudyInput } from '../../src/lib/domain/study/study.input';
 import { getProtocol } from '../../src/lib/domain/study/study.reads.server';
 import type { Actor } from '../../src/lib/server/actor';
@@ -66,7 +71,9 @@ export async function makeScene(
 	const managerId = await account('Mara');
 	await addRole(db, managerId, 'data_manager');
 	const manager = await actorFor(managerId, 'scene');
-	const { studyId } = await createStudy(manager, {
+	const template = findTemplate('two-arm-trial');
+	if (!template) throw new Error('The template two-arm-trial is not there');
+	const facts = {
 		template: 'two-arm-trial',
 		code: `WEFT-${tag}`,
 		name: 'Weft',
@@ -78,7 +85,13 @@ export async function makeScene(
 		],
 		consentApprovedOn: '2025-01-06',
 		...change
-	});
+	};
+	// Most scenes are about something else than the investigator's signature.
+	const { studyId } = await createStudyFrom(
+		manager,
+		{ ...definitionFrom(template.definition, facts), eligibilitySigned: false },
+		{ training: facts.training }
+	);
 	const draft = await getProtocol(manager, studyId);
 	await publishProtocol(manager, studyId, draft.version);
 	await approveSites(manager, studyId);

@@ -41,7 +41,7 @@ function template(): StudyDefinition {
 	const file = join(root, 'templates/studies/two-arm-trial.json');
 	const { $schema, ...definition } = JSON.parse(readFileSync(file, 'utf8'));
 	void $schema;
-	return definition as StudyDefinition;
+	return { ...definition, eligibilitySigned: false } as StudyDefinition;
 }
 
 export async function addActor(

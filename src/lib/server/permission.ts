@@ -69,7 +69,7 @@ const table = {
 	'visit.measure': ['nurse', 'investigator'],
 	/** To keep a value: an open one asks for the right to measure, another one for the role its measure names. */
 	'visit.record': ['nurse', 'investigator', 'pharmacist'],
-	'feed.own': ['coordinator', 'nurse', 'investigator'],
+	'feed.own': ['coordinator', 'nurse', 'pharmacist', 'investigator'],
 
 	'cut.make': ['data_manager', 'statistician'],
 	'cut.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],

@@ -1,6 +1,6 @@
 import { sql } from 'kysely';
 import type { Actor } from '$lib/server/actor';
-import type { Reader } from '$lib/server/change';
+import { read, type Reader } from '$lib/server/change';
 import { may, type Scope } from '$lib/server/permission';
 import { unitOfMeasure, type Measure, type RevealingRole } from '../study/definition';
 import { definitionOf, type VisitRow } from '../visit/visit.reads.server';
@@ -139,3 +139,30 @@ export function lastAndBaseline(
 		baseline: mine.find((each) => each.visitKey === baselineVisit)?.value ?? null
 	};
 }
+
+export interface ToRecord {
+	visitId: string;
+	number: string;
+	visit: string;
+	measures: string[];
+	/** The day of the visit. */
+	on: string;
+}
+
+/** Measures that only the actor's own role enters and that visits under way or over still lack, oldest first. */
+export const findToRecord = (actor: Actor, studyId: string): Promise<ToRecord[]> =>
+	read(actor, 'visit.record', { studyId }, async (reader) => {
+		const { rows } = await sql<ToRecord>`
+			select v.id as "visitId", s.number, v.name as visit, v.happened_on::text as on,
+				array_agg(m.name order by m.position) as measures
+			from app.visit v
+			join app.subject s on s.id = v.subject_id
+			join app.planned_measure pm on pm.planned_visit_id = v.planned_visit_id
+			join app.measure m on m.id = pm.measure_id and m.open_to is not null and m.kind <> 'derived'
+			where v.study_id = ${studyId}::uuid and v.status in ('under way', 'completed')
+				and app.has_role(array[m.open_to], v.study_id, v.site_id)
+				and not exists (select from app.measurement n where n.visit_id = v.id and n.measure_id = m.id)
+			group by v.id, s.number, v.name, v.happened_on
+			order by v.happened_on, s.number limit 200`.execute(reader);
+		return rows;
+	});
