@@ -73,6 +73,11 @@ export const refusals = {
 	NOT_DRAFT: { status: 409, say: () => 'This protocol version is published and never changes.' },
 	NOT_PUBLISHED: { status: 409, say: () => 'The study has no published protocol version yet.' },
 	DEFINITION: { status: 422, say: (f) => `The study definition needs another look: ${f.why}` },
+	SITE_NOT_APPROVED: {
+		status: 422,
+		say: (f) =>
+			`${f.site} was not approved on that day: nobody is enrolled at a site before its approval is recorded.`
+	},
 	CONSENT_NEEDED: {
 		status: 422,
 		say: () => 'A valid consent on or before this day is needed first.'

@@ -17,7 +17,7 @@ import type { RunningServer } from './server';
 import { addSubject, around, visitScene, type Scene } from './visit-scene';
 
 const password = 'linen warp and weft';
-const siteRoles: Role[] = ['coordinator', 'nurse', 'investigator', 'monitor'];
+const siteRoles: Role[] = ['coordinator', 'nurse', 'pharmacist', 'investigator', 'monitor'];
 const studyRoles: Role[] = [
 	'data_manager',
 	'auditor',

@@ -9,13 +9,14 @@ import {
 	recordConsent
 } from '../../src/lib/domain/subject/screening.commands.server';
 import { enrolSubject } from '../../src/lib/domain/subject/subject.commands.server';
+import { findTemplate } from '../../src/lib/domain/study/templates.server';
+import { approveSites } from './approve';
 import {
 	createStudyFrom,
 	definitionFrom,
 	publishProtocol
 } from '../../src/lib/domain/study/study.commands.server';
 import type { StudyDefinition } from '../../src/lib/domain/study/definition';
-import { findTemplate } from '../../src/lib/domain/study/templates.server';
 import type { CreateStudyInput } from '../../src/lib/domain/study/study.input';
 import { getProtocol } from '../../src/lib/domain/study/study.reads.server';
 import type { Actor } from '../../src/lib/server/actor';
@@ -73,7 +74,9 @@ export async function makeScene(
 	const managerId = await account('Mara');
 	await addRole(db, managerId, 'data_manager');
 	const manager = await actorFor(managerId, 'scene');
-	const input: CreateStudyInput = {
+	const template = findTemplate('two-arm-trial');
+	if (!template) throw new Error('The template two-arm-trial is not there');
+	const facts = {
 		template: 'two-arm-trial',
 		code: `WEFT-${tag}`,
 		name: 'Weft',
@@ -86,12 +89,15 @@ export async function makeScene(
 		consentApprovedOn: '2025-01-06',
 		...change
 	};
-	const template = findTemplate(input.template)!.definition;
-	const { studyId } = await createStudyFrom(manager, define(definitionFrom(template, input)), {
-		training: input.training
-	});
+	// Most scenes are about something else than the investigator's signature.
+	const { studyId } = await createStudyFrom(
+		manager,
+		define({ ...definitionFrom(template.definition, facts), eligibilitySigned: false }),
+		{ training: facts.training }
+	);
 	const draft = await getProtocol(manager, studyId);
 	await publishProtocol(manager, studyId, draft.version);
+	await approveSites(manager, studyId);
 	const [sites = [], consents = []] = (await db.sql(
 		`select id, code from app.site where study_id = '${studyId}' order by code`,
 		`select id from app.consent_version where study_id = '${studyId}'`

@@ -15,6 +15,7 @@ const places: Place[] = [
 	{ label: 'Screening', path: '/screening', capability: 'screening.read' },
 	{ label: 'To sign', path: '/signing', capability: 'signature.sign' },
 	{ label: 'Schedule', path: '/schedule', capability: 'study.read' },
+	{ label: 'Sites', path: '/sites', capability: 'study.read' },
 	{ label: 'Allocation', path: '/allocation', capability: 'allocation.make' },
 	{ label: 'Kits', path: '/kits', capability: 'kit.read' },
 	{ label: 'Unmaskings', path: '/unmaskings', capability: 'unmasking.read' },

@@ -10,6 +10,7 @@ import { makeFeed } from '../../../src/lib/domain/feed/feed.commands.server';
 import { requestLook } from '../../../src/lib/domain/look/look.commands.server';
 import type { LookSpec } from '../../../src/lib/domain/look/look.input';
 import { signPlan } from '../../../src/lib/domain/look/plan.server';
+import { approveSites } from '../../support/approve';
 import { recordMeasurement } from '../../../src/lib/domain/measurement/measurement.commands.server';
 import { recordMeasurementInput } from '../../../src/lib/domain/measurement/measurement.input';
 import type { Role } from '../../../src/lib/domain/person/roles';
@@ -237,6 +238,7 @@ async function play(
 	const definition = definitionFrom(begin);
 	const { studyId } = await createStudyFrom(manager, definition, { training: false });
 	await publishProtocol(manager, studyId, 1);
+	await approveSites(manager, studyId);
 	const [sites = [], rooms = [], consents = [], measures = []] = await db.sql(
 		`select id from app.site where study_id = '${studyId}' order by code`,
 		`select r.id from app.room r join app.site s on s.id = r.site_id where r.study_id = '${studyId}' order by s.code, r.name`,

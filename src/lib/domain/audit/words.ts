@@ -125,6 +125,7 @@ const technical = new Set([
 	'message_id',
 	'session_id',
 	'form_version',
+	'open_to',
 	'digest'
 ]);
 

@@ -10,6 +10,7 @@ import { checkDefinition } from './check';
 import {
 	decimalsOfMeasure,
 	isRandomised,
+	openTo,
 	unitOfMeasure,
 	type SiteDefinition,
 	type StudyDefinition
@@ -118,7 +119,8 @@ async function addSites(writer: Writer, studyId: string, definition: StudyDefini
 				code: site.code,
 				name: site.name,
 				zone: site.zone,
-				opening: JSON.stringify(site.openingHours)
+				opening: JSON.stringify(site.openingHours),
+				closures: JSON.stringify(site.closures ?? [])
 			})
 			.execute();
 		if (site.rooms.length > 0)
@@ -264,6 +266,7 @@ export async function layOutSchedule(
 		spec: JSON.stringify(visit),
 		length_minutes: visit.lengthMinutes
 	}));
+	const open = openTo(definition);
 	const measures = definition.measures.map((measure, at) => ({
 		id: newId(),
 		study_id: studyId,
@@ -274,7 +277,8 @@ export async function layOutSchedule(
 		decimals: decimalsOfMeasure(measure),
 		kind: measure.kind,
 		position: at + 1,
-		spec: JSON.stringify(measure)
+		spec: JSON.stringify(measure),
+		open_to: open.get(measure.key) ?? null
 	}));
 	await writer.insertInto('planned_visit').values(visits).execute();
 	await writer.insertInto('measure').values(measures).execute();

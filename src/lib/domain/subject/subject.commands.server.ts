@@ -62,6 +62,8 @@ export async function enrolSubject(
 				{ what: 'The day of enrolment' },
 				{ enrolledOn: 'This day has not come yet.' }
 			);
+		if (site.approvedOn === null || input.enrolledOn < site.approvedOn)
+			throw new Refusal('SITE_NOT_APPROVED', { site: site.name });
 		if (input.enrolledOn < screening.screened_on)
 			throw new Refusal(
 				'RULE',

@@ -307,6 +307,7 @@ interface MeasureTable {
 	kind: 'number' | 'choice' | 'date' | 'text' | 'repeated' | 'derived';
 	position: number;
 	spec: Json;
+	open_to: 'pharmacist' | 'nurse' | 'investigator' | null;
 }
 
 interface MeasurementTable {
@@ -331,6 +332,7 @@ interface MeasurementTable {
 	taken_by: string;
 	source: 'form' | 'import' | 'derived';
 	version: Generated<number>;
+	open_to: Generated<'pharmacist' | 'nurse' | 'investigator' | null>;
 }
 
 interface MonitoringPlanTable {
@@ -511,6 +513,8 @@ interface SiteTable {
 	zone: string;
 	opening: GeneratedJson;
 	version: Generated<number>;
+	approved_on: string | null;
+	closures: GeneratedJson;
 }
 
 interface StudyTable {

@@ -7,6 +7,7 @@ const api = '/api/studies/[study=id]';
 export const studyRoutes: RouteTable = {
 	'/(app)/studies/new': { GET: 'study.create', POST: 'study.create' },
 	[`${study}/schedule`]: { GET: 'study.read', POST: 'study.publish' },
+	[`${study}/sites`]: { GET: 'study.read', POST: 'site.close' },
 	[`${study}/allocation`]: { GET: 'study.read', POST: 'allocation.make' },
 	[`${study}/screening`]: { GET: 'screening.read', POST: 'screening.edit' },
 	[`${study}/screening/[screening=id]`]: { GET: 'screening.read', POST: 'subject.enrol' },
@@ -24,6 +25,9 @@ export const studyRoutes: RouteTable = {
 	'/api/studies': { POST: 'study.create' },
 	[`${api}/protocol`]: { GET: 'study.read', PATCH: 'study.edit' },
 	[`${api}/protocol/publication`]: { POST: 'study.publish' },
+	[`${api}/sites`]: { GET: 'study.read' },
+	[`${api}/sites/[site=id]/approval`]: { PUT: 'site.approve' },
+	[`${api}/sites/[site=id]/closures`]: { POST: 'site.close', DELETE: 'site.close' },
 	[`${api}/allocation-list`]: { GET: 'study.read', POST: 'allocation.make' },
 	[`${api}/screenings`]: { GET: 'screening.read', POST: 'screening.edit' },
 	[`${api}/screenings/[screening=id]`]: { GET: 'screening.read' },
