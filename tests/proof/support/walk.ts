@@ -59,6 +59,11 @@ export async function fillings(
 			return route.id.startsWith('/calendar/')
 				? twin.feedTokens
 				: ['no-such-token-0123456789abcdef'];
+		// The second study's own pages and subjects; what hangs deeper is the same in kind.
+		if (param === 'study')
+			return route.params.every((each) => each === 'study' || each === 'subject')
+				? [twin.studyId, twin.minimisedStudyId]
+				: [twin.studyId];
 		// The study's measures at one visit are enough: the form of the others shows them too.
 		return param === 'measure' ? (found.measure ?? []).slice(0, 6) : (found[param] ?? []);
 	};
