@@ -115,7 +115,7 @@ describe('a measure that could reveal the arm', () => {
 		await refusal(keep(pharmacist, visitId, 'weight', '80'), 'NOT_PERMITTED');
 	});
 
-	test('is seen by no masked role, by whatever way, and what is derived from it is not either', async () => {
+	test('R-42: is seen by no masked role, by whatever way, and what is derived from it is not either', async () => {
 		const { subject, visitId } = await begun();
 		await keep(masked.nurse as Actor, visitId, 'weight', '81.5');
 		const { version } = await keep(pharmacist, visitId, 'urine-glucose', '4.25');
