@@ -20,6 +20,7 @@ import { openDatabase, useDatabase, type Database } from '../../src/lib/server/d
 import { clock } from '../../src/lib/time/clock';
 import { freshDatabase, useEnvironment, type FreshDatabase } from '../support/database';
 import { refusal } from '../support/refusals';
+import { withTellingMeasure } from '../support/telling';
 import { addActor, addSubject, around, visitScene, type Scene } from '../support/visit-scene';
 
 let db: FreshDatabase;
@@ -31,40 +32,14 @@ const now = '2026-06-09T06:00:00Z';
 /** A value that stands nowhere else, so that finding it means that it came through. */
 const telling = '13.37';
 
-/** A laboratory value that the treatment changes, and what is derived from it. */
-function withTellingMeasure(definition: StudyDefinition): StudyDefinition {
+/** Weight alone beside it: what the nurse must enter is not what this is about. */
+const shortened = (definition: StudyDefinition): StudyDefinition => {
+	const told = withTellingMeasure(definition);
 	return {
-		...definition,
-		measures: [
-			...definition.measures,
-			{
-				key: 'urine-glucose',
-				name: 'Urine glucose',
-				kind: 'number',
-				unit: 'mmol/L',
-				decimals: 2,
-				hardLow: 0,
-				hardHigh: 400,
-				showLast: 'never',
-				notDoneReasons: ['Sample lost'],
-				couldRevealArm: { enteredBy: 'pharmacist' }
-			},
-			{
-				key: 'urine-glucose-mean',
-				name: 'Urine glucose, mean',
-				kind: 'derived',
-				unit: 'mmol/L',
-				decimals: 2,
-				showLast: 'never',
-				derivedBy: { formula: 'mean', inputs: { first: 'measure:urine-glucose' } }
-			}
-		],
-		schedule: {
-			...definition.schedule,
-			'month-6': ['weight', 'urine-glucose', 'urine-glucose-mean']
-		}
+		...told,
+		schedule: { ...told.schedule, 'month-6': ['weight', 'urine-glucose', 'urine-glucose-mean'] }
 	};
-}
+};
 
 beforeAll(async () => {
 	db = await freshDatabase();
@@ -73,7 +48,7 @@ beforeAll(async () => {
 	open = openDatabase(db.appUrl);
 	useDatabase(open);
 	clock.set(now);
-	scene = await visitScene(db, { change: withTellingMeasure });
+	scene = await visitScene(db, { change: shortened });
 	const site = scene.sites[0].id;
 	const person = async (role: Role, at: string | null) =>
 		(await addActor(db, `Someone ${role}`, role, scene.studyId, at)).actor;
@@ -140,7 +115,7 @@ describe('a measure that could reveal the arm', () => {
 		await refusal(keep(pharmacist, visitId, 'weight', '80'), 'NOT_PERMITTED');
 	});
 
-	test('is seen by no masked role, by whatever way, and what is derived from it is not either', async () => {
+	test('R-42: is seen by no masked role, by whatever way, and what is derived from it is not either', async () => {
 		const { subject, visitId } = await begun();
 		await keep(masked.nurse as Actor, visitId, 'weight', '81.5');
 		const { version } = await keep(pharmacist, visitId, 'urine-glucose', '4.25');

@@ -280,6 +280,8 @@ export interface StudyState {
 	status: 'draft' | 'open' | 'ended';
 	published: boolean;
 	people: number;
+	/** Sites whose approval is not recorded yet. */
+	unapproved: number;
 	subjects: number;
 	cuts: number;
 }
@@ -292,6 +294,7 @@ export const getStudyState = (actor: Actor, studyId: string): Promise<StudyState
 				exists (select from app.protocol_version v where v.study_id = s.id and v.status = 'published') as published,
 				(select count(distinct r.person_id)::int from app.person_role r where r.study_id = s.id
 					and r.role in ('coordinator', 'nurse', 'investigator')) as people,
+				(select count(*)::int from app.site t where t.study_id = s.id and t.approved_on is null) as unapproved,
 				(select count(*)::int from app.subject u where u.study_id = s.id) as subjects,
 				(select count(*)::int from app.cut c where c.study_id = s.id) as cuts
 			from app.study s where s.id = ${studyId}::uuid`.execute(reader);
