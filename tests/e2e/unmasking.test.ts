@@ -116,6 +116,89 @@ test('a kit is given at randomisation; in an emergency the investigator is shown
 			`select p.email from app.mail m join app.person p on p.id = m.person_id where m.kind = 'unmasking' order by 1`
 		);
 		expect(mails.map((row) => row.email)).toEqual([doctor, scene.manager.email].sort());
+		// Sheets of sealed codes are for who is not masked.
+		const unmasked = 'vera.lindt@example.org';
+		const unmaskedId = await addPerson(database, {
+			email: unmasked,
+			name: 'Vera Lindt',
+			passwordHash
+		});
+		await addRole(database, unmaskedId, 'independent_statistician', scene.studyId);
+		const sheets = await pageFor(unmasked);
+		await sheets.goto(`${study}/codes`);
+		await ready(sheets);
+		await looked(sheets, 'codes');
+		await sheets.getByLabel('Site', { exact: true }).selectOption({ index: 1 });
+		await sheets.getByRole('button', { name: 'Make the sheets' }).click();
+		await expect(sheets.getByRole('row').filter({ hasText: 'being made' })).toBeVisible();
+	} finally {
+		await server.stop();
+	}
+});
+
+test('kits are counted at the sites, filled up, received and written off', async ({ browser }) => {
+	const server = await startServer();
+	try {
+		const { database } = server;
+		const passwordHash = await hash(password, { memoryCost: 19456, timeCost: 2, parallelism: 1 });
+		const scene = await visitScene(database, { passwordHash });
+		const list = newId();
+		const kits = Array.from({ length: 40 }, (_, at) => `K${10_000 + at * 17}-0`);
+		await asOwner(database, async (client) => {
+			await client.query(
+				`insert into closed.allocation_list (id, study_id, seed, block_sizes, method, hash, plan) values ($1, $2, 'seed', '{4}', 'a test', 'none', $3)`,
+				[
+					list,
+					scene.studyId,
+					JSON.stringify({
+						arms: [
+							{ key: 'a', ratio: 1 },
+							{ key: 'b', ratio: 1 }
+						]
+					})
+				]
+			);
+			for (const [at, number] of kits.entries())
+				await client.query(
+					`insert into closed.list_position (id, study_id, list_id, stratum, position, arm_key, kit_number) values ($1, $2, $3, '{}', $4, $5, $6)`,
+					[newId(), scene.studyId, list, at + 1, at % 2 ? 'a' : 'b', number]
+				);
+		});
+		const pageFor = async (email: string) =>
+			(await signedIn(browser, server, { email, password })).newPage();
+		const manager = await pageFor(scene.manager.email);
+		const address = `/studies/${scene.studyId}/kits`;
+		await manager.goto(address);
+		await ready(manager);
+		await looked(manager, 'kits-none');
+		await manager.getByRole('button', { name: 'Count kits' }).click();
+		await expect(manager.getByRole('heading', { name: 'Fill a site up' })).toBeVisible();
+		const level = manager.getByRole('group', { name: 'First site' });
+		await level.getByLabel('Full stock').fill('21');
+		await level.getByRole('button', { name: /^Save/ }).click();
+		await expect(level.getByText('Give a multiple of 2')).toBeVisible();
+		await level.getByLabel('Full stock').fill('20');
+		await level.getByRole('button', { name: /^Save/ }).click();
+		await expect(level.getByText('fewer than 11 to give')).toBeVisible();
+		await manager.getByLabel('Site', { exact: true }).selectOption({ label: 'First site' });
+		await manager.getByLabel('These kits are good until').fill('2031-01-31');
+		await manager.getByRole('button', { name: 'Send' }).click();
+		await expect(manager.getByText('20 kits are on their way.')).toBeVisible();
+		await ready(manager);
+		await looked(manager, 'kits-sent');
+
+		const desk = await pageFor(scene.sites[0].coordinator.email);
+		await desk.goto(address);
+		await ready(desk);
+		await desk.getByRole('button', { name: /^Received/ }).click();
+		await expect(desk.getByText('20 kits received.')).toBeVisible();
+		await expect(desk.getByRole('row', { name: /First site enough 20 20 14/ })).toBeVisible();
+		await desk.getByLabel('Kit number').fill('K1');
+		await desk.getByLabel('lost').check();
+		await desk.getByLabel('What happened').fill('Not in the box.');
+		await desk.getByRole('button', { name: 'Take it out of the stock' }).click();
+		await expect(desk.getByText('No kit has this number')).toBeVisible();
+		await looked(desk, 'kits-desk');
 	} finally {
 		await server.stop();
 	}

@@ -133,6 +133,8 @@ function definitionFrom(begin: PlainDate): StudyDefinition {
 		code: 'TWIN-1',
 		name: 'Twin threads',
 		plannedSubjects: 40,
+		// Somebody signs one checklist below; who is enrolled before that need not wait for it.
+		eligibilitySigned: false,
 		consentVersions: [{ ...definition.consentVersions[0], from: addDays(begin, -60) }]
 	} as StudyDefinition;
 }
@@ -584,7 +586,6 @@ async function playMinimised(
 		...definitionFrom(begin),
 		code: 'TWIN-2',
 		name: 'Twin threads, minimised',
-		eligibilitySigned: false,
 		allocation: { method: 'minimisation' }
 	};
 	const { studyId } = await createStudyFrom(manager, definition, { training: false });
