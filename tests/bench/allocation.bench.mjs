@@ -19,13 +19,12 @@ await withModules(async (load) => {
 	]) {
 		const db = await freshDatabase();
 		useEnvironment(db);
-		let end = useAs(db.appUrl);
+		const begin = useAs(db.appUrl);
 		const scene = await sceneOf(db, { plannedSubjects: subjects, allocation: { method } });
 		if (stocked) await kits.planKits(scene.manager, scene.studyId, { useDays: 0 });
-		await end();
-		end = useAs(db.appUrl);
 		await makeList(db, scene);
-		end = useAs(db.appUrl);
+		await begin();
+		const end = useAs(db.appUrl);
 		if (stocked) {
 			const [{ id: siteId }] = scene.sites;
 			const level = { siteId, fullStock: 1200, resupplyAt: 1100, version: 0 };

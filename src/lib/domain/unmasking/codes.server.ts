@@ -187,6 +187,13 @@ async function write(writer: Writer, printId: string): Promise<void> {
 		.execute();
 }
 
+/** What an open record may say of a failure on the closed side: that there was one. */
+function closedFault(thrown: unknown, printId: string): Error {
+	if (thrown instanceof Refusal) return thrown;
+	log.error({ errorName: (thrown as Error)?.name, print: printId }, 'sealed codes');
+	return new Error('The sheets could not be made.');
+}
+
 export async function sealedCodesJob({
 	payload: { printId, jobRunId },
 	lastTry
@@ -194,14 +201,11 @@ export async function sealedCodesJob({
 	try {
 		await supervised(jobRunId, lastTry, async ({ progress }) => {
 			await progress(0.2, 'Writing the sheets.');
-			try {
-				await change(systemActor(jobRunId), 'job.read', {}, (writer) => write(writer, printId));
-			} catch (thrown) {
-				if (thrown instanceof Refusal) throw thrown;
-				// An open record may say no more of a failure on the closed side than that there was one.
-				log.error({ errorName: (thrown as Error)?.name, print: printId }, 'sealed codes');
-				throw new Error('The sheets could not be made.');
-			}
+			await change(systemActor(jobRunId), 'job.read', {}, (writer) => write(writer, printId)).catch(
+				(thrown: unknown) => {
+					throw closedFault(thrown, printId);
+				}
+			);
 		});
 	} catch (thrown) {
 		if (lastTry || thrown instanceof Refusal)

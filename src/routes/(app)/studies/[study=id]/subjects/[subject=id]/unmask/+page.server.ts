@@ -1,4 +1,3 @@
-import { fail } from '@sveltejs/kit';
 import { getUnmasking } from '$lib/domain/unmasking/unmasking.reads.server';
 import { recordUnmasking, unmaskSubject } from '$lib/domain/unmasking/unmasking.commands.server';
 import { outsideForm, outsideInput, unmaskForm } from '$lib/domain/unmasking/unmasking.input';
@@ -47,8 +46,8 @@ export const actions: Actions = {
 		);
 		return 'form' in answer ? { ...answer, shown } : answer;
 	},
-	outside: async ({ request, locals, params }) => {
-		const answer = await submit(
+	outside: ({ request, locals, params }) =>
+		submit(
 			request,
 			outsideForm,
 			async (data) => {
@@ -61,7 +60,5 @@ export const actions: Actions = {
 				return 'Recorded. The people named below were told that it happened.';
 			},
 			'outside'
-		);
-		return answer ?? fail(500);
-	}
+		)
 };
