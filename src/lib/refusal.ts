@@ -75,7 +75,7 @@ export const refusals = {
 	DEFINITION: { status: 422, say: (f) => `The study definition needs another look: ${f.why}` },
 	CONSENT_NEEDED: {
 		status: 422,
-		say: () => 'A valid consent on or before this day is needed first.'
+		say: (f) => `A valid consent on or before this day is needed first. ${f.why ?? ''}`.trim()
 	},
 	CONSENT_EARLY: {
 		status: 422,

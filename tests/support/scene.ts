@@ -3,11 +3,8 @@ import {
 	makeAllocationList
 } from '../../src/lib/domain/randomisation/allocation.commands.server';
 import type { EnrolInput } from '../../src/lib/domain/subject/subject.input';
-import {
-	addScreening,
-	answerEligibility,
-	recordConsent
-} from '../../src/lib/domain/subject/screening.commands.server';
+import { addScreening, answerEligibility } from '../../src/lib/domain/subject/screening.commands.server';
+import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import { enrolSubject } from '../../src/lib/domain/subject/subject.commands.server';
 import { createStudy, publishProtocol } from '../../src/lib/domain/study/study.commands.server';
 import type { CreateStudyInput } from '../../src/lib/domain/study/study.input';
@@ -121,6 +118,13 @@ export const consentOn = (scene: Scene, by: Actor, on: string) => ({
 	consentVersionId: scene.consentVersionId,
 	signedOn: on,
 	signedTime: '10:00',
+	obtainedOn: on,
+	obtainedTime: '10:00',
+	relationship: '',
+	witnessed: false,
+	minor: false,
+	assent: '' as const,
+	assentReason: '',
 	explainedBy: by.personId,
 	signedBy: 'participant' as const,
 	copyGiven: true

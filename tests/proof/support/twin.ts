@@ -31,12 +31,8 @@ import {
 import { sign } from '../../../src/lib/domain/signature/signature.commands.server';
 import { findWaiting } from '../../../src/lib/domain/signature/signature.reads.server';
 import { recordExit } from '../../../src/lib/domain/subject/exit.commands.server';
-import {
-	addScreening,
-	answerEligibility,
-	closeScreening,
-	recordConsent
-} from '../../../src/lib/domain/subject/screening.commands.server';
+import { addScreening, answerEligibility, closeScreening } from '../../../src/lib/domain/subject/screening.commands.server';
+import { recordConsent } from '../../../src/lib/domain/consent/consent.commands.server';
 import {
 	enrolSubject,
 	randomiseSubject
@@ -280,6 +276,13 @@ async function play(
 			consentVersionId: consents[0].id,
 			signedOn: day(n),
 			signedTime: '04:30',
+			obtainedOn: day(n),
+			obtainedTime: '04:30',
+			relationship: '',
+			witnessed: false,
+			minor: false,
+			assent: '' as const,
+			assentReason: '',
 			explainedBy: by.personId,
 			signedBy: 'participant',
 			copyGiven: true

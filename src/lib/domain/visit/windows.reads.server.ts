@@ -103,7 +103,7 @@ async function windowsOf(
 			where v.site_id in (${sql.join(sites.map((site) => sql`${site.id}::uuid`))})
 				and v.status in ('planned', 'booked') and v.earliest <= ${horizon}::date
 				and v.study_id = ${studyId}::uuid and ${kind}
-				and not exists (select from app.study_exit e where e.subject_id = v.subject_id and e.kind <> 'intervention discontinued')
+				and not exists (select from app.study_exit e where e.subject_id = v.subject_id and e.kind <> 'intervention discontinued' and e.taken_back_at is null)
 				and (${query.text} = '' or s.number ilike ${pattern} or v.name ilike ${pattern})
 		) w
 		left join app.appointment a on a.visit_id = w.visit_id and a.status = 'booked'

@@ -1,4 +1,5 @@
 import { makeAllocationList } from '$lib/domain/randomisation/allocation.commands.server';
+import { amendmentJob } from '../amendments/job';
 import { importJob } from '../imports/job';
 import { byArmLookJob, lookJob } from '../looks/jobs';
 import { closedReleaseJob, closedReportJob, releaseJob, reportJob } from '../looks/report-jobs';
@@ -8,6 +9,7 @@ import type { Handlers } from './worker';
 
 /** What the ordinary worker does, each queue's work in a file of its own. */
 export const openHandlers: Handlers = {
+	amendment: amendmentJob,
 	import: importJob,
 	look: lookJob,
 	report: reportJob,
