@@ -223,3 +223,19 @@ export async function letFollow(
 	for (const id of who) await followVersion(writer, studyId, id, newest.id);
 	return { followed: who.length, jobRunId: null };
 }
+
+/** For whoever a broken-off job left behind. */
+export const letFollowNow = (
+	actor: Actor,
+	studyId: string
+): Promise<{ followed: number; jobRunId: string | null }> =>
+	change(
+		actor,
+		'study.publish',
+		{ studyId },
+		async (writer) => {
+			await holdVersion(writer, studyId, true);
+			return letFollow(writer, actor, studyId);
+		},
+		{ reason: 'Follows the newest protocol version: nobody is asked again.' }
+	);

@@ -2,7 +2,6 @@ import { redirect } from '@sveltejs/kit';
 import { standing } from '$lib/domain/subject/eligibility';
 import { answerEligibility, closeScreening } from '$lib/domain/subject/screening.commands.server';
 import { recordConsent, withdrawConsent } from '$lib/domain/consent/consent.commands.server';
-import { receiveScan } from '$lib/server/uploads/form';
 import { getScreening } from '$lib/domain/subject/screening.reads.server';
 import { enrolSubject } from '$lib/domain/subject/subject.commands.server';
 import {
@@ -80,7 +79,6 @@ export const actions: Actions = {
 			},
 			'withdraw'
 		),
-	scan: (event) => receiveScan(event),
 	eligibility: async ({ request, locals, params }) => {
 		const actor = actorOf({ locals });
 		const { definition } = await serve(() => getScreening(actor, params.study, params.screening));
