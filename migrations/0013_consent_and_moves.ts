@@ -208,6 +208,8 @@ create trigger transfer_audit after insert or update or delete on app.transfer f
 
 grant select, insert, update on app.upload, app.reconsent_refusal to heddle_app;
 grant select on app.transfer to heddle_app;
+-- The flow of a report: how many were considered, and why not entered.
+grant select on app.screening to heddle_unmasked;
 revoke execute on function app.moved_here, app.moved_away, app.moved_screenings, app.transfer_subject, closed.open_arms from public;
 grant execute on function app.moved_here, app.moved_away, app.moved_screenings, app.transfer_subject, closed.open_arms to heddle_app;
 `.execute(db);

@@ -1,5 +1,7 @@
 import { redirect } from '@sveltejs/kit';
 import { findCuts } from '$lib/domain/cut/cut.reads.server';
+import { findReconsents } from '$lib/domain/consent/reconsent.reads.server';
+import { findTransfers } from '$lib/domain/subject/transfer.reads.server';
 import { findLooks } from '$lib/domain/look/look.reads.server';
 import { findWaiting } from '$lib/domain/signature/signature.reads.server';
 import {
@@ -32,7 +34,7 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 		const atSites = has('coordinator', 'nurse', 'investigator');
 		const coordinator = roles.has('coordinator');
 		const analyst = has('statistician', 'independent_statistician');
-		const [work, windows, counts, screenings, state, cuts, looks, toSign] = await Promise.all([
+		const [work, windows, counts, screenings, state, cuts, looks, toSign, transfers, asked] = await Promise.all([
 			atSites ? getWorkAtSites(actor, studyId) : null,
 			coordinator
 				? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
@@ -42,11 +44,14 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 			roles.has('data_manager') ? getStudyState(actor, studyId) : null,
 			analyst ? findCuts(actor, studyId) : null,
 			analyst ? findLooks(actor, studyId) : null,
-			may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null
+			may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null,
+			atSites ? findTransfers(actor, studyId) : [],
+			has('coordinator', 'investigator') ? findReconsents(actor, studyId) : null
 		]);
 		return {
 			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
 			work,
+			transfers,
 			windows,
 			counts,
 			screenings,
@@ -70,7 +75,8 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 				studyId,
 				state,
 				screenings,
-				cuts && looks ? { cuts, looks } : null
+				cuts && looks ? { cuts, looks } : null,
+				asked?.tasks ?? null
 			)
 		};
 	});
