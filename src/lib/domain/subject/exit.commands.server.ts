@@ -180,7 +180,7 @@ export async function takeBackExit(
 async function mayReturn(
 	writer: Writer,
 	subjectId: string,
-	exit: { kind: string; happened_on: string },
+	exit: { id: string; kind: string; happened_on: string },
 	zone: string
 ): Promise<void> {
 	if (exit.kind === 'died' || exit.kind === 'completed')
@@ -195,6 +195,8 @@ async function mayReturn(
 		.select('signed_at')
 		.where('subject_id', '=', subjectId)
 		.where('withdrawn_on', 'is', null)
+		// Ids follow the order in which things were recorded: it came after the withdrawal.
+		.where('id', '>', exit.id)
 		.execute();
 	if (!consents.some((consent) => dateInZone(consent.signed_at, zone) >= exit.happened_on))
 		throw new Refusal('CONSENT_NEEDED', {

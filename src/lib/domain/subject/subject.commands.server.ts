@@ -27,9 +27,10 @@ export async function nextSubjectNumbers(
 	count = 1
 ): Promise<string[]> {
 	await takeTurn(writer, 'subject', site.id);
+	// By the site's code, not by where the subjects are now: a number stays with who has moved away.
 	const { rows } = await sql<{ last: number | null }>`
 		select max(substring(number from 4 for 4)::int) as last from app.subject
-		where study_id = ${studyId}::uuid and site_id = ${site.id}::uuid
+		where study_id = ${studyId}::uuid
 			and number ~ ${`^${site.code}-[0-9]{4}-[0-9]$`}`.execute(writer);
 	const last = rows[0]?.last ?? 0;
 	if (last + count > mostSubjectsPerSite)
