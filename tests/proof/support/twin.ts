@@ -35,9 +35,9 @@ import { recordExit } from '../../../src/lib/domain/subject/exit.commands.server
 import {
 	addScreening,
 	answerEligibility,
-	closeScreening,
-	recordConsent
+	closeScreening
 } from '../../../src/lib/domain/subject/screening.commands.server';
+import { recordConsent } from '../../../src/lib/domain/consent/consent.commands.server';
 import {
 	enrolSubject,
 	randomiseSubject
@@ -306,6 +306,13 @@ async function play(
 			consentVersionId: consents[0].id,
 			signedOn: day(n),
 			signedTime: '04:30',
+			obtainedOn: day(n),
+			obtainedTime: '04:30',
+			relationship: '',
+			witnessed: false,
+			minor: false,
+			assent: '' as const,
+			assentReason: '',
 			explainedBy: by.personId,
 			signedBy: 'participant',
 			copyGiven: true
@@ -626,6 +633,13 @@ async function playMinimised(
 			consentVersionId: consents[0].id,
 			signedOn: begin,
 			signedTime: '04:30',
+			obtainedOn: begin,
+			obtainedTime: '04:30',
+			relationship: '',
+			witnessed: false,
+			minor: false,
+			assent: '',
+			assentReason: '',
 			explainedBy: by.personId,
 			signedBy: 'participant',
 			copyGiven: true

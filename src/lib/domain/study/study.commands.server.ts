@@ -6,6 +6,13 @@ import type { Actor } from '$lib/server/actor';
 import { change, mustHaveChanged, type Writer } from '$lib/server/change';
 import { plainDateOf } from '$lib/time/dates';
 import { clock } from '$lib/time/clock';
+import {
+	addPlaces,
+	amendmentColumns,
+	holdVersion,
+	letFollow
+} from '../amendment/amendment.commands.server';
+import { publishAmendmentInput, type PublishAmendmentInput } from '../amendment/amendment.input';
 import { checkDefinition } from './check';
 import {
 	decimalsOfMeasure,
@@ -144,6 +151,7 @@ async function addSites(writer: Writer, studyId: string, definition: StudyDefini
 					id: newId(),
 					study_id: studyId,
 					label: version.version,
+					language: version.language ?? 'en',
 					approved_on: version.from
 				}))
 			)
@@ -153,7 +161,7 @@ async function addSites(writer: Writer, studyId: string, definition: StudyDefini
 async function lockedDraft(writer: Writer, studyId: string) {
 	const draft = await writer
 		.selectFrom('protocol_version')
-		.select(['id', 'number', 'version', 'definition', 'status'])
+		.select(['id', 'number', 'version', 'definition', 'status', 'summary'])
 		.where('study_id', '=', studyId)
 		.orderBy('number', 'desc')
 		.limit(1)
@@ -205,16 +213,28 @@ export const editDraftVisit = (
 /** The longest a visit can hold a room, as the table of bookings has it. */
 const longestMinutes = 720;
 
+export interface Published {
+	protocolVersionId: string;
+	version: number;
+	/** Subjects who follow the new version already. */
+	followed: number;
+	/** The job by which many do, where it needs one. */
+	jobRunId: string | null;
+}
+
 /**
  * Publishes the draft: it never changes again, its visits and measures become rows, and the study is open.
- * Refused while the check before publishing finds something that stops.
+ * Refused while the check before publishing finds something that stops. An amendment says when it was approved and whether
+ * people are asked again; subjects who are stay on their version until then.
  */
 export const publishProtocol = (
 	actor: Actor,
 	studyId: string,
-	version: number
-): Promise<{ protocolVersionId: string; version: number }> =>
+	version: number,
+	amendment: PublishAmendmentInput = publishAmendmentInput.parse({})
+): Promise<Published> =>
 	change(actor, 'study.publish', { studyId }, async (writer) => {
+		await holdVersion(writer, studyId, true);
 		const draft = await lockedDraft(writer, studyId);
 		const { definition } = draft;
 		const stops = checkDefinition(definition).filter((finding) => finding.weight === 'stops');
@@ -227,9 +247,12 @@ export const publishProtocol = (
 			throw new Refusal('DEFINITION', {
 				why: `“${tooLong.name}” is longer than ${longestMinutes} minutes.`
 			});
+		const amends =
+			draft.number > 1 ? await amendmentColumns(writer, studyId, draft, amendment) : {};
 		const changed = await writer
 			.updateTable('protocol_version')
 			.set({
+				...amends,
 				status: 'published',
 				published_at: clock.now(),
 				published_by: actor.personId
@@ -240,13 +263,20 @@ export const publishProtocol = (
 			.execute();
 		mustHaveChanged(changed);
 		await layOutSchedule(writer, studyId, draft.id, definition);
+		if (draft.number > 1) await addPlaces(writer, studyId, definition);
 		await writer
 			.updateTable('study')
 			.set({ status: 'open' })
 			.where('id', '=', studyId)
 			.where('status', '=', 'draft')
 			.execute();
-		return { protocolVersionId: draft.id, version: changed[0]?.version ?? version };
+		const following =
+			draft.number > 1 ? await letFollow(writer, actor, studyId) : { followed: 0, jobRunId: null };
+		return {
+			protocolVersionId: draft.id,
+			version: changed[0]?.version ?? version,
+			...following
+		};
 	});
 
 /** The version's visits, measures and grid as rows; positions count from 1 in the schedule's order. */

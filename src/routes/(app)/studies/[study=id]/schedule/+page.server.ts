@@ -1,4 +1,7 @@
 import { redirect } from '@sveltejs/kit';
+import { createAmendment } from '$lib/domain/amendment/amendment.commands.server';
+import { amendmentInput, publishAmendmentForm } from '$lib/domain/amendment/amendment.input';
+import { findAmends } from '$lib/domain/amendment/amends.reads.server';
 import { checkDefinition, mayPublish } from '$lib/domain/study/check';
 import { editDraftVisit, publishProtocol } from '$lib/domain/study/study.commands.server';
 import { editVisitForm, publishInput } from '$lib/domain/study/study.input';
@@ -92,6 +95,17 @@ export const load: PageServerLoad = async ({ locals, params, url }) => {
 			protocol.status === 'draft' && may(actor.grants, 'study.publish', scope)
 				? mayPublish(findings)
 				: null,
+		mayAmend: protocol.status === 'published' && may(actor.grants, 'study.edit', scope),
+		amend: await formFor(amendmentInput, { summary: '' }, 'amend'),
+		amends:
+			protocol.status === 'draft' && protocol.number > 1
+				? await serve(() => findAmends(actor, params.study))
+				: null,
+		publishAmendment: await formFor(
+			publishAmendmentForm,
+			{ approvedOn: '', reconsent: '', reconsentBy: '', version: protocol.version },
+			'publishAmendment'
+		),
 		publish: await formFor(publishInput, { version: protocol.version }, 'publish'),
 		edit: edited
 			? {
@@ -125,6 +139,32 @@ export const actions: Actions = {
 				return 'Published. The study is open.';
 			},
 			'publish'
+		),
+	amend: async ({ request, locals, params }) =>
+		submit(
+			request,
+			amendmentInput,
+			async (data) => {
+				const { number } = await createAmendment(actorOf({ locals }), params.study, data);
+				return `Version ${number} is a draft now. Change it, then publish it.`;
+			},
+			'amend'
+		),
+	publishAmendment: async ({ request, locals, params }) =>
+		submit(
+			request,
+			publishAmendmentForm,
+			async ({ version, ...answers }) => {
+				const { followed, jobRunId } = await publishProtocol(
+					actorOf({ locals }),
+					params.study,
+					version,
+					answers
+				);
+				if (jobRunId) return 'Published. The subjects follow it one after the other.';
+				return `Published. ${followed === 0 ? 'Nobody follows it yet.' : followed === 1 ? 'One subject follows it.' : `${followed} subjects follow it.`}`;
+			},
+			'publishAmendment'
 		),
 	edit: async ({ request, locals, params }) => {
 		let done = false;
