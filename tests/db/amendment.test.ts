@@ -19,14 +19,7 @@ import { amendmentJob } from '../../src/lib/server/amendments/job';
 import { clock } from '../../src/lib/time/clock';
 import { amend, another, draftAmendment, withForm } from '../support/amend';
 import { freshDatabase, useEnvironment, type FreshDatabase } from '../support/database';
-import {
-	consentOn,
-	enrolOne,
-	makeList,
-	makeScene,
-	useAs,
-	type Scene
-} from '../support/scene';
+import { consentOn, enrolOne, makeList, makeScene, useAs, type Scene } from '../support/scene';
 
 let db: FreshDatabase;
 let end: () => Promise<void>;
@@ -110,22 +103,15 @@ async function carryOut(subjectId: string, key: string, weight: number) {
 	const { version } = await startVisit(scene.nurse, scene.studyId, visit.id, visit.version);
 	for (const [measure, id] of await weightAt(visit.id)) {
 		if (measure === 'egfr') continue;
-		await recordMeasurement(
-			scene.nurse,
-			scene.studyId,
-			visit.id,
-			id,
-			null,
-			{
-				softAnswer: 'Measured again.',
-				comment: '',
-				reason: '',
-				entry:
-					measure === 'weight'
-						? { kind: 'value', value: weight, unit: 'kg' }
-						: { kind: 'not done', reason: 'Subject declined' }
-			}
-		);
+		await recordMeasurement(scene.nurse, scene.studyId, visit.id, id, null, {
+			softAnswer: 'Measured again.',
+			comment: '',
+			reason: '',
+			entry:
+				measure === 'weight'
+					? { kind: 'value', value: weight, unit: 'kg' }
+					: { kind: 'not done', reason: 'Subject declined' }
+		});
 	}
 	await finishVisit(scene.nurse, scene.studyId, visit.id, version);
 }
@@ -157,9 +143,9 @@ describe('an amendment', () => {
 		await expect(publish({})).rejects.toMatchObject({
 			fields: { approvedOn: expect.any(String), reconsent: expect.any(String) }
 		});
-		await expect(
-			publish({ approvedOn: '2026-03-11', reconsent: 'no' })
-		).rejects.toMatchObject({ fields: { approvedOn: 'This day has not come yet.' } });
+		await expect(publish({ approvedOn: '2026-03-11', reconsent: 'no' })).rejects.toMatchObject({
+			fields: { approvedOn: 'This day has not come yet.' }
+		});
 		await publish({ approvedOn: '2026-03-01', reconsent: 'no' });
 		const [rows] = await db.sql(
 			`select number, approved_on::text, reconsent, summary is not null as said from app.protocol_version
@@ -356,12 +342,9 @@ describe('who follows which version', () => {
 	test('whoever waits to be asked about version 2 does not slip into version 3', async () => {
 		const subject = await inStudy();
 		await amend(db, scene, (of) => withForm('2.0')(another(of)));
-		const fresh = await amend(
-			db,
-			scene,
-			(of) => ({ ...of, name: 'Weft, renamed' }),
-			{ reconsent: '' }
-		);
+		const fresh = await amend(db, scene, (of) => ({ ...of, name: 'Weft, renamed' }), {
+			reconsent: ''
+		});
 		expect(fresh.followed).toBe(0);
 		const { tasks } = await findReconsents(scene.coordinator, scene.studyId);
 		expect(tasks).toMatchObject([{ number: subject.number, cause: 'amendment' }]);
@@ -375,9 +358,9 @@ describe('who follows which version', () => {
 		expect((await findReconsents(scene.coordinator, scene.studyId)).tasks).toMatchObject([
 			{ refused: '10 Mar 2026' }
 		]);
-		expect((await getSubjectRecord(scene.coordinator, scene.studyId, subject.id)).version.number).toBe(
-			1
-		);
+		expect(
+			(await getSubjectRecord(scene.coordinator, scene.studyId, subject.id)).version.number
+		).toBe(1);
 	});
 
 	test('R-54: a new enrolment takes the newest version and a form of it', async () => {

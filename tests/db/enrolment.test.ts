@@ -1,7 +1,11 @@
 import { afterAll, beforeAll, describe, expect, test } from 'vitest';
 import { recordExit } from '../../src/lib/domain/subject/exit.commands.server';
 import { readSubjectNumber } from '../../src/lib/domain/subject/number';
-import { addScreening, answerEligibility, closeScreening } from '../../src/lib/domain/subject/screening.commands.server';
+import {
+	addScreening,
+	answerEligibility,
+	closeScreening
+} from '../../src/lib/domain/subject/screening.commands.server';
 import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import {
 	enrolSubject,

@@ -87,9 +87,7 @@ async function book(id: string, key: string, date: string, by = scene.coordinato
 	});
 }
 const mails = (id: string) =>
-	rows(
-		`select kind, status from app.mail where subject_id = '${id}' order by created_at, id`
-	);
+	rows(`select kind, status from app.mail where subject_id = '${id}' order by created_at, id`);
 const attempt = (id: string, outcome: string, at: string) =>
 	asOwner(db, (client) =>
 		client.query(
@@ -104,9 +102,24 @@ const leave = (id: string, kind: ExitKind, happenedOn = today) =>
 describe('R-56: leaving', () => {
 	test.each([
 		['intervention discontinued', { planned: 6, booked: 2, 'under way': 1 }, 2, []],
-		['stopped visits', { 'not required': 8, 'under way': 1 }, 4, ['visit-cancelled', 'visit-cancelled']],
-		['consent withdrawn', { 'not required': 8, 'under way': 1 }, 4, ['visit-cancelled', 'visit-cancelled']],
-		['lost to follow-up', { 'not required': 8, 'under way': 1 }, 4, ['visit-cancelled', 'visit-cancelled']],
+		[
+			'stopped visits',
+			{ 'not required': 8, 'under way': 1 },
+			4,
+			['visit-cancelled', 'visit-cancelled']
+		],
+		[
+			'consent withdrawn',
+			{ 'not required': 8, 'under way': 1 },
+			4,
+			['visit-cancelled', 'visit-cancelled']
+		],
+		[
+			'lost to follow-up',
+			{ 'not required': 8, 'under way': 1 },
+			4,
+			['visit-cancelled', 'visit-cancelled']
+		],
 		['died', { 'not required': 8, 'under way': 1 }, 2, []]
 	] as const)('%s: what remains is what was said before', async (kind, statuses, mailed, told) => {
 		const subject = await inStudy();
@@ -173,7 +186,9 @@ describe('R-56: leaving', () => {
 			leave(subject.id, 'stopped visits')
 		]);
 		expect(both.filter((each) => each.status === 'fulfilled')).toHaveLength(1);
-		expect(await rows(`select 1 from app.study_exit where subject_id = '${subject.id}'`)).toHaveLength(1);
+		expect(
+			await rows(`select 1 from app.study_exit where subject_id = '${subject.id}'`)
+		).toHaveLength(1);
 	});
 
 	test('R-2: taken back it stays, marked, and the visits are to come again', async () => {
@@ -250,8 +265,20 @@ describe('moving to another site', () => {
 		const there = scene.sites[1]?.id as string;
 		expect(await move(subject.id)).toMatchObject({ visitsMoved: 8, bookingsCancelled: 1 });
 
-		expect((await rows(`select number, stratum, kit_number, randomised_at from app.subject where id = '${subject.id}'`))[0]).toEqual(before);
-		expect((await rows(`select id, stratum, position from closed.list_position where subject_id = '${subject.id}'`))[0]).toEqual(allocated);
+		expect(
+			(
+				await rows(
+					`select number, stratum, kit_number, randomised_at from app.subject where id = '${subject.id}'`
+				)
+			)[0]
+		).toEqual(before);
+		expect(
+			(
+				await rows(
+					`select id, stratum, position from closed.list_position where subject_id = '${subject.id}'`
+				)
+			)[0]
+		).toEqual(allocated);
 		const after = await visitsOf(subject.id);
 		expect(after.filter((each) => each.site_id === there)).toHaveLength(8);
 		expect(after.find((each) => each.key === 'baseline')?.site_id).toBe(scene.sites[0]?.id);
@@ -372,13 +399,18 @@ describe('searching by name', () => {
 		expect(found).toEqual({
 			more: false,
 			items: [
-				{ subjectId: subject.id, number: subject.number, site: 'Northmoor', name: 'Zoë Łukasz-Ångström' }
+				{
+					subjectId: subject.id,
+					number: subject.number,
+					site: 'Northmoor',
+					name: 'Zoë Łukasz-Ångström'
+				}
 			]
 		});
 		expect((await searchContacts(scene.other, scene.studyId, { name: 'zoe' })).items).toEqual([]);
-		await expect(
-			searchContacts(scene.nurse, scene.studyId, { name: 'zoe' })
-		).rejects.toMatchObject({ code: 'NOT_PERMITTED' });
+		await expect(searchContacts(scene.nurse, scene.studyId, { name: 'zoe' })).rejects.toMatchObject(
+			{ code: 'NOT_PERMITTED' }
+		);
 		const events = await rows(
 			`select action, subject_id, after::text from audit.event where record = 'contact_details' and action = 'act' and study_id = '${scene.studyId}'`
 		);

@@ -17,7 +17,11 @@ import { sign } from '../../src/lib/domain/signature/signature.commands.server';
 import { findWaiting, getSignature } from '../../src/lib/domain/signature/signature.reads.server';
 import type { SignItem } from '../../src/lib/domain/signature/signature.input';
 import { verifySignatures } from '../../src/lib/domain/signature/verify.server';
-import { addScreening, answerEligibility, closeScreening } from '../../src/lib/domain/subject/screening.commands.server';
+import {
+	addScreening,
+	answerEligibility,
+	closeScreening
+} from '../../src/lib/domain/subject/screening.commands.server';
 import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import { getScreening } from '../../src/lib/domain/subject/screening.reads.server';
 import {

@@ -1,6 +1,9 @@
 import { afterAll, beforeAll, expect, test } from 'vitest';
 import { startVisit } from '../../src/lib/domain/visit/conduct.commands.server';
-import { addScreening, answerEligibility } from '../../src/lib/domain/subject/screening.commands.server';
+import {
+	addScreening,
+	answerEligibility
+} from '../../src/lib/domain/subject/screening.commands.server';
 import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import { actorFor } from '../../src/lib/server/auth/actor';
 import { hashPassword } from '../../src/lib/server/auth/password';

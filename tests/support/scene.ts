@@ -4,7 +4,10 @@ import {
 } from '../../src/lib/domain/randomisation/allocation.commands.server';
 import type { ConsentInput } from '../../src/lib/domain/consent/consent.input';
 import type { EnrolInput } from '../../src/lib/domain/subject/subject.input';
-import { addScreening, answerEligibility } from '../../src/lib/domain/subject/screening.commands.server';
+import {
+	addScreening,
+	answerEligibility
+} from '../../src/lib/domain/subject/screening.commands.server';
 import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import { enrolSubject } from '../../src/lib/domain/subject/subject.commands.server';
 import { createStudy, publishProtocol } from '../../src/lib/domain/study/study.commands.server';
@@ -140,12 +143,7 @@ export async function enrolOne(
 ): Promise<{ id: string; number: string }> {
 	const { on = '2026-03-02', consent, ...input } = change;
 	const screening = await addScreening(actor, scene.studyId, { siteId, screenedOn: on });
-	await recordConsent(
-		actor,
-		scene.studyId,
-		screening.id,
-		consent ?? consentOn(scene, actor, on)
-	);
+	await recordConsent(actor, scene.studyId, screening.id, consent ?? consentOn(scene, actor, on));
 	const { version } = await answerEligibility(
 		actor,
 		scene.studyId,

@@ -4,7 +4,11 @@ import { formulas } from '$lib/domain/measurement/formulas';
 import { sign } from '$lib/domain/signature/signature.commands.server';
 import { findWaiting } from '$lib/domain/signature/signature.reads.server';
 import { recordExit } from '$lib/domain/subject/exit.commands.server';
-import { addScreening, answerEligibility, closeScreening } from '$lib/domain/subject/screening.commands.server';
+import {
+	addScreening,
+	answerEligibility,
+	closeScreening
+} from '$lib/domain/subject/screening.commands.server';
 import { recordConsent } from '$lib/domain/consent/consent.commands.server';
 import { enrolSubject, randomiseSubject } from '$lib/domain/subject/subject.commands.server';
 import { bookVisit, moveAppointment } from '$lib/domain/visit/booking.commands.server';

@@ -31,7 +31,11 @@ import {
 import { sign } from '../../../src/lib/domain/signature/signature.commands.server';
 import { findWaiting } from '../../../src/lib/domain/signature/signature.reads.server';
 import { recordExit } from '../../../src/lib/domain/subject/exit.commands.server';
-import { addScreening, answerEligibility, closeScreening } from '../../../src/lib/domain/subject/screening.commands.server';
+import {
+	addScreening,
+	answerEligibility,
+	closeScreening
+} from '../../../src/lib/domain/subject/screening.commands.server';
 import { recordConsent } from '../../../src/lib/domain/consent/consent.commands.server';
 import {
 	enrolSubject,

@@ -68,7 +68,9 @@ export function flowGeometry(data: FlowData, width: number): FlowGeometry {
 		if (!side) continue;
 		if (narrow) {
 			const beneath = fill(side, 1 + GAP, y, width - GAP - 2);
-			threads.push(`M${round(1 + GAP / 2)},${box.y + box.height}V${round(y + beneath.height / 2)}H${1 + GAP}`);
+			threads.push(
+				`M${round(1 + GAP / 2)},${box.y + box.height}V${round(y + beneath.height / 2)}H${1 + GAP}`
+			);
 			boxes.push(beneath);
 			y = beneath.y + beneath.height + GAP;
 			continue;
@@ -103,7 +105,8 @@ function down(from: DrawnBox, to: DrawnBox): string {
 
 /** The diagram in words, from top to bottom. */
 export function flowWords(data: FlowData): string {
-	const box = (of: FlowBox) => `${of.title}${of.lines.length > 0 ? ` (${of.lines.join('; ')})` : ''}.`;
+	const box = (of: FlowBox) =>
+		`${of.title}${of.lines.length > 0 ? ` (${of.lines.join('; ')})` : ''}.`;
 	return [
 		...data.steps.flatMap(({ main, side }) => [box(main), ...(side ? [box(side)] : [])]),
 		...data.columns.map(box)

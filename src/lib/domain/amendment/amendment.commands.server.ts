@@ -8,12 +8,7 @@ import { clock } from '$lib/time/clock';
 import { addDays } from '$lib/time/dates';
 import { dateInZone } from '$lib/time/zones';
 import type { StudyDefinition } from '../study/definition';
-import {
-	askedAgainBy,
-	checkAmendment,
-	groundChanged,
-	reconsentWithinDays
-} from './amendment';
+import { askedAgainBy, checkAmendment, groundChanged, reconsentWithinDays } from './amendment';
 import type { AmendmentInput, PublishAmendmentInput } from './amendment.input';
 import { followVersion } from './follow.server';
 import { newestOf, publishedVersions, type PublishedVersion } from './versions.reads.server';

@@ -124,9 +124,7 @@ describe('planning visits anew', () => {
 	);
 	test('nor does one whose window has closed', () => {
 		const passed = standing({ window: window('2026-03-01', '2026-03-05', '2026-04-09') });
-		expect(
-			replan({ visits }, [passed], anchors, today).some((step) => 'id' in step)
-		).toBe(false);
+		expect(replan({ visits }, [passed], anchors, today).some((step) => 'id' in step)).toBe(false);
 		// On its last day it is still to come.
 		const last = standing({ window: window('2026-03-01', '2026-03-05', '2026-04-10') });
 		expect(replan({ visits }, [last], anchors, today)).toContainEqual(
@@ -136,7 +134,10 @@ describe('planning visits anew', () => {
 	test('makes what is new and still possible, and drops what the plan has no more', () => {
 		const plan = replan(
 			{ visits },
-			[standing({ key: 'month-5', id: 'month-5' }), standing({ key: 'baseline', id: 'baseline', status: 'completed', position: 1 })],
+			[
+				standing({ key: 'month-5', id: 'month-5' }),
+				standing({ key: 'baseline', id: 'baseline', status: 'completed', position: 1 })
+			],
 			anchors,
 			today
 		);

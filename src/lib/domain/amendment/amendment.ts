@@ -92,7 +92,8 @@ export function checkAmendment(
 	const errors: Partial<Record<keyof AmendmentAnswers, string>> = {};
 	const fresh = newForms(before.consentVersions, after.consentVersions);
 	if (answers.approvedOn === '')
-		errors.approvedOn = 'An amendment is used once the ethics committee has approved it: give the day.';
+		errors.approvedOn =
+			'An amendment is used once the ethics committee has approved it: give the day.';
 	else if (answers.approvedOn > days.today) errors.approvedOn = 'This day has not come yet.';
 	else if (days.previousApproval && answers.approvedOn < days.previousApproval)
 		errors.approvedOn = `The version before was approved on ${shortDateText(days.previousApproval)}: an amendment follows it.`;
@@ -115,8 +116,10 @@ export function checkAmendment(
 
 /** What an amendment may not change once people are in the study: the ground their allocation stands on. */
 export function groundChanged(before: StudyDefinition, after: StudyDefinition): string | null {
-	if (before.code !== after.code) return 'The study’s code stays the same from one version to the next.';
-	if (before.masked !== after.masked) return 'Whether the arms are masked cannot change in an amendment.';
+	if (before.code !== after.code)
+		return 'The study’s code stays the same from one version to the next.';
+	if (before.masked !== after.masked)
+		return 'Whether the arms are masked cannot change in an amendment.';
 	const arms = (of: StudyDefinition) => of.arms.map(({ key, ratio }) => ({ key, ratio }));
 	if (!sameJson(arms(before), arms(after)))
 		return 'The arms and their ratio cannot change in an amendment: subjects are allocated by them.';

@@ -16,7 +16,14 @@ export interface StandingVisit {
 
 /** What becomes of one visit. What is not named stays exactly as it is. */
 export type Replanned =
-	| { what: 'follow'; id: string; key: string; position: number; window: VisitWindow | null; revive: boolean }
+	| {
+			what: 'follow';
+			id: string;
+			key: string;
+			position: number;
+			window: VisitWindow | null;
+			revive: boolean;
+	  }
 	| { what: 'drop'; id: string }
 	| { what: 'make'; key: string; position: number; window: VisitWindow };
 

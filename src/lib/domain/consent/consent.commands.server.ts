@@ -141,9 +141,7 @@ export async function recordReconsent(
 				throw new Refusal(
 					'RULE',
 					{ why: `This consent does not count for protocol version ${newest.number}: ${why}.` },
-					why.includes('form')
-						? { consentVersionId: 'Use the form of the version in force.' }
-						: {}
+					why.includes('form') ? { consentVersionId: 'Use the form of the version in force.' } : {}
 				);
 			const visits = subject.left
 				? { moved: 0, made: 0, dropped: 0 }

@@ -71,9 +71,7 @@ export const consentInput = z
 		...parts,
 		signedBy: z.enum(signers, 'Say who signed.'),
 		assent: z.union([noAssent, z.enum(assents)], 'Say given, declined or not able.').default(''),
-		copyGiven: z
-			.boolean('Say whether a copy was given.')
-			.refine((given) => given, copyNeeded)
+		copyGiven: z.boolean('Say whether a copy was given.').refine((given) => given, copyNeeded)
 	})
 	.superRefine(whole);
 export type ConsentInput = z.output<typeof consentInput>;

@@ -1,6 +1,13 @@
 import { describe, expect, test } from 'vitest';
 import { findPartialDate, plainDateOf, type PartialDate } from '../../time/dates';
-import { birthSpan, isMinor, majorityOf, whyNot, type ConsentGround, type GivenConsent } from './consent';
+import {
+	birthSpan,
+	isMinor,
+	majorityOf,
+	whyNot,
+	type ConsentGround,
+	type GivenConsent
+} from './consent';
 import { consentInput } from './consent.input';
 
 const born = (text: string) => findPartialDate(text) as PartialDate;
@@ -48,7 +55,12 @@ describe('a consent that counts', () => {
 		minors,
 		born: born('1961-04-30')
 	};
-	const child = { ...given, signedBy: 'representative' as const, minor: true, assent: 'given' as const };
+	const child = {
+		...given,
+		signedBy: 'representative' as const,
+		minor: true,
+		assent: 'given' as const
+	};
 	const young = { ...ground, born: born('2016-04-30') };
 	test('is of a form in force, on or before the day, with a copy, not withdrawn', () => {
 		expect(whyNot(given, ground)).toBeNull();
@@ -56,7 +68,9 @@ describe('a consent that counts', () => {
 		expect(whyNot({ ...given, form: '1.0 de' }, ground)).toContain('another protocol version');
 		expect(whyNot({ ...given, copyGiven: false }, ground)).toContain('copy');
 		expect(whyNot({ ...given, withdrawnOn: given.signedOn }, ground)).toContain('withdrawn');
-		expect(whyNot(given, { ...ground, notBefore: plainDateOf('2026-03-03') })).toContain('approved');
+		expect(whyNot(given, { ...ground, notBefore: plainDateOf('2026-03-03') })).toContain(
+			'approved'
+		);
 	});
 	test('of a minor is a representative’s with assent, of an adult his own', () => {
 		expect(whyNot(child, young)).toBeNull();

@@ -1,4 +1,10 @@
-import { ageInYears, findPlainDate, plainDateOf, type PartialDate, type PlainDate } from '../../time/dates';
+import {
+	ageInYears,
+	findPlainDate,
+	plainDateOf,
+	type PartialDate,
+	type PlainDate
+} from '../../time/dates';
 import type { StudyDefinition } from '../study/definition';
 
 export const assents = ['given', 'declined', 'not able'] as const;

@@ -84,10 +84,7 @@ export async function consentsOf(
 }
 
 /** Why none of these consents counts, in words; null when one does. */
-export function noneCounts(
-	consents: readonly ConsentRow[],
-	ground: ConsentGround
-): string | null {
+export function noneCounts(consents: readonly ConsentRow[], ground: ConsentGround): string | null {
 	if (consents.length === 0) return '';
 	const why: string[] = [];
 	for (const consent of consents) {

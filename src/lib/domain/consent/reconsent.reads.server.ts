@@ -97,7 +97,8 @@ async function byAmendment(
 		const because = asking.get(row.protocol_version_id);
 		const site = sites.find((each) => each.id === row.site_id);
 		if (!because || !site) return [];
-		const due = because.reconsentBy ?? addDays(dateInZone(because.publishedAt, 'UTC'), reconsentWithinDays);
+		const due =
+			because.reconsentBy ?? addDays(dateInZone(because.publishedAt, 'UTC'), reconsentWithinDays);
 		return [
 			{
 				...whose(row, site),
@@ -125,18 +126,19 @@ async function byMajority(
 		const asked = characteristics.find((each) => each.kind === 'birth-date');
 		if (!minors || !asked) continue;
 		// Whoever has the year of majority behind them; the day itself is worked out below.
-		const year = Number(dateInZone(clock.now(), 'Pacific/Kiritimati').slice(0, 4)) - minors.majority;
+		const year =
+			Number(dateInZone(clock.now(), 'Pacific/Kiritimati').slice(0, 4)) - minors.majority;
 		const rows: Row[] = await reader
 			.selectFrom('subject as s')
 			.select([
-			's.id',
-			's.number',
-			's.site_id',
-			's.protocol_version_id',
-			's.enrolled_on',
-			's.characteristics'
-		])
-		.$if(subjectId !== null, (q) => q.where('s.id', '=', subjectId))
+				's.id',
+				's.number',
+				's.site_id',
+				's.protocol_version_id',
+				's.enrolled_on',
+				's.characteristics'
+			])
+			.$if(subjectId !== null, (q) => q.where('s.id', '=', subjectId))
 			.where('s.study_id', '=', studyId)
 			.where('s.site_id', 'in', idsOf(sites))
 			.where('s.protocol_version_id', '=', version.id)

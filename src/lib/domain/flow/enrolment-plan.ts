@@ -43,7 +43,11 @@ export function enrolmentAgainstPlan(
 		.sort()[0];
 	if (first === undefined) return [];
 	const planned: string[] = [];
-	for (let month = plan?.from; month && planned.length < (plan?.months ?? 0); month = nextMonth(month))
+	for (
+		let month = plan?.from;
+		month && planned.length < (plan?.months ?? 0);
+		month = nextMonth(month)
+	)
 		planned.push(month);
 	const last = [planned.at(-1) ?? first, thisMonth, ...enrolled.map((each) => each.month)]
 		.sort()

@@ -91,12 +91,10 @@ export async function getFlow(actor: Actor, studyId: string): Promise<FlowView> 
 	const byArm = randomises && !definition.masked;
 	const arms = byArm ? await openArms(actor, studyId) : null;
 	const names = new Map(definition.arms.map((arm) => [arm.key, arm.name]));
-	const subjects = held.subjects.map(
-		({ id, ...subject }): FlowSubject => ({
-			...subject,
-			arm: arms ? (names.get(arms.get(id) ?? '') ?? null) : null
-		})
-	);
+	const subjects = held.subjects.map(({ id, ...subject }): FlowSubject => ({
+		...subject,
+		arm: arms ? (names.get(arms.get(id) ?? '') ?? null) : null
+	}));
 	const thisMonth = dateInZone(clock.now(), sites[0]?.zone ?? 'UTC').slice(0, 7);
 	return {
 		flow: flowOf(held.screenings, subjects, {

@@ -30,12 +30,10 @@ function study(seed: number, randomises: boolean, arms: string[] | null) {
 		...subjects
 			.filter((each) => each.screened)
 			.map((): FlowScreening => ({ outcome: 'entered', reason: null })),
-		...Array.from(
-			{ length: draw(40) },
-			(): FlowScreening =>
-				draw(3) === 0
-					? { outcome: 'in progress', reason: null }
-					: { outcome: 'not entered', reason: `Reason ${draw(14)}` }
+		...Array.from({ length: draw(40) }, (): FlowScreening =>
+			draw(3) === 0
+				? { outcome: 'in progress', reason: null }
+				: { outcome: 'not entered', reason: `Reason ${draw(14)}` }
 		)
 	];
 	return { subjects, screenings };
@@ -77,8 +75,17 @@ describe('R-77: the counts reconcile exactly', () => {
 		expect(flowBreaks({ ...flow, enrolled: flow.enrolled + 1 })).toHaveLength(2);
 	});
 	test('an arm that is not known is missed, not hidden', () => {
-		const subject: FlowSubject = { screened: true, randomised: true, arm: null, exits: [], measured: false };
-		const flow = flowOf([{ outcome: 'entered', reason: null }], [subject], { randomises: true, arms: ['A'] });
+		const subject: FlowSubject = {
+			screened: true,
+			randomised: true,
+			arm: null,
+			exits: [],
+			measured: false
+		};
+		const flow = flowOf([{ outcome: 'entered', reason: null }], [subject], {
+			randomises: true,
+			arms: ['A']
+		});
 		expect(flowBreaks(flow)).toHaveLength(1);
 	});
 });

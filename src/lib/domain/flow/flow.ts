@@ -90,7 +90,8 @@ function columnOf(arm: string | null, subjects: readonly FlowSubject[]): FlowCol
 	return {
 		arm,
 		n: subjects.length,
-		discontinued: subjects.filter((each) => each.exits.includes('intervention discontinued')).length,
+		discontinued: subjects.filter((each) => each.exits.includes('intervention discontinued'))
+			.length,
 		ended: endings.map((label) => ({ label, n: count(label) })),
 		completed: count('completed'),
 		inFollowUp: count('in follow-up'),

@@ -269,9 +269,7 @@ export const publishProtocol = (
 			.where('status', '=', 'draft')
 			.execute();
 		const following =
-			draft.number > 1
-				? await letFollow(writer, actor, studyId)
-				: { followed: 0, jobRunId: null };
+			draft.number > 1 ? await letFollow(writer, actor, studyId) : { followed: 0, jobRunId: null };
 		return {
 			protocolVersionId: draft.id,
 			version: changed[0]?.version ?? version,

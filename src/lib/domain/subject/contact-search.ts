@@ -19,7 +19,10 @@ export const foldName = (name: string): string =>
 		.toLowerCase()
 		.replace(/[ßæœøłđðþı]/g, (letter) => spelled[letter] ?? letter);
 
-const words = (name: string): string[] => foldName(name).split(/[^\p{L}\p{N}]+/u).filter(Boolean);
+const words = (name: string): string[] =>
+	foldName(name)
+		.split(/[^\p{L}\p{N}]+/u)
+		.filter(Boolean);
 
 /** Whether each word that was asked for begins a word of the name, in whatever order. */
 export function matchesName(name: string, asked: string): boolean {

@@ -155,8 +155,7 @@ export async function takeBackExit(
 				.executeTakeFirst();
 			if (!exit) throw new Refusal('NOT_FOUND');
 			if (exit.taken_back_at) throw new Refusal('CONFLICT', { what: 'It was taken back already.' });
-			if (input.because === 'changed mind')
-				await mayReturn(writer, subjectId, exit, site.zone);
+			if (input.because === 'changed mind') await mayReturn(writer, subjectId, exit, site.zone);
 			const changed = await writer
 				.updateTable('study_exit')
 				.set({

@@ -40,7 +40,11 @@ describe('what leaving does', () => {
 		expect(effectsOf('died', '2026-06-09', visits, now).mails).toBe(0);
 	});
 	test('is said in words before it is recorded', () => {
-		const said = effectWords('consent withdrawn', effectsOf('consent withdrawn', '2026-06-09', visits, now), true);
+		const said = effectWords(
+			'consent withdrawn',
+			effectsOf('consent withdrawn', '2026-06-09', visits, now),
+			true
+		);
 		expect(said).toEqual([
 			'3 visits to come become not required.',
 			'2 bookings are cancelled.',
@@ -50,7 +54,9 @@ describe('what leaving does', () => {
 			'One window that has passed is still to be accounted for.'
 		]);
 		for (const kind of exitKinds)
-			expect(effectWords(kind, effectsOf(kind, '2026-06-09', [], now), null).length).toBeGreaterThan(0);
+			expect(
+				effectWords(kind, effectsOf(kind, '2026-06-09', [], now), null).length
+			).toBeGreaterThan(0);
 	});
 });
 

@@ -48,10 +48,7 @@ export interface ExitEffects {
 }
 
 /** Visits whose window reaches past the day end with it; those that closed before stay to be accounted for. */
-export const endsWith = (
-	visit: Pick<VisitStanding, 'status' | 'latest'>,
-	on: string
-): boolean =>
+export const endsWith = (visit: Pick<VisitStanding, 'status' | 'latest'>, on: string): boolean =>
 	(visit.status === 'planned' || visit.status === 'booked') &&
 	(visit.latest === null || visit.latest >= on);
 
@@ -72,8 +69,7 @@ export function effectsOf(
 		bookingsCancelled: booked.length,
 		mails: stopsMail(kind) ? 0 : told.length,
 		toAccountFor: visits.filter(
-			(visit) =>
-				(visit.status === 'planned' || visit.status === 'booked') && !endsWith(visit, on)
+			(visit) => (visit.status === 'planned' || visit.status === 'booked') && !endsWith(visit, on)
 		).length,
 		underWay: visits.filter((visit) => visit.status === 'under way').length
 	};

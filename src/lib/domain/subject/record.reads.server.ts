@@ -115,83 +115,88 @@ export async function getSubjectRecord(
 		? siteId
 		: ((await formerSite(actor, studyId, subjectId)) ?? siteId);
 	const mayScan = may(actor.grants, 'consent.scan', scope);
-	const record = await read(actor, 'subject.read', { studyId, siteId: seenFrom }, async (reader) => {
-		const row = await reader
-			.selectFrom('subject')
-			.select([
-				'id',
-				'number',
-				'imported_as',
-				'version',
-				'enrolled_on',
-				'kit_number',
-				'randomised_at',
-				'protocol_version_id',
-				'version_since',
-				'stratum',
-				'characteristics'
-			])
-			.where('study_id', '=', studyId)
-			.where('id', '=', subjectId)
-			.executeTakeFirst();
-		if (!row) throw new Refusal('NOT_FOUND');
-		const site = await getSite(reader, studyId, siteId);
-		const definition = await getDefinition(reader, studyId, row.protocol_version_id);
-		const visits = await visitsOf(reader, studyId, subjectId, site);
-		const consents = await consentViews(reader, { subjectId }, site.zone, mayScan);
-		const versions = await reader
-			.selectFrom('protocol_version')
-			.select(['id', 'number'])
-			.where('study_id', '=', studyId)
-			.where('status', '=', 'published')
-			.orderBy('number')
-			.execute();
-		const items = [
-			...(await wayIn(reader, subjectId, site, row, consents)),
-			...visits.items,
-			...(await alongTheWay(reader, studyId, subjectId, site))
-		].sort((a, b) => (a.key < b.key ? -1 : a.key > b.key ? 1 : 0));
-		const exits = await reader
-			.selectFrom('study_exit')
-			.select(['id', 'kind', 'happened_on'])
-			.where('study_id', '=', studyId)
-			.where('subject_id', '=', subjectId)
-			.where('taken_back_at', 'is', null)
-			.orderBy('happened_on')
-			.execute();
-		return {
-			subject: {
-				id: row.id,
-				number: row.number,
-				importedAs: row.imported_as,
-				version: row.version,
-				enrolledOn: shortDateText(plainDateOf(row.enrolled_on)),
-				kitNumber: row.kit_number,
-				facts: factsOf(definition, row.characteristics, row.stratum)
-			},
-			site,
-			thread: await threadOf(reader, studyId, subjectId),
-			items,
-			ahead: visits.ahead,
-			exits: exits.map((exit) => exit.kind as ExitKind),
-			standing: exits.map((exit) => ({
-				id: exit.id,
-				kind: exit.kind as ExitKind,
-				on: dayWords(exit.happened_on)
-			})),
-			version: {
-				number: versions.find((each) => each.id === row.protocol_version_id)?.number ?? 1,
-				since: row.version_since === null ? null : dayWords(row.version_since),
-				newest: versions.at(-1)?.number ?? 1
-			},
-			tasks: await tasksOf(reader, studyId, site, subjectId),
-			consents,
-			away: seenFrom === siteId ? null : await whereTo(reader, subjectId, site),
-			underWay: visits.underWay,
-			lostAfterAttempts: definition.lostAfterAttempts ?? 1,
-			randomised: isRandomised(definition)
-		};
-	});
+	const record = await read(
+		actor,
+		'subject.read',
+		{ studyId, siteId: seenFrom },
+		async (reader) => {
+			const row = await reader
+				.selectFrom('subject')
+				.select([
+					'id',
+					'number',
+					'imported_as',
+					'version',
+					'enrolled_on',
+					'kit_number',
+					'randomised_at',
+					'protocol_version_id',
+					'version_since',
+					'stratum',
+					'characteristics'
+				])
+				.where('study_id', '=', studyId)
+				.where('id', '=', subjectId)
+				.executeTakeFirst();
+			if (!row) throw new Refusal('NOT_FOUND');
+			const site = await getSite(reader, studyId, siteId);
+			const definition = await getDefinition(reader, studyId, row.protocol_version_id);
+			const visits = await visitsOf(reader, studyId, subjectId, site);
+			const consents = await consentViews(reader, { subjectId }, site.zone, mayScan);
+			const versions = await reader
+				.selectFrom('protocol_version')
+				.select(['id', 'number'])
+				.where('study_id', '=', studyId)
+				.where('status', '=', 'published')
+				.orderBy('number')
+				.execute();
+			const items = [
+				...(await wayIn(reader, subjectId, site, row, consents)),
+				...visits.items,
+				...(await alongTheWay(reader, studyId, subjectId, site))
+			].sort((a, b) => (a.key < b.key ? -1 : a.key > b.key ? 1 : 0));
+			const exits = await reader
+				.selectFrom('study_exit')
+				.select(['id', 'kind', 'happened_on'])
+				.where('study_id', '=', studyId)
+				.where('subject_id', '=', subjectId)
+				.where('taken_back_at', 'is', null)
+				.orderBy('happened_on')
+				.execute();
+			return {
+				subject: {
+					id: row.id,
+					number: row.number,
+					importedAs: row.imported_as,
+					version: row.version,
+					enrolledOn: shortDateText(plainDateOf(row.enrolled_on)),
+					kitNumber: row.kit_number,
+					facts: factsOf(definition, row.characteristics, row.stratum)
+				},
+				site,
+				thread: await threadOf(reader, studyId, subjectId),
+				items,
+				ahead: visits.ahead,
+				exits: exits.map((exit) => exit.kind as ExitKind),
+				standing: exits.map((exit) => ({
+					id: exit.id,
+					kind: exit.kind as ExitKind,
+					on: dayWords(exit.happened_on)
+				})),
+				version: {
+					number: versions.find((each) => each.id === row.protocol_version_id)?.number ?? 1,
+					since: row.version_since === null ? null : dayWords(row.version_since),
+					newest: versions.at(-1)?.number ?? 1
+				},
+				tasks: await tasksOf(reader, studyId, site, subjectId),
+				consents,
+				away: seenFrom === siteId ? null : await whereTo(reader, subjectId, site),
+				underWay: visits.underWay,
+				lostAfterAttempts: definition.lostAfterAttempts ?? 1,
+				randomised: isRandomised(definition)
+			};
+		}
+	);
 	return {
 		...record,
 		contact: may(actor.grants, 'contact.read', scope)

@@ -174,7 +174,8 @@ export async function getScreening(
 				const consent = known.find((one) => one.id === each.id);
 				return {
 					...each,
-					counts: row.outcome !== 'in progress' || (consent ? whyNot(consent, ground) === null : false)
+					counts:
+						row.outcome !== 'in progress' || (consent ? whyNot(consent, ground) === null : false)
 				};
 			}),
 			subject:

@@ -14,13 +14,14 @@ export const isPng = (bytes: Buffer) => bytes.subarray(0, 8).equals(pngSignature
  */
 export function pngHead(bytes: Buffer): ImageHead {
 	let head: { width: number; height: number } | null = null;
-	for (let at = 8; at + 12 <= bytes.length; ) {
+	for (let at = 8; at + 12 <= bytes.length;) {
 		const length = bytes.readUInt32BE(at);
 		const end = at + 12 + length;
 		if (end > bytes.length) return brokenOff;
 		const type = bytes.toString('latin1', at + 4, at + 8);
 		if (!head) {
-			if (type !== 'IHDR' || length !== 13) return 'This is not a whole PNG image: its head is missing.';
+			if (type !== 'IHDR' || length !== 13)
+				return 'This is not a whole PNG image: its head is missing.';
 			if (crc32(bytes.subarray(at + 4, end - 4)) !== bytes.readUInt32BE(end - 4))
 				return 'This PNG image is damaged: its head does not match its checksum.';
 			head = { width: bytes.readUInt32BE(at + 8), height: bytes.readUInt32BE(at + 12) };
@@ -30,7 +31,8 @@ export function pngHead(bytes: Buffer): ImageHead {
 	return brokenOff;
 }
 
-export const isJpeg = (bytes: Buffer) => bytes[0] === 0xff && bytes[1] === 0xd8 && bytes[2] === 0xff;
+export const isJpeg = (bytes: Buffer) =>
+	bytes[0] === 0xff && bytes[1] === 0xd8 && bytes[2] === 0xff;
 
 const isFrame = (marker: number) =>
 	marker >= 0xc0 && marker <= 0xcf && marker !== 0xc4 && marker !== 0xc8 && marker !== 0xcc;
@@ -43,7 +45,8 @@ export function jpegHead(bytes: Buffer): ImageHead {
 	let head: { width: number; height: number } | null = null;
 	let at = 2;
 	while (at + 4 <= bytes.length) {
-		if (bytes[at] !== 0xff) return 'This is not a whole JPEG image: its parts do not follow each other.';
+		if (bytes[at] !== 0xff)
+			return 'This is not a whole JPEG image: its parts do not follow each other.';
 		const marker = bytes[at + 1] as number;
 		if (marker === 0xff) {
 			at += 1;

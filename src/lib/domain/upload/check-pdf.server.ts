@@ -73,7 +73,9 @@ export function pdfTrouble(bytes: Buffer): string | null {
 	for (const [from, to] of packed) {
 		let inside: string;
 		try {
-			const unpacked = inflateSync(bytes.subarray(from, to), { maxOutputLength: Math.max(1, room) });
+			const unpacked = inflateSync(bytes.subarray(from, to), {
+				maxOutputLength: Math.max(1, room)
+			});
 			room -= unpacked.length;
 			inside = unpacked.toString('latin1');
 		} catch {

@@ -16,7 +16,11 @@ function otherwise(bytes: Buffer): string {
 		return `This is an archive or an office document. Save the form as PDF. ${scanHint}`;
 	if (head.startsWith('II*\u0000') || head.startsWith('MM\u0000*'))
 		return `This is a TIFF image. Save it as PDF, PNG or JPEG.`;
-	if (head.startsWith('GIF8') || brand.slice(4) === 'WEBP' || bytes.toString('latin1', 8, 12) === 'WEBP')
+	if (
+		head.startsWith('GIF8') ||
+		brand.slice(4) === 'WEBP' ||
+		bytes.toString('latin1', 8, 12) === 'WEBP'
+	)
 		return `This kind of image is not taken. ${scanHint}`;
 	return `What is in the file is none of the kinds that are taken. ${scanHint}`;
 }

@@ -38,7 +38,10 @@ export const pdf = (objects = '1 0 obj << /Type /Catalog /Pages 2 0 R >> endobj'
 		`%PDF-1.7\n${objects}\n2 0 obj << /Type /Pages /Kids [] /Count 0 >> endobj\ntrailer << /Root 1 0 R >>\nstartxref\n0\n%%EOF\n`,
 		'latin1'
 	);
-const packed = (inside: string, dictionary = '/Type /ObjStm /N 1 /First 4 /Filter /FlateDecode') => {
+const packed = (
+	inside: string,
+	dictionary = '/Type /ObjStm /N 1 /First 4 /Filter /FlateDecode'
+) => {
 	const body = deflateSync(Buffer.from(inside, 'latin1'));
 	return pdf(
 		`5 0 obj << ${dictionary} /Length ${body.length} >> stream\n${body.toString('latin1')}\nendstream endobj`
@@ -60,8 +63,12 @@ describe('what a scan may be', () => {
 		expect(why(png(), { name: 'form.pdf' })).toContain('“.pdf”, but what is in it is a PNG image');
 		expect(why(png(), { name: 'form' })).toContain('nothing that says what it is');
 		expect(why(pdf(), { name: 'form.pdf', type: 'image/png' })).toContain('sent as image/png');
-		expect(why(Buffer.from('<html><script>alert(1)</script>'), { name: 'form.pdf' })).toContain('none of the kinds');
-		expect(why(Buffer.from('MZ\u0090\u0000programme'), { name: 'form.png' })).toContain('none of the kinds');
+		expect(why(Buffer.from('<html><script>alert(1)</script>'), { name: 'form.pdf' })).toContain(
+			'none of the kinds'
+		);
+		expect(why(Buffer.from('MZ\u0090\u0000programme'), { name: 'form.png' })).toContain(
+			'none of the kinds'
+		);
 	});
 	test('other kinds are refused with what to do', () => {
 		expect(why(Buffer.from('\u0000\u0000\u0000\u0018ftypheic\u0000\u0000'))).toContain('HEIC');
@@ -74,7 +81,9 @@ describe('what a scan may be', () => {
 	test('a file that is cut off is said to be', () => {
 		for (const whole of [png(), jpeg(), pdf()])
 			for (const cut of [0.5, 0.9])
-				expect(why(whole.subarray(0, Math.floor(whole.length * cut)))).toMatch(/cut off|damaged|not a whole/);
+				expect(why(whole.subarray(0, Math.floor(whole.length * cut)))).toMatch(
+					/cut off|damaged|not a whole/
+				);
 	});
 	test('an image that would unpack to more than 100 million points is refused by its head', () => {
 		expect(why(png(10_000, 10_000))).toBe('png');
@@ -103,19 +112,23 @@ describe('what a PDF may not hold', () => {
 		// The same, packed in an object stream, and within what only looks like another stream.
 		expect(why(packed(`1 0 ${objects}`))).toContain(what);
 		const hidden = packed(`1 0 ${objects}`).toString('latin1').slice(9);
-		expect(
-			why(pdf(`9 0 obj << /Length 9999 >> stream\n${hidden}\nendobj`))
-		).toContain(what);
+		expect(why(pdf(`9 0 obj << /Length 9999 >> stream\n${hidden}\nendobj`))).toContain(what);
 	});
 	test('what cannot be checked', () => {
 		expect(why(pdf('1 0 obj << /Encrypt 3 0 R >> endobj'))).toContain('locked');
-		expect(why(packed('1 0 << >>', '/Type /ObjStm /N 1 /First 4 /Filter [/ASCIIHexDecode /FlateDecode]'))).toContain('cannot be checked');
-		expect(why(packed('1 0 << >>', '/Type /ObjStm /N 1 /First 4 /Filter /LZWDecode'))).toContain('cannot be checked');
+		expect(
+			why(packed('1 0 << >>', '/Type /ObjStm /N 1 /First 4 /Filter [/ASCIIHexDecode /FlateDecode]'))
+		).toContain('cannot be checked');
+		expect(why(packed('1 0 << >>', '/Type /ObjStm /N 1 /First 4 /Filter /LZWDecode'))).toContain(
+			'cannot be checked'
+		);
 		// 64 million spaces pack into a few kilobytes.
 		expect(why(packed(' '.repeat(64 * 1024 * 1024)))).toContain('cannot be checked');
 	});
 	test('pictures that happen to hold the short letters are no script', () => {
-		expect(why(pdf('4 0 obj << /Subtype /Image /Length 12 >> stream\n../JS(..\nendstream endobj'))).toBe('pdf');
+		expect(
+			why(pdf('4 0 obj << /Subtype /Image /Length 12 >> stream\n../JS(..\nendstream endobj'))
+		).toBe('pdf');
 		expect(why(pdf('1 0 obj << /OpenAction [3 0 R /Fit] >> endobj'))).toBe('pdf');
 		expect(why(packed('1 0 << /Type /Catalog >>'))).toBe('pdf');
 	});

@@ -1,7 +1,8 @@
 import { scanLimits, scanLimitWords } from '$lib/domain/upload/scan';
 import { Refusal } from '$lib/refusal';
 
-const tooLarge = () => new Refusal('TOO_LARGE', { limit: scanLimitWords }, { file: `At most ${scanLimitWords}.` });
+const tooLarge = () =>
+	new Refusal('TOO_LARGE', { limit: scanLimitWords }, { file: `At most ${scanLimitWords}.` });
 
 /** Refuses by what the request says of its own length, before any of it is read; a form around the file takes little more. */
 export function refuseByLength(headers: Headers, around = 0): void {

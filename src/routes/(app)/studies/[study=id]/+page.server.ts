@@ -34,20 +34,21 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 		const atSites = has('coordinator', 'nurse', 'investigator');
 		const coordinator = roles.has('coordinator');
 		const analyst = has('statistician', 'independent_statistician');
-		const [work, windows, counts, screenings, state, cuts, looks, toSign, transfers, asked] = await Promise.all([
-			atSites ? getWorkAtSites(actor, studyId) : null,
-			coordinator
-				? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
-				: null,
-			has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
-			has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
-			roles.has('data_manager') ? getStudyState(actor, studyId) : null,
-			analyst ? findCuts(actor, studyId) : null,
-			analyst ? findLooks(actor, studyId) : null,
-			may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null,
-			atSites ? findTransfers(actor, studyId) : [],
-			has('coordinator', 'investigator') ? findReconsents(actor, studyId) : null
-		]);
+		const [work, windows, counts, screenings, state, cuts, looks, toSign, transfers, asked] =
+			await Promise.all([
+				atSites ? getWorkAtSites(actor, studyId) : null,
+				coordinator
+					? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
+					: null,
+				has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
+				has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
+				roles.has('data_manager') ? getStudyState(actor, studyId) : null,
+				analyst ? findCuts(actor, studyId) : null,
+				analyst ? findLooks(actor, studyId) : null,
+				may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null,
+				atSites ? findTransfers(actor, studyId) : [],
+				has('coordinator', 'investigator') ? findReconsents(actor, studyId) : null
+			]);
 		return {
 			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
 			work,

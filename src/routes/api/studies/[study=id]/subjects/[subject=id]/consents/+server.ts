@@ -4,7 +4,8 @@ import { consentInput } from '$lib/domain/consent/consent.input';
 import { endpoint } from '$lib/server/api/endpoint';
 
 export const POST = endpoint({
-	summary: 'Records that a subject was asked again and consented; the newest version applies from then on.',
+	summary:
+		'Records that a subject was asked again and consented; the newest version applies from then on.',
 	body: consentInput,
 	response: z.object({
 		id: z.uuid(),

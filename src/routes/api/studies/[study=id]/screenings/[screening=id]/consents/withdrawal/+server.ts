@@ -4,7 +4,8 @@ import { withdrawConsentInput } from '$lib/domain/consent/consent.input';
 import { endpoint } from '$lib/server/api/endpoint';
 
 export const POST = endpoint({
-	summary: 'Marks a consent as withdrawn before enrolment: it stays in the record and does not count.',
+	summary:
+		'Marks a consent as withdrawn before enrolment: it stays in the record and does not count.',
 	body: withdrawConsentInput,
 	response: z.object({ version: z.number() }),
 	handle: ({ actor, params, body }) =>
