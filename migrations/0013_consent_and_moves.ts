@@ -155,50 +155,6 @@ begin
 	return moved;
 end $$;
 
--- The next kit of the subject's stratum, once. As before, but a consent that was withdrawn does not count, nor does a way
--- out that was taken back.
-create or replace function closed.allocate(p_subject uuid) returns text language plpgsql security definer set search_path = pg_catalog as $$
-declare
-	s app.subject; place closed.list_position; zone text; at timestamptz := app.now();
-begin
-	select * into s from app.subject where id = p_subject for update;
-	if not found or not app.has_role(array['coordinator', 'investigator'], s.study_id, s.site_id) then
-		raise exception using errcode = 'HD010', message = 'NOT_PERMITTED';
-	end if;
-	if s.kit_number is not null then
-		raise exception using errcode = 'HD011', message = 'ALREADY_RANDOMISED';
-	end if;
-	if not exists (select from app.consent c where c.subject_id = s.id and c.signed_at <= at and c.withdrawn_on is null) then
-		raise exception using errcode = 'HD012', message = 'CONSENT_NEEDED';
-	end if;
-	if exists (select from app.study_exit e where e.subject_id = s.id and e.taken_back_at is null) then
-		raise exception using errcode = 'HD014', message = 'LEFT_STUDY';
-	end if;
-	perform pg_advisory_xact_lock(hashtextextended('allocate:' || s.study_id::text || s.stratum::text, 0));
-	select l.* into place from closed.list_position l
-		where l.study_id = s.study_id and l.stratum = s.stratum and l.subject_id is null order by l.position limit 1;
-	if not found then
-		raise exception using errcode = 'HD013', message = 'ALLOCATION_UNAVAILABLE';
-	end if;
-	update closed.list_position set subject_id = s.id, used_at = at where id = place.id;
-	select t.zone into zone from app.site t where t.id = s.site_id;
-	update app.subject set kit_number = place.kit_number, randomised_at = at, randomised_on = (at at time zone zone)::date where id = s.id;
-	return place.kit_number;
-end $$;
-
--- The arms of an open-label study's subjects at the sites of who asks; in a masked study there is no answer.
-create function closed.open_arms(p_study uuid) returns table (subject_id uuid, arm_key text)
-language plpgsql security definer set search_path = pg_catalog as $$
-begin
-	if not app.has_role(array['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor', 'statistician',
-			'independent_statistician', 'nurse'], p_study, null)
-		or not exists (select from app.study s where s.id = p_study and not s.masked) then
-		raise exception using errcode = 'HD010', message = 'NOT_PERMITTED';
-	end if;
-	return query select l.subject_id, l.arm_key from closed.list_position l join app.subject s on s.id = l.subject_id
-		where l.study_id = p_study and (app.everywhere() or app.my_sites() operator(pg_catalog.@>) array[s.site_id]);
-end $$;
-
 create trigger upload_version before update on app.upload for each row execute function app.bump_version();
 create trigger reconsent_refusal_version before update on app.reconsent_refusal for each row execute function app.bump_version();
 create trigger transfer_version before update on app.transfer for each row execute function app.bump_version();
@@ -210,8 +166,8 @@ grant select, insert, update on app.upload, app.reconsent_refusal to heddle_app;
 grant select on app.transfer to heddle_app;
 -- The flow of a report: how many were considered, and why not entered.
 grant select on app.screening to heddle_unmasked;
-revoke execute on function app.moved_here, app.moved_away, app.moved_screenings, app.transfer_subject, closed.open_arms from public;
-grant execute on function app.moved_here, app.moved_away, app.moved_screenings, app.transfer_subject, closed.open_arms to heddle_app;
+revoke execute on function app.moved_here, app.moved_away, app.moved_screenings, app.transfer_subject from public;
+grant execute on function app.moved_here, app.moved_away, app.moved_screenings, app.transfer_subject to heddle_app;
 `.execute(db);
 
 	const mine = `(select app.everywhere()) or (select app.my_sites()) @> array[site_id]`;

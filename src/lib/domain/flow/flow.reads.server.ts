@@ -1,6 +1,6 @@
 import { sql } from 'kysely';
 import type { Actor } from '$lib/server/actor';
-import { change, read, type Reader } from '$lib/server/change';
+import { read, type Reader } from '$lib/server/change';
 import { clock } from '$lib/time/clock';
 import { dateInZone } from '$lib/time/zones';
 import { sitesFor, type SiteHead } from '../study/sites.server';
@@ -10,7 +10,8 @@ import { enrolmentAgainstPlan, type SitePlan } from './enrolment-plan';
 import { flowOf, type Flow, type FlowScreening, type FlowSubject } from './flow';
 
 interface Row {
-	id: string;
+	/** Known only where nothing is masked. */
+	arm_key: string | null;
 	screened: boolean;
 	randomised: boolean;
 	exits: string[];
@@ -24,7 +25,7 @@ async function subjectsAt(
 	primary: string
 ): Promise<Row[]> {
 	const { rows } = await sql<Row>`
-		select s.id, s.randomised_at is not null as randomised,
+		select s.arm_key, s.randomised_at is not null as randomised,
 			exists (select from app.screening c where c.subject_id = s.id) as screened,
 			coalesce((select jsonb_agg(x.kind) from app.study_exit x where x.subject_id = s.id and x.taken_back_at is null), '[]') as exits,
 			exists (select from app.measurement n join app.measure m on m.id = n.measure_id
@@ -47,17 +48,6 @@ async function screeningsAt(
 		reader
 	);
 	return rows;
-}
-
-/** The arm of each subject, only in an open-label study: a masked one is never asked about. */
-async function openArms(actor: Actor, studyId: string): Promise<Map<string, string>> {
-	const { rows } = await change(actor, 'flow.read', { studyId }, (writer) =>
-		sql<{
-			subject_id: string;
-			arm_key: string;
-		}>`select subject_id, arm_key from closed.open_arms(${studyId}::uuid)`.execute(writer)
-	);
-	return new Map(rows.map((row) => [row.subject_id, row.arm_key]));
 }
 
 export interface FlowView {
@@ -89,11 +79,10 @@ export async function getFlow(actor: Actor, studyId: string): Promise<FlowView> 
 	const { definition, sites } = held;
 	const randomises = isRandomised(definition);
 	const byArm = randomises && !definition.masked;
-	const arms = byArm ? await openArms(actor, studyId) : null;
 	const names = new Map(definition.arms.map((arm) => [arm.key, arm.name]));
-	const subjects = held.subjects.map(({ id, ...subject }): FlowSubject => ({
+	const subjects = held.subjects.map(({ arm_key, ...subject }): FlowSubject => ({
 		...subject,
-		arm: arms ? (names.get(arms.get(id) ?? '') ?? null) : null
+		arm: byArm ? (names.get(arm_key ?? '') ?? null) : null
 	}));
 	const thisMonth = dateInZone(clock.now(), sites[0]?.zone ?? 'UTC').slice(0, 7);
 	return {

@@ -1,7 +1,13 @@
 import { converts } from '../../units/convert';
 import { formulaOf, type FormulaInput } from '../measurement/formulas';
 import type { Report } from './check';
-import type { Characteristic, DerivedMeasure, Measure, StudyDefinition } from './definition';
+import {
+	measuresBehind,
+	type Characteristic,
+	type DerivedMeasure,
+	type Measure,
+	type StudyDefinition
+} from './definition';
 
 const splitReference = (reference: string): [string, string] => {
 	const colon = reference.indexOf(':');
@@ -82,12 +88,6 @@ function whyUnfit(
 	}
 }
 
-const measureInputs = (measure: DerivedMeasure): string[] =>
-	Object.values(measure.derivedBy.inputs).flatMap((reference) => {
-		const [kind, name] = splitReference(reference);
-		return kind === 'measure' ? [name] : [];
-	});
-
 function checkCycle(
 	measure: DerivedMeasure,
 	path: string,
@@ -95,7 +95,7 @@ function checkCycle(
 	report: Report
 ): void {
 	const seen = new Set<string>();
-	const open = measureInputs(measure);
+	const open = measuresBehind(measure);
 	for (let key = open.pop(); key !== undefined; key = open.pop()) {
 		if (key === measure.key) {
 			report('stops', path, 'FORMULA_CYCLE', { measure: measure.name });
@@ -104,7 +104,7 @@ function checkCycle(
 		if (seen.has(key)) continue;
 		seen.add(key);
 		const source = measures.get(key);
-		if (source?.kind === 'derived') open.push(...measureInputs(source));
+		if (source?.kind === 'derived') open.push(...measuresBehind(source));
 	}
 }
 
@@ -118,7 +118,7 @@ function checkVisits(
 	for (const visit of definition.visits) {
 		const here = definition.schedule[visit.key] ?? [];
 		if (!here.includes(measure.key)) continue;
-		for (const key of measureInputs(measure))
+		for (const key of measuresBehind(measure))
 			if (measures.has(key) && !here.includes(key))
 				report('stops', path, 'FORMULA_INPUT_NOT_AT_VISIT', {
 					measure: measure.name,

@@ -2,6 +2,7 @@ import { converts } from '../../units/convert';
 import { minutesOfTime } from '../../time/zones';
 import { problem, type Facts, type ProblemCode } from '../problems';
 import { checkDerived } from './check-derived';
+import { checkMasking } from './check-masking';
 import { checkSchedule } from './check-schedule';
 import { isRandomised, type Measure, type StudyDefinition } from './definition';
 import type { LocatedProblem } from './template';
@@ -27,6 +28,7 @@ export function checkDefinition(definition: StudyDefinition): Finding[] {
 	checkSchedule(definition, report);
 	definition.measures.forEach((measure, at) => checkMeasure(measure, `measures[${at}]`, report));
 	checkDerived(definition, report);
+	checkMasking(definition, report);
 	checkComparisons(definition, report);
 	checkSites(definition, report);
 	if (definition.consentVersions.length === 0)

@@ -17,6 +17,7 @@ import { checkDefinition } from './check';
 import {
 	decimalsOfMeasure,
 	isRandomised,
+	openTo,
 	unitOfMeasure,
 	type SiteDefinition,
 	type StudyDefinition
@@ -125,7 +126,8 @@ async function addSites(writer: Writer, studyId: string, definition: StudyDefini
 				code: site.code,
 				name: site.name,
 				zone: site.zone,
-				opening: JSON.stringify(site.openingHours)
+				opening: JSON.stringify(site.openingHours),
+				closures: JSON.stringify(site.closures ?? [])
 			})
 			.execute();
 		if (site.rooms.length > 0)
@@ -294,6 +296,7 @@ export async function layOutSchedule(
 		spec: JSON.stringify(visit),
 		length_minutes: visit.lengthMinutes
 	}));
+	const open = openTo(definition);
 	const measures = definition.measures.map((measure, at) => ({
 		id: newId(),
 		study_id: studyId,
@@ -304,7 +307,8 @@ export async function layOutSchedule(
 		decimals: decimalsOfMeasure(measure),
 		kind: measure.kind,
 		position: at + 1,
-		spec: JSON.stringify(measure)
+		spec: JSON.stringify(measure),
+		open_to: open.get(measure.key) ?? null
 	}));
 	await writer.insertInto('planned_visit').values(visits).execute();
 	await writer.insertInto('measure').values(measures).execute();

@@ -7,7 +7,8 @@ import { dateInZone, instantText, timeInZone } from '$lib/time/zones';
 import { consentViews, type ConsentView } from '../consent/consent.reads.server';
 import { tasksOf, type ReconsentTask } from '../consent/reconsent.reads.server';
 import { inWindow, windowText } from '../schedule/window';
-import { isRandomised, type StudyDefinition } from '../study/definition';
+import { armName, isRandomised, type StudyDefinition } from '../study/definition';
+import { unmaskingsOf } from '../unmasking/unmasking.reads.server';
 import { getDefinition } from '../study/study.reads.server';
 import { windowOfRow } from '../visit/visit.reads.server';
 import type { ExitKind } from './exit';
@@ -31,6 +32,7 @@ export interface RecordItem {
 		| 'exit'
 		| 'refusal'
 		| 'transfer'
+		| 'unmasking'
 		| 'mail';
 	/** In words, with the zone where it is an instant. */
 	when: string;
@@ -73,6 +75,8 @@ export interface SubjectRecord {
 		version: number;
 		enrolledOn: string;
 		kitNumber: string | null;
+		/** Where the study masks nothing. */
+		arm: string | null;
 		facts: { name: string; value: string }[];
 	};
 	site: SiteNow;
@@ -91,6 +95,16 @@ export interface SubjectRecord {
 	away: { to: string; on: string } | null;
 	underWay: number;
 	lostAfterAttempts: number;
+	/** Whether there is an allocation that is kept from the site. */
+	masked: boolean;
+	maskedStudy: boolean;
+	/** The stratification factors with the level on record, for whoever may correct it. */
+	strata: {
+		key: string;
+		name: string;
+		level: string;
+		levels: { value: string; label: string }[];
+	}[];
 	/** Null without the permission to read them; the permission of their own is asked in a read of its own. */
 	contact: ContactDetails | 'none' | null;
 	may: {
@@ -100,6 +114,8 @@ export interface SubjectRecord {
 		consent: boolean;
 		scan: boolean;
 		transfer: boolean;
+		correct: boolean;
+		unmask: boolean;
 	};
 }
 
@@ -129,6 +145,7 @@ export async function getSubjectRecord(
 					'version',
 					'enrolled_on',
 					'kit_number',
+					'arm_key',
 					'randomised_at',
 					'protocol_version_id',
 					'version_since',
@@ -141,6 +158,11 @@ export async function getSubjectRecord(
 			if (!row) throw new Refusal('NOT_FOUND');
 			const site = await getSite(reader, studyId, siteId);
 			const definition = await getDefinition(reader, studyId, row.protocol_version_id);
+			const study = await reader
+				.selectFrom('study')
+				.select('masked')
+				.where('id', '=', studyId)
+				.executeTakeFirstOrThrow();
 			const visits = await visitsOf(reader, studyId, subjectId, site);
 			const consents = await consentViews(reader, { subjectId }, site.zone, mayScan);
 			const versions = await reader
@@ -151,7 +173,13 @@ export async function getSubjectRecord(
 				.orderBy('number')
 				.execute();
 			const items = [
-				...(await wayIn(reader, subjectId, site, row, consents)),
+				...(await wayIn(
+					reader,
+					subjectId,
+					site,
+					{ ...row, arm: armName(definition, row.arm_key) },
+					consents
+				)),
 				...visits.items,
 				...(await alongTheWay(reader, studyId, subjectId, site))
 			].sort((a, b) => (a.key < b.key ? -1 : a.key > b.key ? 1 : 0));
@@ -171,6 +199,7 @@ export async function getSubjectRecord(
 					version: row.version,
 					enrolledOn: shortDateText(plainDateOf(row.enrolled_on)),
 					kitNumber: row.kit_number,
+					arm: armName(definition, row.arm_key),
 					facts: factsOf(definition, row.characteristics, row.stratum)
 				},
 				site,
@@ -193,7 +222,10 @@ export async function getSubjectRecord(
 				away: seenFrom === siteId ? null : await whereTo(reader, subjectId, site),
 				underWay: visits.underWay,
 				lostAfterAttempts: definition.lostAfterAttempts ?? 1,
-				randomised: isRandomised(definition)
+				randomised: isRandomised(definition),
+				masked: row.kit_number !== null && study.masked,
+				maskedStudy: study.masked,
+				strata: strataOf(definition, row.stratum)
 			};
 		}
 	);
@@ -208,7 +240,9 @@ export async function getSubjectRecord(
 			editContact: may(actor.grants, 'contact.edit', scope),
 			consent: may(actor.grants, 'consent.record', scope),
 			scan: mayScan,
-			transfer: may(actor.grants, 'subject.transfer', scope)
+			transfer: may(actor.grants, 'subject.transfer', scope),
+			correct: may(actor.grants, 'subject.correct', scope),
+			unmask: may(actor.grants, 'unmasking.record', scope)
 		}
 	};
 }
@@ -237,6 +271,14 @@ async function whereTo(reader: Reader, subjectId: string, site: SiteNow) {
 		.executeTakeFirst();
 	return { to: site.name, on: last ? dayWords(last.transferred_on) : '' };
 }
+
+const strataOf = (definition: StudyDefinition, stratum: unknown): SubjectRecord['strata'] =>
+	definition.strata.map(({ key, name, levels }) => ({
+		key,
+		name,
+		level: String((stratum as Record<string, unknown> | null)?.[key] ?? ''),
+		levels: levels.map((each) => ({ value: each.key, label: each.name }))
+	}));
 
 const getContact = (actor: Actor, studyId: string, siteId: string, subjectId: string) =>
 	read(actor, 'contact.read', { studyId, siteId }, async (reader) => {
@@ -286,6 +328,7 @@ async function wayIn(
 		randomised_at: Date | null;
 		kit_number: string | null;
 		imported_as: string | null;
+		arm: string | null;
 	},
 	consents: readonly ConsentView[]
 ): Promise<RecordItem[]> {
@@ -329,7 +372,11 @@ async function wayIn(
 			when: instantText(subject.randomised_at, site.zone),
 			key: dayKey(dateInZone(subject.randomised_at, site.zone), '~2'),
 			title: 'Randomised',
-			lines: [`Kit ${subject.kit_number ?? ''}.`]
+			lines: [
+				subject.arm === null
+					? `Kit ${subject.kit_number ?? ''}.`
+					: `${subject.arm}, kit ${subject.kit_number ?? ''}.`
+			]
 		});
 	return items;
 }
@@ -477,6 +524,21 @@ async function alongTheWay(
 		.where('subject_id', '=', subjectId)
 		.execute();
 	const items: RecordItem[] = [];
+	for (const each of await unmaskingsOf(reader, studyId, subjectId))
+		items.push({
+			id: each.id,
+			kind: 'unmasking',
+			when: each.recorded,
+			key: instantKey(each.recordedAt, site.zone),
+			title: `Unmasked: ${each.kind.toLowerCase()}`,
+			lines: [
+				each.happened === each.recorded ? '' : `It happened at ${each.happened}.`,
+				`Known to ${each.knownTo}. Recorded by ${each.by}.`,
+				`Reason: ${each.reason}`,
+				each.impact ? `What it may have touched: ${each.impact}` : '',
+				'The arm is not part of this record.'
+			].filter(Boolean)
+		});
 	for (const each of contacts)
 		items.push({
 			id: each.id,
