@@ -642,13 +642,6 @@ async function playMinimised(
 			assentReason: '',
 			explainedBy: by.personId,
 			signedBy: 'participant',
-			obtainedOn: begin,
-			obtainedTime: '04:30',
-			relationship: '',
-			witnessed: false,
-			minor: false,
-			assent: '',
-			assentReason: '',
 			copyGiven: true
 		});
 		const { version } = await answerEligibility(

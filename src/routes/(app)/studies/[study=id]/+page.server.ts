@@ -67,10 +67,7 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 			has('coordinator', 'pharmacist', 'data_manager') ? findLowStock(actor, studyId) : [],
 			may(actor.grants, 'visit.record', { studyId }) ? findToRecord(actor, studyId) : [],
 			atSites ? findTransfers(actor, studyId) : [],
-			has('coordinator', 'investigator') ? findReconsents(actor, studyId) : null,
-			has(...toldRoles) ? findRecentUnmaskings(actor, studyId) : [],
-			has('coordinator', 'pharmacist', 'data_manager') ? findLowStock(actor, studyId) : [],
-			may(actor.grants, 'visit.record', { studyId }) ? findToRecord(actor, studyId) : []
+			has('coordinator', 'investigator') ? findReconsents(actor, studyId) : null
 		]);
 		return {
 			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
