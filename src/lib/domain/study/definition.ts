@@ -137,11 +137,9 @@ export const revealingRoles = ['pharmacist', 'nurse', 'investigator'] as const;
 const common = {
 	key: keySchema,
 	name: line(100),
-	showLast: z
-		.enum(['before', 'after', 'never'])
-		.meta({
-			description: 'Whether the last value is shown before entry, only after it, or never.'
-		}),
+	showLast: z.enum(['before', 'after', 'never']).meta({
+		description: 'Whether the last value is shown before entry, only after it, or never.'
+	}),
 	couldRevealArm: z
 		.strictObject({ enteredBy: z.enum(revealingRoles) })
 		.optional()
@@ -305,12 +303,9 @@ export const studyDefinition = z
 			description:
 				'Contact attempts without answer before somebody may be called lost to follow-up; one when left out.'
 		}),
-		adverseEvents: z
-			.boolean()
-			.optional()
-			.meta({
-				description: 'Whether the study keeps a list of adverse events; yes when left out.'
-			}),
+		adverseEvents: z.boolean().optional().meta({
+			description: 'Whether the study keeps a list of adverse events; yes when left out.'
+		}),
 		eligibility: z
 			.array(
 				z.strictObject({
