@@ -1,6 +1,6 @@
 import type { StudyDefinition } from './definition';
 import { itemsOf } from './edits';
-import { editedLists, factFields, type EditedList } from './edits.input';
+import { editedLists, factFields, type EditedList } from './edit-lists';
 import { itemWord, keyOf, nameOf } from './references';
 import { differingFields, same } from './same';
 import { fieldWords, valueWords } from './value-words';

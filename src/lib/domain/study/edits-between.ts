@@ -1,6 +1,7 @@
 import type { StudyDefinition } from './definition';
 import { applyEdits, itemsOf } from './edits';
-import { editedLists, factFields, type CellEdit, type Edit, type EditedList } from './edits.input';
+import { editedLists, factFields, type EditedList } from './edit-lists';
+import type { CellEdit, Edit } from './edits.input';
 import { keyField, keyOf } from './references';
 import { differingFields, same } from './same';
 

@@ -2,7 +2,8 @@ import fc from 'fast-check';
 import { normalised } from './definition-file';
 import type { StudyDefinition } from './definition';
 import { applyEdits, itemsOf } from './edits';
-import { editedLists, type Edit, type EditedList } from './edits.input';
+import { editedLists, type EditedList } from './edit-lists';
+import type { Edit } from './edits.input';
 import { keyOf } from './references';
 import { studyTemplates } from './templates.server';
 

@@ -1,6 +1,7 @@
 import { bad, good, problem, type Problem, type Result } from '../problems';
 import type { StudyDefinition } from './definition';
-import type { CellEdit, Edit, EditedList } from './edits.input';
+import type { EditedList } from './edit-lists';
+import type { CellEdit, Edit } from './edits.input';
 import {
 	itemWord,
 	keyField,

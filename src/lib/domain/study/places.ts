@@ -1,6 +1,7 @@
 import type { StudyDefinition } from './definition';
 import { itemsOf } from './edits';
-import { editedLists, factFields, type Edit } from './edits.input';
+import { editedLists, factFields } from './edit-lists';
+import type { Edit } from './edits.input';
 import { keyOf } from './references';
 import { differingFields, same } from './same';
 

@@ -1,5 +1,5 @@
 import type { StudyDefinition } from './definition';
-import type { EditedList } from './edits.input';
+import type { EditedList } from './edit-lists';
 
 type Item = Readonly<Record<string, unknown>>;
 

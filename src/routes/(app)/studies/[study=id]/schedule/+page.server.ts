@@ -1,7 +1,4 @@
-import { redirect } from '@sveltejs/kit';
-import { checkDefinition, mayPublish } from '$lib/domain/study/check';
-import { editDraftVisit, publishProtocol } from '$lib/domain/study/study.commands.server';
-import { editVisitForm, publishInput } from '$lib/domain/study/study.input';
+import { shownFindings } from '$lib/domain/study/shown-findings';
 import { getProtocol, getStudy } from '$lib/domain/study/study.reads.server';
 import { planVisits } from '$lib/domain/schedule/window';
 import {
@@ -12,13 +9,12 @@ import {
 	targetWords,
 	widthWords
 } from '$lib/domain/study/words';
-import { formFor, submit } from '$lib/server/forms';
 import { may } from '$lib/server/permission';
 import { actorOf, serve } from '$lib/server/serve';
 import { clock } from '$lib/time/clock';
 import { shortDateText } from '$lib/time/dates';
 import { dateInZone } from '$lib/time/zones';
-import type { Actions, PageServerLoad } from './$types';
+import type { PageServerLoad } from './$types';
 
 export const load: PageServerLoad = async ({ locals, params, url }) => {
 	const actor = actorOf({ locals });
@@ -27,11 +23,7 @@ export const load: PageServerLoad = async ({ locals, params, url }) => {
 		Promise.all([getProtocol(actor, params.study), getStudy(actor, params.study)])
 	);
 	const { definition } = protocol;
-	const findings = checkDefinition(definition);
-	const editable = protocol.status === 'draft' && may(actor.grants, 'study.edit', scope);
-	const edited = editable
-		? definition.visits.find((visit) => visit.key === url.searchParams.get('visit'))
-		: undefined;
+	const draft = protocol.status === 'draft';
 	// Every anchor on the same day, so that the three dates can be read side by side.
 	const example = dateInZone(clock.now(), definition.sites[0]?.zone ?? 'UTC');
 	const planned = planVisits(definition, { enrolment: example, randomisation: example });
@@ -86,58 +78,8 @@ export const load: PageServerLoad = async ({ locals, params, url }) => {
 			from: shortDateText(version.from)
 		})),
 		characteristics: definition.characteristics.map((each) => each.name),
-		findings: findings.map(({ weight, path, problem }) => ({ weight, path, say: problem.message })),
-		editable,
-		mayPublish:
-			protocol.status === 'draft' && may(actor.grants, 'study.publish', scope)
-				? mayPublish(findings)
-				: null,
-		publish: await formFor(publishInput, { version: protocol.version }, 'publish'),
-		edit: edited
-			? {
-					name: edited.name,
-					before: edited.before.unit,
-					after: edited.after.unit,
-					form: await formFor(
-						editVisitForm,
-						{
-							key: edited.key,
-							name: edited.name,
-							lengthMinutes: edited.lengthMinutes,
-							before: edited.before.amount,
-							after: edited.after.amount,
-							version: protocol.version
-						},
-						'edit'
-					)
-				}
-			: null
+		findings: draft ? shownFindings(definition) : [],
+		editable: draft && may(actor.grants, 'study.edit', scope),
+		justPublished: !draft && url.searchParams.get('published') === 'yes'
 	};
-};
-
-export const actions: Actions = {
-	publish: async ({ request, locals, params }) =>
-		submit(
-			request,
-			publishInput,
-			async ({ version }) => {
-				await publishProtocol(actorOf({ locals }), params.study, version);
-				return 'Published. The study is open.';
-			},
-			'publish'
-		),
-	edit: async ({ request, locals, params }) => {
-		let done = false;
-		const answer = await submit(
-			request,
-			editVisitForm,
-			async ({ version, ...visit }) => {
-				await editDraftVisit(actorOf({ locals }), params.study, visit, version);
-				done = true;
-			},
-			'edit'
-		);
-		if (done) redirect(303, `/studies/${params.study}/schedule`);
-		return answer;
-	}
 };
