@@ -59,6 +59,16 @@ begin
 exception when foreign_key_violation then
 	raise exception using errcode = 'HD006', message = 'SITE_IN_USE';
 end $$;
+-- A published schedule comes in by the thousand rows: one trigger call for each statement.
+drop trigger planned_visit_audit on app.planned_visit;
+drop trigger measure_audit on app.measure;
+drop trigger planned_measure_audit on app.planned_measure;
+create trigger planned_visit_begun after insert on app.planned_visit referencing new table as fresh for each statement execute function audit.record_inserts();
+create trigger measure_begun after insert on app.measure referencing new table as fresh for each statement execute function audit.record_inserts();
+create trigger planned_measure_begun after insert on app.planned_measure referencing new table as fresh for each statement execute function audit.record_inserts();
+create trigger planned_visit_audit after update or delete on app.planned_visit for each row execute function audit.record_change();
+create trigger measure_audit after update or delete on app.measure for each row execute function audit.record_change();
+create trigger planned_measure_audit after update or delete on app.planned_measure for each row execute function audit.record_change();
 revoke execute on function app.settle_study from public;
 grant execute on function app.settle_study to heddle_app;
 `.execute(db);

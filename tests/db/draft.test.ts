@@ -410,9 +410,6 @@ describe('a study from a file', () => {
 	test('a definition as large as they come is published whole', async () => {
 		const { studyId: big } = await createStudyFrom(mara, bigDefinition(), { training: false });
 		await publishProtocol(mara, big, 1);
-		console.info(
-			`60 visits × 150 measures published in ${Math.round(performance.now() - began)} ms`
-		);
 		const [[found] = []] = await db.sql(
 			`select (select count(*) from app.planned_measure where study_id = '${big}')::int as cells,
 				(select count(*) from audit.event where study_id = '${big}' and record = 'planned_measure')::int as told`
