@@ -96,8 +96,6 @@ const sentences = {
 		`“${f.measure}” is a change from “${f.visit}”, where “${f.input}” is not measured.`,
 	BASELINE_OF_CHANGE_LATER: (f) =>
 		`“${f.measure}” is worked out at “${f.at}”, which comes before its baseline “${f.visit}”.`,
-	FORMULA_MIXED: (f) =>
-		`“${f.reference}” does not go with the other inputs of “${f.measure}”: their units do not convert.`,
 
 	// Edits of a draft
 	EDIT_NO_SUCH: (f) => `There is no ${f.what} “${f.key}” any more.`,
@@ -152,6 +150,8 @@ const sentences = {
 	NOT_DONE_REASON: () => 'Choose the reason from the list.',
 	DERIVED_NOT_ENTERED: (f) => `“${f.measure}” is worked out from other values and is not entered.`,
 	COMPARISON: (f) => `${f.lower} must be below ${f.higher}: ${f.lowerValue} and ${f.higherValue}.`,
+	COMPARISON_ABOVE: (f) =>
+		`${f.lower} must not be above ${f.higher}: ${f.lowerValue} and ${f.higherValue}.`,
 	DERIVED_INPUT_ABSENT: (f) => `“${f.measure}” cannot be worked out: ${f.input} is not there.`,
 	DERIVED_OUT_OF_SCOPE: (f) => `“${f.measure}” cannot be worked out: ${f.why}.`,
 

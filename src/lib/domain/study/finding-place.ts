@@ -69,9 +69,11 @@ export function placeOf(
 	const keyed = (definition as unknown as Record<string, unknown>)[root];
 	const item =
 		at !== undefined && Array.isArray(keyed)
-			? ((keyed[at] ?? {}) as { key?: string; code?: string; version?: string })
+			? ((keyed[at] ?? {}) as Record<string, string | undefined>)
 			: undefined;
-	const key = item?.key ?? item?.code ?? item?.version ?? (at === undefined ? undefined : index);
+	const pair = item?.lower && item.higher ? `${item.lower}<${item.higher}` : undefined;
+	const key =
+		pair ?? item?.key ?? item?.code ?? item?.version ?? (at === undefined ? undefined : index);
 	if (code === 'MEASURE_NEVER_SCHEDULED' || code === 'FORMULA_INPUT_NOT_AT_VISIT')
 		return { section: 'schedule', list: 'measures', ...(key ? { item: key } : {}) };
 	if (code === 'VISIT_WITHOUT_MEASURES')

@@ -159,9 +159,6 @@ export async function lockedDraft(writer: Writer, studyId: string) {
 	return { ...draft, definition: read.definition };
 }
 
-/** The longest a visit can hold a room, as the table of bookings has it. */
-const longestMinutes = 720;
-
 /**
  * Publishes the draft: it never changes again, its visits and measures become rows, and the study is open.
  * Refused while the check before publishing finds something that stops.
@@ -175,14 +172,9 @@ export const publishProtocol = (
 		const draft = await lockedDraft(writer, studyId);
 		const { definition } = draft;
 		const stops = checkDefinition(definition).filter((finding) => finding.weight === 'stops');
-		const tooLong = definition.visits.find((visit) => visit.lengthMinutes > longestMinutes);
 		if (stops.length > 0)
 			throw new Refusal('DEFINITION', {
 				why: stops.map((finding) => finding.problem.message).join(' ')
-			});
-		if (tooLong)
-			throw new Refusal('DEFINITION', {
-				why: `“${tooLong.name}” is longer than ${longestMinutes} minutes.`
 			});
 		const changed = await writer
 			.updateTable('protocol_version')

@@ -13,7 +13,8 @@ const zones = Intl.supportedValuesOf('timeZone');
 
 export const load: PageServerLoad = async ({ locals, url }) => {
 	actorOf({ locals });
-	const chosen = findTemplate(url.searchParams.get('template') ?? '') ?? studyTemplates[0];
+	const chosen =
+		findTemplate(url.searchParams.get('template') ?? 'two-arm-trial') ?? studyTemplates[0];
 	if (!chosen) throw new Error('There is no study template.');
 	const { definition } = chosen;
 	// Two rows more than the template has, for those whose browser adds none.
