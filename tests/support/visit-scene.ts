@@ -146,7 +146,16 @@ async function publish(database: FreshDatabase, definition: StudyDefinition): Pr
 /** A published trial at two sites with their people; nobody is enrolled yet. */
 export async function visitScene(
 	database: FreshDatabase,
-	{ code = 'AMR-01', passwordHash }: { code?: string; passwordHash?: string } = {}
+	{
+		code = 'AMR-01',
+		passwordHash,
+		edit = (definition) => definition
+	}: {
+		code?: string;
+		passwordHash?: string;
+		/** What the study says otherwise than the template. */
+		edit?: (definition: StudyDefinition) => StudyDefinition;
+	} = {}
 ): Promise<Scene> {
 	const tag = code.toLowerCase();
 	const manager = await addActor(
@@ -157,7 +166,7 @@ export async function visitScene(
 		null,
 		passwordHash
 	);
-	const definition: StudyDefinition = { ...template(), code, name: 'Aldermere' };
+	const definition = edit({ ...template(), code, name: 'Aldermere' });
 	const studyId = await publish(database, definition);
 	const [siteRows, roomRows, versionRows, measureRows, visitRows] = await database.sql(
 		`select id, zone from app.site where study_id = '${studyId}' order by code`,
