@@ -14,6 +14,7 @@ import {
 import { build, installDependencies, program } from '../scripts/lib/build.mjs';
 import { clusterExists } from '../scripts/lib/cluster.mjs';
 import { makeDemo } from '../scripts/lib/demo.mjs';
+import { environmentFor } from '../scripts/lib/environment.mjs';
 import {
 	fill,
 	hasData,
@@ -40,6 +41,8 @@ heddle restore FOLDER     the same back, into an empty installation, whole or no
 heddle verify-audit       checks the audit trail's chain; status 1 when it is broken
 heddle verify-signatures  holds each signature against its record; status 1 when one is damaged
 heddle seal               seals the audit trail up to now
+heddle allocation-list --study CODE [--email ADDRESS] [--out FILE]
+                          for the independent statistician: makes the list again from its seed and compares
 heddle setup-link         a one-time link for the first administrator
 heddle fit --plan PLAN DATA [--table] [--limits]
                           fits the plan to a CSV file and prints the result as JSON, or as a table
@@ -123,6 +126,7 @@ const commands = {
 	'verify-signatures': () => admin('verify-signatures'),
 	seal: () => admin('seal'),
 	'setup-link': () => admin('setup-link'),
+	'allocation-list': (args) => allocationList(args),
 
 	fit: (args) => engine('fit', args),
 	boundaries: (args) => engine('boundaries', args),
@@ -175,6 +179,16 @@ function admin(command) {
 		print(output.trim());
 		return status === 0 ? 0 : 1;
 	};
+	return withBuild(() => (hosted() ? ask(process.env) : onData(ask)));
+}
+
+/** Asks who it is and answers on the same terminal. @param {string[]} args */
+function allocationList(args) {
+	const ask = async (/** @type {Record<string, string | undefined>} */ env) =>
+		spawnSync(process.execPath, [program(localBuild.buildDir, 'allocation-list'), ...args], {
+			stdio: 'inherit',
+			env: environmentFor('look-worker', env)
+		}).status ?? 1;
 	return withBuild(() => (hosted() ? ask(process.env) : onData(ask)));
 }
 

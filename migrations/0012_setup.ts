@@ -25,10 +25,14 @@ begin
 		if found then
 			update app.site set name = wanted ->> 'name', zone = wanted ->> 'zone', opening = wanted -> 'opening'
 			where id = the_site and (name, zone, opening) is distinct from (wanted ->> 'name', wanted ->> 'zone', wanted -> 'opening');
+			-- Once a study is open its sites close and open again by themselves.
+			if state = 'draft' then
+				update app.site set closures = wanted -> 'closures' where id = the_site and closures is distinct from wanted -> 'closures';
+			end if;
 		else
 			the_site := (wanted ->> 'id')::uuid;
-			insert into app.site (id, study_id, code, name, zone, opening)
-			values (the_site, p_study, wanted ->> 'code', wanted ->> 'name', wanted ->> 'zone', wanted -> 'opening');
+			insert into app.site (id, study_id, code, name, zone, opening, closures)
+			values (the_site, p_study, wanted ->> 'code', wanted ->> 'name', wanted ->> 'zone', wanted -> 'opening', wanted -> 'closures');
 		end if;
 		insert into app.room (id, study_id, site_id, name)
 			select (r ->> 'id')::uuid, p_study, the_site, r ->> 'name' from jsonb_array_elements(wanted -> 'rooms') r

@@ -23,9 +23,9 @@ const offices: Record<string, () => Promise<number>> = {
 		return 0;
 	},
 	async 'verify-signatures'() {
-		const { lines, damaged } = await verifySignatures(systemActor(newId()));
+		const { lines, damaged, missing } = await verifySignatures(systemActor(newId()));
 		for (const line of lines) console.log(line);
-		return damaged === 0 ? 0 : 1;
+		return damaged + missing === 0 ? 0 : 1;
 	},
 	async 'verify-audit'() {
 		return readOwn(systemActor(newId()), async (reader) => {

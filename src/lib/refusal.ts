@@ -93,6 +93,11 @@ export const refusals = {
 		status: 422,
 		say: (f) => `This file was not taken, and nothing was made. ${f.why}`
 	},
+	SITE_NOT_APPROVED: {
+		status: 422,
+		say: (f) =>
+			`${f.site} was not approved on that day: nobody is enrolled at a site before its approval is recorded.`
+	},
 	CONSENT_NEEDED: {
 		status: 422,
 		say: () => 'A valid consent on or before this day is needed first.'
@@ -139,6 +144,38 @@ export const refusals = {
 		status: 409,
 		say: () => 'The allocation list was made already and is never made again.'
 	},
+	KITS_BEGUN: {
+		status: 409,
+		say: () =>
+			'Subjects were randomised already: stock is managed from the first kit or not at all.'
+	},
+	KIT_LEVEL_NEEDED: { status: 409, say: () => 'Say first how many kits this site holds.' },
+	KIT_LIST_NEEDED: {
+		status: 409,
+		say: () => 'There is no allocation list yet, so there are no kits to send.'
+	},
+	KITS_FULL: {
+		status: 409,
+		say: () => 'This site has its full stock already, or it is on the way.'
+	},
+	KITS_USED_UP: {
+		status: 409,
+		say: () => 'There are not enough kits left to fill this site’s stock. Nothing was sent.'
+	},
+	NOTHING_MASKED: {
+		status: 409,
+		say: () => 'There is no masked allocation of this subject to show.'
+	},
+	UNMASK_SECRET: {
+		status: 422,
+		say: () => 'That is not how you sign in here. Nothing was shown.'
+	},
+	CODE_UNKNOWN: {
+		status: 422,
+		say: () =>
+			'This code does not belong to this subject’s kit. Read it again from the opened sheet.'
+	},
+	CODE_USED: { status: 409, say: () => 'This code was entered already. Each is taken once.' },
 	FUTURE: { status: 422, say: (f) => `${f.what ?? 'This date'} lies in the future.` },
 	OUTSIDE_WINDOW: {
 		status: 422,

@@ -25,7 +25,7 @@ beforeAll(async () => {
 	useDatabase(open);
 	clock.set('2026-06-09T06:00:00Z');
 	scene = await visitScene(db, {
-		edit: (definition) => {
+		change: (definition) => {
 			const edited = applyEdits(definition, [
 				{
 					edit: 'add',
@@ -151,7 +151,7 @@ describe('a change from baseline', () => {
 });
 
 describe('a rule across measures that asks', () => {
-	const readings = (text: string) => ({ kind: 'readings', values: [text, text] }) as const;
+	const readings = (text: string) => ({ kind: 'readings' as const, values: [text, text] });
 	test('lets equal values pass where it says so, asks about broken ones, and keeps the answer', async () => {
 		const { later } = await begun();
 		await keep(later, 'systolic', readings('100'));

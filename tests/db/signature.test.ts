@@ -419,6 +419,12 @@ describe('R-14: a signature is tied to what was signed', () => {
 			status: 1,
 			last: expect.stringContaining(`${before.damaged + 1} damaged`)
 		});
+		// Taken out behind the program's back: the trail remembers it.
+		await tamper(`delete from app.signature where id = '${id}'`);
+		const gone = await verifySignatures(systemActor(newId()));
+		expect(gone.missing).toBe(before.missing + 1);
+		expect(gone.lines).toContain(`signature ${id}: missing, the trail saw it being made`);
+		expect(command().status).toBe(1);
 		expect(after.lines.find((line) => line.includes(id))).toMatch(
 			/broken, changed on .*Europe\/London/
 		);

@@ -137,6 +137,24 @@ test('a data manager makes a study from a template, changes a window, and publis
 	);
 	expect(sites).toHaveLength(1);
 	shared.made.siteId = sites?.[0]?.id;
+
+	await page.setViewportSize({ width: 1280, height: 800 });
+	await page.getByRole('link', { name: 'Sites', exact: true }).click();
+	await expect(page.getByText('not approved yet')).toBeVisible();
+	await page.getByLabel('Ethics approval of the site').fill('2026-01-06');
+	await page.getByRole('button', { name: 'Record the approval' }).click();
+	await expect(page.getByText('approved 6 Jan 2026')).toBeVisible();
+	await page.getByLabel('First day').fill('2026-12-24');
+	await page.getByLabel('Last day').fill('2026-12-20');
+	await page.getByLabel('Reason').fill('Winter break');
+	await page.getByRole('button', { name: 'Close on these days' }).click();
+	await expect(page.getByText('Choose the first day or a later one.')).toBeVisible();
+	await page.getByLabel('Last day').fill('2026-12-31');
+	await page.getByRole('button', { name: 'Close on these days' }).click();
+	await expect(page.getByText('24 Dec 2026 to 31 Dec 2026')).toBeVisible();
+	await axe(page);
+	await page.getByRole('button', { name: 'Open again: Northmoor' }).click();
+	await expect(page.getByText('On no day besides the opening hours.')).toBeVisible();
 });
 
 test('the independent statistician has the list made by the look worker, once', async ({
@@ -158,6 +176,7 @@ test('the independent statistician has the list made by the look worker, once', 
 });
 
 test('a coordinator screens, takes consent, enrols and randomises, mostly by keyboard', async ({
+	browser,
 	page,
 	shared
 }) => {
@@ -202,6 +221,21 @@ test('a coordinator screens, takes consent, enrols and randomises, mostly by key
 	await expect(page.getByText('The answers are kept.')).toBeVisible();
 	await expect(page.getByText('met', { exact: true })).toHaveCount(5);
 	await axe(page);
+
+	await expect(page.getByText('Still needed: the investigator’s signature.')).toBeVisible();
+	const doctor = await browser.newPage({ baseURL: shared.server.origin });
+	const investigator = await shared.person('investigator', studyId, siteId);
+	await signIn(doctor, investigator);
+	await doctor.goto(`/studies/${studyId}/signing`);
+	await ready(doctor);
+	await doctor.getByRole('checkbox').check();
+	await doctor.getByLabel('Your e-mail address').fill(investigator);
+	await doctor.getByLabel('Your password').fill(password);
+	await doctor.getByRole('button', { name: 'Sign', exact: true }).click();
+	await expect(doctor.getByRole('checkbox')).toHaveCount(0);
+	await doctor.close();
+	await page.reload();
+	await ready(page);
 
 	await page.getByLabel('Kidney function at screening').selectOption('below-45');
 	await page.getByLabel('Sex').selectOption('female');

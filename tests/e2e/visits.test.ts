@@ -4,11 +4,13 @@ import { expect, test as base, type Page } from '@playwright/test';
 import ICAL from 'ical.js';
 import { addDays, isoWeekday, plainDateOf, type PlainDate } from '../../src/lib/time/dates';
 import { dateInZone } from '../../src/lib/time/zones';
+import { withTellingMeasure } from '../support/telling';
 import { startServer, type CaughtMail, type RunningServer } from '../support/server';
 import {
 	addActor,
 	addSubject,
 	visitScene,
+	type Person,
 	type Scene,
 	type SceneSubject
 } from '../support/visit-scene';
@@ -18,6 +20,7 @@ const password = 'linen warp and weft';
 interface Shared {
 	server: RunningServer;
 	scene: Scene;
+	pharmacist: Person;
 	/** Due now, with an address; closing; passed. */
 	due: SceneSubject;
 	late: SceneSubject;
@@ -30,7 +33,18 @@ const test = base.extend<object, { shared: Shared }>({
 		async ({}, use) => {
 			const server = await startServer({ worker: true });
 			const passwordHash = await hash(password, { memoryCost: 19456, timeCost: 2, parallelism: 1 });
-			const scene = await visitScene(server.database, { passwordHash });
+			const scene = await visitScene(server.database, {
+				passwordHash,
+				change: withTellingMeasure
+			});
+			const pharmacist = await addActor(
+				server.database,
+				'Jorin Vask',
+				'pharmacist',
+				scene.studyId,
+				scene.sites[0].id,
+				passwordHash
+			);
 			const today = dateInZone(new Date(), scene.sites[0].zone);
 			const from = (before: number, after: number): [PlainDate, PlainDate, PlainDate] => [
 				addDays(today, -before),
@@ -44,7 +58,7 @@ const test = base.extend<object, { shared: Shared }>({
 			const late = await addSubject(server.database, scene, {
 				windows: { 'month-9': [addDays(today, -20), addDays(today, -12), addDays(today, -4)] }
 			});
-			await use({ server, scene, due, late });
+			await use({ server, scene, pharmacist, due, late });
 			await server.stop();
 		},
 		{ scope: 'worker', timeout: 240_000 }
@@ -303,6 +317,42 @@ test.describe('on the tablet', () => {
 			'potassium'
 		]);
 		expect(errors).toEqual([]);
+	});
+
+	test('the pharmacist enters what could reveal the arm; the nurse’s page says nothing of it', async ({
+		page,
+		browser,
+		shared
+	}) => {
+		const { scene, server, due, pharmacist } = shared;
+		const visit = `/studies/${scene.studyId}/visits/${due.visits['month-6']}`;
+		await signIn(page, pharmacist.email);
+		await page.goto(`/studies/${scene.studyId}`);
+		await axe(page);
+		await page
+			.getByRole('link', { name: /· Month 6$/ })
+			.first()
+			.tap();
+		await page.waitForLoadState('networkidle');
+		await expect(page.getByRole('button', { name: 'Finish visit' })).toHaveCount(0);
+		const card = page.locator('[data-measure="urine-glucose"]');
+		await card.locator('input[data-entry]').fill('13.37');
+		await page.keyboard.press('Enter');
+		await expect(card.locator('[data-state]')).toHaveText('kept', { timeout: 15_000 });
+		await expect(page.getByRole('row', { name: /Weight/ })).toBeVisible();
+		await axe(page);
+		await page.goto(`/studies/${scene.studyId}`);
+		await expect(page.getByText('Nothing waits', { exact: true })).toBeVisible();
+
+		const other = await browser.newPage({ baseURL: server.origin });
+		await signIn(other, scene.sites[0].nurse.email);
+		for (const place of [visit, `/studies/${scene.studyId}/subjects/${due.id}`]) {
+			await other.goto(place);
+			expect(await other.content()).not.toMatch(/13\.37/);
+		}
+		await other.goto(visit);
+		expect(await other.content()).not.toContain('Urine glucose');
+		await other.close();
 	});
 
 	test('a value typed while the network is away stays in its field and is sent when it is back', async ({

@@ -109,6 +109,7 @@ const roles = [
 	'data_manager everywhere',
 	'coordinator',
 	'nurse',
+	'pharmacist',
 	'investigator',
 	'monitor',
 	'auditor',
@@ -187,7 +188,7 @@ describe('R-19: every role on every route and method', () => {
 		expect(wrong).toEqual([]);
 	});
 
-	test.each(['coordinator', 'nurse', 'investigator', 'monitor'])(
+	test.each(['coordinator', 'nurse', 'pharmacist', 'investigator', 'monitor'])(
 		'a %s of another site reads nothing of this one, and of another study nothing at all',
 		async (role) => {
 			const visitor = people.by[`${role} elsewhere`] as Visitor;

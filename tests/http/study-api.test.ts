@@ -445,9 +445,9 @@ describe('what is wrong is refused with a field and a sentence, and nothing is w
 
 	test('the list is not asked for twice, and only by its own role', async () => {
 		const path = of(scene.studyId, '/allocation-list');
-		expect((await manager.send('POST', path)).status).toBe(403);
-		expect((await coordinator.send('POST', path)).status).toBe(403);
-		const second = await independent.send('POST', path);
+		expect((await manager.send('POST', path, {})).status).toBe(403);
+		expect((await coordinator.send('POST', path, {})).status).toBe(403);
+		const second = await independent.send('POST', path, {});
 		expect(second.status).toBe(409);
 		expect(await second.json()).toMatchObject({ code: 'LIST_EXISTS' });
 	});

@@ -10,6 +10,7 @@ for (const role of [
 	'study coordinator',
 	'research nurse',
 	'site investigator',
+	'site pharmacist',
 	'monitor',
 	'auditor',
 	'trial statistician',

@@ -1,4 +1,11 @@
 import { afterAll, beforeAll, expect, test } from 'vitest';
+import {
+	planKits,
+	receiveKits,
+	sendKits,
+	setKitLevel
+} from '../../src/lib/domain/kit/kit.commands.server';
+import { keptList, reproduce } from '../../src/lib/domain/randomisation/reproduce.server';
 import { startVisit } from '../../src/lib/domain/visit/conduct.commands.server';
 import {
 	addScreening,
@@ -9,6 +16,7 @@ import { actorFor } from '../../src/lib/server/auth/actor';
 import { hashPassword } from '../../src/lib/server/auth/password';
 import { addDays } from '../../src/lib/time/dates';
 import { dateInZone } from '../../src/lib/time/zones';
+import { addBareSubjects, sceneOf, unmaskedList } from '../support/allocation-scene';
 import { freshDatabase, useEnvironment, type FreshDatabase } from '../support/database';
 import { asOwner, signIn, type Visitor } from '../support/people';
 import {
@@ -112,6 +120,70 @@ test('R-47: 200 randomisations at once through two web servers use the positions
 		`select count(*)::int as n from app.subject s join closed.list_position l on l.subject_id = s.id and l.kit_number = s.kit_number where s.study_id = '${scene.studyId}'`
 	);
 	expect(kits?.[0].n).toBe(200);
+});
+
+test('R-47: 200 by minimisation from the sites’ stock use the numbers 1 to 200 once each, and each gets the arm the method gives', async () => {
+	const minimised = await sceneOf(db, {
+		plannedSubjects: 200,
+		allocation: { method: 'minimisation' }
+	});
+	const hash = await hashPassword(password);
+	await asOwner(db, (client) =>
+		client.query('update app.person set password_hash = $1 where id = any ($2)', [
+			hash,
+			[minimised.coordinator.personId, minimised.other.personId]
+		])
+	);
+	await planKits(minimised.manager, minimised.studyId, { useDays: 10 });
+	await end();
+	await makeList(db, minimised, 0.8);
+	end = useAs(db.appUrl);
+	for (const [at, site] of minimised.sites.entries()) {
+		await setKitLevel(minimised.manager, minimised.studyId, {
+			siteId: site.id,
+			fullStock: 300,
+			resupplyAt: 200,
+			version: 0
+		});
+		const { id } = await sendKits(minimised.manager, minimised.studyId, {
+			siteId: site.id,
+			expiresOn: '2099-01-31'
+		});
+		await receiveKits(at === 0 ? minimised.coordinator : minimised.other, minimised.studyId, id);
+	}
+	const subjects = await addBareSubjects(db, minimised, 200, (n) => ({
+		site: n % 5 < 3 ? 0 : 1,
+		stratum: { 'kidney-function': n % 2 ? 'below-45' : 'from-45' }
+	}));
+	const at = [
+		await everywhere(minimised.coordinator.email),
+		await everywhere(minimised.other.email)
+	];
+	const begun = Date.now();
+	const answers = await Promise.all(
+		subjects.map(async ({ id, siteAt }, n) =>
+			answered(
+				await at[siteAt]!(n).send(
+					'POST',
+					`/api/studies/${minimised.studyId}/subjects/${id}/randomisation`
+				)
+			)
+		)
+	);
+	console.log(`200 at once by minimisation from stock: ${Date.now() - begun} ms`);
+	expect(answers.filter(({ status }) => status >= 300)).toEqual([]);
+	expect(oneEach(answers.map(({ body }) => body.kitNumber))).toBe(true);
+	const [used, kits] = await db.sql(
+		`select position from closed.chance where study_id = '${minimised.studyId}' and subject_id is not null order by 1`,
+		`select k.kit_number = s.kit_number and k.site_id = s.site_id and l.arm_key = p.arm_key as right from app.kit k
+			join app.subject s on s.id = k.subject_id join closed.list_position l on l.subject_id = s.id
+			join closed.list_position p on p.study_id = k.study_id and p.kit_number = k.kit_number where k.study_id = '${minimised.studyId}'`
+	);
+	expect(used?.map((row) => row.position)).toEqual(Array.from({ length: 200 }, (_, n) => n + 1));
+	expect(kits).toHaveLength(200);
+	expect(kits?.every((row) => row.right)).toBe(true);
+	const kept = keptList.parse(await unmaskedList(db, minimised));
+	expect(reproduce(kept)).toMatchObject({ hash: kept.hash, differences: [] });
 });
 
 async function dueSubjects(count: number): Promise<SceneSubject[]> {

@@ -17,7 +17,7 @@ import type { RunningServer } from './server';
 import { addSubject, around, visitScene, type Scene } from './visit-scene';
 
 const password = 'linen warp and weft';
-const siteRoles: Role[] = ['coordinator', 'nurse', 'investigator', 'monitor'];
+const siteRoles: Role[] = ['coordinator', 'nurse', 'pharmacist', 'investigator', 'monitor'];
 const studyRoles: Role[] = [
 	'data_manager',
 	'auditor',
@@ -115,6 +115,8 @@ async function furnish(
 		job: newId(),
 		report: newId(),
 		release: newId(),
+		delivery: newId(),
+		print: newId(),
 		person: site.nurse.id,
 		site: site.id,
 		token: 'a-token-that-opens-nothing-at-all-000000000'
@@ -134,6 +136,14 @@ async function furnish(
 		await insert(
 			`insert into app.job_run (id, queue, title, study_id, requested_by) values ($1, 'import', 'An import', $2, $3)`,
 			[made.job, scene.studyId, by]
+		);
+		await insert(
+			`insert into app.kit_delivery (id, study_id, site_id, number, kits, expires_on, sent_by) values ($1, $2, $3, 1, 4, '2031-01-01', $4)`,
+			[made.delivery, scene.studyId, site.id, by]
+		);
+		await insert(
+			`insert into app.code_print (id, study_id, site_id, asked_by) values ($1, $2, $3, $4)`,
+			[made.print, scene.studyId, site.id, by]
 		);
 	});
 	const manager = await actorFor(scene.manager.id, 'scene');

@@ -9,7 +9,14 @@ import {
 	recordConsent
 } from '../../src/lib/domain/subject/screening.commands.server';
 import { enrolSubject } from '../../src/lib/domain/subject/subject.commands.server';
-import { createStudy, publishProtocol } from '../../src/lib/domain/study/study.commands.server';
+import { findTemplate } from '../../src/lib/domain/study/templates.server';
+import { approveSites } from './approve';
+import {
+	createStudyFrom,
+	definitionFrom,
+	publishProtocol
+} from '../../src/lib/domain/study/study.commands.server';
+import type { StudyDefinition } from '../../src/lib/domain/study/definition';
 import type { CreateStudyInput } from '../../src/lib/domain/study/study.input';
 import { getProtocol } from '../../src/lib/domain/study/study.reads.server';
 import type { Actor } from '../../src/lib/server/actor';
@@ -54,7 +61,9 @@ let made = 0;
 
 export async function makeScene(
 	db: FreshDatabase,
-	change: Partial<CreateStudyInput> = {}
+	change: Partial<CreateStudyInput> = {},
+	/** Where a study is wanted that no template gives. */
+	define: (definition: StudyDefinition) => StudyDefinition = (definition) => definition
 ): Promise<Scene> {
 	const tag = `${++made}`;
 	const account = async (name: string) =>
@@ -65,7 +74,9 @@ export async function makeScene(
 	const managerId = await account('Mara');
 	await addRole(db, managerId, 'data_manager');
 	const manager = await actorFor(managerId, 'scene');
-	const { studyId } = await createStudy(manager, {
+	const template = findTemplate('two-arm-trial');
+	if (!template) throw new Error('The template two-arm-trial is not there');
+	const facts = {
 		template: 'two-arm-trial',
 		code: `WEFT-${tag}`,
 		name: 'Weft',
@@ -77,9 +88,16 @@ export async function makeScene(
 		],
 		consentApprovedOn: '2025-01-06',
 		...change
-	});
+	};
+	// Most scenes are about something else than the investigator's signature.
+	const { studyId } = await createStudyFrom(
+		manager,
+		define({ ...definitionFrom(template.definition, facts), eligibilitySigned: false }),
+		{ training: facts.training }
+	);
 	const draft = await getProtocol(manager, studyId);
 	await publishProtocol(manager, studyId, draft.version);
+	await approveSites(manager, studyId);
 	const [sites = [], consents = []] = (await db.sql(
 		`select id, code from app.site where study_id = '${studyId}' order by code`,
 		`select id from app.consent_version where study_id = '${studyId}'`
@@ -153,8 +171,16 @@ export async function enrolOne(
 }
 
 /** The independent statistician asks for the list, and the look worker makes it under its own role; then `useAs` again. */
-export async function makeList(db: FreshDatabase, scene: Scene): Promise<string> {
-	const { jobRunId } = await askForList(scene.independent, scene.studyId);
+export async function makeList(
+	db: FreshDatabase,
+	scene: Scene,
+	bestChance?: number
+): Promise<string> {
+	const { jobRunId } = await askForList(
+		scene.independent,
+		scene.studyId,
+		bestChance === undefined ? {} : { bestChance }
+	);
 	const end = useAs(db.unmaskedUrl);
 	try {
 		await makeAllocationList({

@@ -77,6 +77,8 @@ async function examples(
 				`select 'signed' as name, id, study_id from app.signature where site_id = ${saltreach} order by id limit 1`
 			)
 		),
+		print: as(await one(`select 'made' as name, id, study_id from app.code_print limit 1`)),
+		delivery: as(await one(`select 'sent' as name, id, study_id from app.kit_delivery limit 1`)),
 		batch: as(await one(`select 'imported' as name, id, study_id from app.import_batch limit 1`)),
 		look: as(
 			await one(

@@ -2,7 +2,7 @@ import { readFileSync } from 'node:fs';
 import { join } from 'node:path';
 import { root } from '../../scripts/lib/places.mjs';
 import type { Role } from '../../src/lib/domain/person/roles';
-import type { StudyDefinition } from '../../src/lib/domain/study/definition';
+import { openTo, type StudyDefinition } from '../../src/lib/domain/study/definition';
 import { newId } from '../../src/lib/id';
 import type { Actor } from '../../src/lib/server/actor';
 import { addDays, plainDateOf, type PlainDate } from '../../src/lib/time/dates';
@@ -41,7 +41,7 @@ function template(): StudyDefinition {
 	const file = join(root, 'templates/studies/two-arm-trial.json');
 	const { $schema, ...definition } = JSON.parse(readFileSync(file, 'utf8'));
 	void $schema;
-	return definition as StudyDefinition;
+	return { ...definition, eligibilitySigned: false } as StudyDefinition;
 }
 
 export async function addActor(
@@ -91,7 +91,8 @@ async function publish(database: FreshDatabase, definition: StudyDefinition): Pr
 				code: site.code,
 				name: site.name,
 				zone: site.zone,
-				opening: JSON.stringify(site.openingHours)
+				opening: JSON.stringify(site.openingHours),
+				approved_on: '2020-01-01'
 			});
 			for (const room of site.rooms)
 				await put('room', { id: newId(), study_id: studyId, site_id: siteId, name: room.name });
@@ -103,6 +104,7 @@ async function publish(database: FreshDatabase, definition: StudyDefinition): Pr
 				label: consent.version,
 				approved_on: '2025-01-05'
 			});
+		const open = openTo(definition);
 		const measures = new Map<string, string>();
 		for (const [at, measure] of definition.measures.entries()) {
 			const id = newId();
@@ -117,7 +119,8 @@ async function publish(database: FreshDatabase, definition: StudyDefinition): Pr
 				decimals: 'decimals' in measure ? measure.decimals : 0,
 				kind: measure.kind,
 				position: at + 1,
-				spec: JSON.stringify(measure)
+				spec: JSON.stringify(measure),
+				open_to: open.get(measure.key) ?? null
 			});
 		}
 		for (const [at, visit] of definition.visits.entries()) {
@@ -149,12 +152,11 @@ export async function visitScene(
 	{
 		code = 'AMR-01',
 		passwordHash,
-		edit = (definition) => definition
+		change = (definition) => definition
 	}: {
 		code?: string;
 		passwordHash?: string;
-		/** What the study says otherwise than the template. */
-		edit?: (definition: StudyDefinition) => StudyDefinition;
+		change?: (definition: StudyDefinition) => StudyDefinition;
 	} = {}
 ): Promise<Scene> {
 	const tag = code.toLowerCase();
@@ -166,7 +168,7 @@ export async function visitScene(
 		null,
 		passwordHash
 	);
-	const definition = edit({ ...template(), code, name: 'Aldermere' });
+	const definition: StudyDefinition = change({ ...template(), code, name: 'Aldermere' });
 	const studyId = await publish(database, definition);
 	const [siteRows, roomRows, versionRows, measureRows, visitRows] = await database.sql(
 		`select id, zone from app.site where study_id = '${studyId}' order by code`,

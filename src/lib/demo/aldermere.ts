@@ -1,4 +1,5 @@
 import { addDays, isoWeekday, type PlainDate } from '$lib/time/dates';
+import type { Measure, StudyDefinition } from '$lib/domain/study/definition';
 import { chance, type Chance } from './chance';
 
 /**
@@ -11,6 +12,36 @@ export const aldermereSites = [
 	{ name: 'Tarnbeck', zone: 'Europe/Helsinki', rooms: ['Room 1', 'Room 2'] },
 	{ name: 'Quillhaven', zone: 'Australia/Adelaide', rooms: ['Room 1', 'Room 2'] }
 ] as const;
+
+/** A laboratory value that the treatment is known to change: the arm could be read off it. */
+export const tellingMeasure: Measure = {
+	key: 'urine-glucose',
+	name: 'Urine glucose',
+	kind: 'number',
+	unit: 'mmol/L',
+	decimals: 1,
+	hardLow: 0,
+	hardHigh: 400,
+	limitsSource: 'Common practice.',
+	showLast: 'never',
+	notDoneReasons: ['No sample', 'Sample lost'],
+	couldRevealArm: { enteredBy: 'pharmacist' }
+};
+const tellingVisits = ['baseline', 'month-6', 'month-12'];
+
+/** The template's schedule with the value that only the pharmacists see. */
+export function withTellingMeasure(definition: StudyDefinition): StudyDefinition {
+	return {
+		...definition,
+		measures: [...definition.measures, tellingMeasure],
+		schedule: Object.fromEntries(
+			Object.entries(definition.schedule).map(([visit, keys]) => [
+				visit,
+				tellingVisits.includes(visit) ? [...keys, tellingMeasure.key] : keys
+			])
+		)
+	};
+}
 
 export type Fate = 'kept' | 'late' | 'early' | 'missed';
 

@@ -1,5 +1,7 @@
 import { recommend } from '$lib/domain/board/board.server';
 import { mapImport, startImport, uploadImport } from '$lib/domain/import/import.commands.server';
+import { approveSite } from '$lib/domain/site/site.commands.server';
+import { findSiteViews } from '$lib/domain/site/site.reads.server';
 import { downloadCopy } from '$lib/domain/report/report-file.server';
 import {
 	approveRelease,
@@ -29,7 +31,7 @@ import { closedHandlers, openHandlers } from '$lib/server/jobs/handlers';
 import type { QueueName, QueuePayloads } from '$lib/server/jobs/queue';
 import { clock } from '$lib/time/clock';
 import { addDays, plainDateOf, type PlainDate } from '$lib/time/dates';
-import { aldermere, aldermereSites } from './aldermere';
+import { aldermere, aldermereSites, withTellingMeasure } from './aldermere';
 import { larkfieldFile } from './larkfield';
 import { Trial, type Cast, type SiteCast } from './play-aldermere.server';
 import {
@@ -87,18 +89,19 @@ async function people(): Promise<Record<string, string>> {
 		['board', 'Henrike Olausson'],
 		['board2', 'Desmond Ake']
 	];
-	const sites: [string, string, string, string, string][] = [
-		['north', 'Greta Holm', 'Bram Oyelaran', 'Lena Fosse', 'Dr Ewan Marsh'],
-		['', 'Juno Pell', 'Maren Stadt', 'Tariq Aalto', 'Dr Celia Roon'],
-		['tarn', 'Kaija Virta', 'Anselm Dube', 'Rosa Kivi', 'Dr Petri Salo'],
-		['quill', 'Noah Wills', 'Priya Tane', 'Hugo Blythe', 'Dr May Corrin']
+	const sites: [string, string, string, string, string, string][] = [
+		['north', 'Greta Holm', 'Bram Oyelaran', 'Lena Fosse', 'Dr Ewan Marsh', 'Sunniva Abel'],
+		['', 'Juno Pell', 'Maren Stadt', 'Tariq Aalto', 'Dr Celia Roon', 'Jorin Vask'],
+		['tarn', 'Kaija Virta', 'Anselm Dube', 'Rosa Kivi', 'Dr Petri Salo', 'Edda Monroe'],
+		['quill', 'Noah Wills', 'Priya Tane', 'Hugo Blythe', 'Dr May Corrin', 'Otis Brann']
 	];
-	for (const [site, coordinator, nurse, second, investigator] of sites)
+	for (const [site, coordinator, nurse, second, investigator, pharmacist] of sites)
 		invited.push(
 			[site ? `coordinator-${site}` : 'coordinator', coordinator],
 			[site ? `nurse-${site}` : 'nurse', nurse],
 			[site ? `nurse-${site}-2` : 'nurse-2', second],
-			[site ? `investigator-${site}` : 'investigator', investigator]
+			[site ? `investigator-${site}` : 'investigator', investigator],
+			[site ? `pharmacist-${site}` : 'pharmacist', pharmacist]
 		);
 	for (const [name, full] of invited)
 		ids[name] = await join(administrator, { email: address(name), name: full });
@@ -165,6 +168,7 @@ async function castOf(ids: Record<string, string>, studyId: string, sides: Sides
 			id: site.id,
 			coordinator: await acting(id(ids, `coordinator${suffixes[n]}`)),
 			investigator: await acting(id(ids, `investigator${suffixes[n]}`)),
+			pharmacist: await acting(id(ids, `pharmacist${suffixes[n]}`)),
 			pairs: [
 				{ roomId: own[0]?.id ?? '', nurse: await acting(id(ids, `nurse${suffixes[n]}`)) },
 				{ roomId: own[1]?.id ?? '', nurse: await acting(id(ids, `nurse${suffixes[n]}-2`)) }
@@ -201,6 +205,7 @@ async function grantAll(
 		await grant(`nurse${suffix}`, 'nurse', siteId);
 		await grant(`nurse${suffix}-2`, 'nurse', siteId);
 		await grant(`investigator${suffix}`, 'investigator', siteId);
+		await grant(`pharmacist${suffix}`, 'pharmacist', siteId);
 	}
 	for (const siteId of [sites[1], sites[2]]) if (siteId) await grant('monitor', 'monitor', siteId);
 }
@@ -229,7 +234,7 @@ async function trial(
 	const manager = await acting(id(ids, 'data'));
 	const template = findTemplate('two-arm-trial');
 	if (!template) throw new Error('The template two-arm-trial is not there');
-	const definition = definitionFrom(template.definition, {
+	const definition = definitionFrom(withTellingMeasure(template.definition), {
 		template: 'two-arm-trial',
 		code: 'AMR-01',
 		name: 'Aldermere',
@@ -250,6 +255,8 @@ async function trial(
 	);
 	at(new Date(`${addDays(begun, -5)}T10:00:00Z`));
 	await publishProtocol(manager, studyId, 1);
+	for (const site of await findSiteViews(manager, studyId))
+		await approveSite(manager, studyId, site.id, { approvedOn: addDays(begun, -30) }, site.version);
 	await signPlan(await acting(id(ids, 'statistician')), studyId, plan);
 	const independent = await acting(id(ids, 'independent'));
 	const { jobRunId } = await askForList(independent, studyId);
@@ -426,6 +433,11 @@ function accounts(): DemoAccount[] {
 		),
 		account('research nurse', 'nurse', 'Aldermere at Saltreach: today’s visits and their forms'),
 		account('site investigator', 'investigator', 'Aldermere at Saltreach'),
+		account(
+			'site pharmacist',
+			'pharmacist',
+			'Aldermere at Saltreach: the value that could reveal the arm'
+		),
 		account('monitor', 'monitor', 'Aldermere at Saltreach and Tarnbeck, reading only'),
 		account('auditor', 'auditor', 'everything but allocation, reading only'),
 		account('trial statistician', 'statistician', 'data cuts and pooled looks'),

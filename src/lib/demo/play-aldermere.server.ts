@@ -24,6 +24,7 @@ import { instantFromLocal } from '$lib/time/zones';
 import {
 	aldermereFailures,
 	aldermereSites,
+	tellingMeasure,
 	trueEgfr,
 	type StorySubject,
 	type StoryVisit
@@ -35,6 +36,7 @@ export interface SiteCast {
 	id: string;
 	coordinator: Actor;
 	investigator: Actor;
+	pharmacist: Actor;
 	/** Nurse and room go together. */
 	pairs: { roomId: string; nurse: Actor }[];
 }
@@ -186,13 +188,15 @@ export class Trial {
 			this.cast.criteria.map((each) => [each.key, each.kind === 'inclusion' ? 'yes' : 'no'])
 		);
 
-	/** The investigator signs in, signs what waits, and signs out. */
-	private async signWaiting({ investigator }: SiteCast): Promise<void> {
+	/** The investigator signs in, signs what waits (or one checklist of it), and signs out. */
+	private async signWaiting({ investigator }: SiteCast, only?: string): Promise<void> {
 		const { studyId } = this.cast;
 		const { personId, name, email, requestId } = investigator;
 		const sessionId = await startSession({ id: personId, name, email }, 'password', '', requestId);
 		const actor = { ...investigator, sessionId };
-		const { items } = await findWaiting(actor, studyId);
+		const items = (await findWaiting(actor, studyId)).items.filter(
+			(item) => only === undefined || item.recordId === only
+		);
 		await sign(actor, studyId, {
 			items: items.map(({ record, recordId, meaning, sha256 }) => ({
 				record,
@@ -237,6 +241,7 @@ export class Trial {
 			{ answers: this.metAnswers() },
 			screening.version
 		);
+		await this.signWaiting(this.site(subject.site), screening.id);
 		const entered = await enrolSubject(
 			coordinator,
 			studyId,
@@ -438,6 +443,28 @@ export class Trial {
 		}
 		at(minutesLater(starts, 6 + 4 * visit.measures.length));
 		await finishVisit(nurse, studyId, visit.id, begun.version);
+		const apart = visit.measures.find((each) => each.key === tellingMeasure.key);
+		if (apart) this.sendToPharmacist(subject, slows, visit.id, apart.id, begun.happenedOn);
+	}
+
+	/** The laboratory answers the pharmacist two days later; nobody else at the site sees the value. */
+	private sendToPharmacist(
+		subject: StorySubject,
+		slows: boolean,
+		visitId: string,
+		measureId: string,
+		on: PlainDate
+	): void {
+		const { pharmacist } = this.site(subject.site);
+		const level = 0.3 + (subject.weight % 7) / 10 + (slows ? 42 + (subject.weight % 11) : 0);
+		this.diary.add(subject.site, this.local(subject.site, addDays(on, 2), '16:40'), async () => {
+			await recordMeasurement(pharmacist, this.cast.studyId, visitId, measureId, null, {
+				entry: { kind: 'value', value: level.toFixed(1) },
+				softAnswer: '',
+				comment: '',
+				reason: ''
+			});
+		});
 	}
 
 	private chase(subject: StorySubject, visit: PlannedRow, gone: PlainDate | null): void {

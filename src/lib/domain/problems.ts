@@ -55,6 +55,16 @@ const sentences = {
 	FORMULA_CYCLE: (f) => `“${f.measure}” is derived, by way of others, from itself.`,
 	FORMULA_INPUT_NOT_AT_VISIT: (f) =>
 		`“${f.measure}” is derived at “${f.visit}”, where “${f.input}” is not measured.`,
+	REVEALING_MIXED: (f) =>
+		`“${f.measure}” could reveal the arm, and “${f.input}”, from which it is derived, is entered by somebody else. Let one role enter both.`,
+	REVEALING_PRIMARY: (f) =>
+		`The primary measure “${f.measure}” is marked as revealing the arm: no masked look could be made.`,
+	REVEALING_COMPARED: (f) =>
+		`“${f.lower}” is compared with “${f.higher}”, but not everybody who enters one may know the other.`,
+	REVEALING_UNMASKED: (f) =>
+		`“${f.measure}” is kept from masked roles although nobody is masked in this study.`,
+	MEASURE_HIDDEN: (f) =>
+		`“${f.measure}” could reveal the arm: its values are entered by the role it names and not imported.`,
 	CHARACTERISTIC_UNKNOWN: (f) => `“${f.characteristic}” is not a characteristic of this study.`,
 	OPENING_HOURS_INSIDE_OUT: (f) => `Opens ${f.opens}, closes ${f.closes}: the end is not later.`,
 	OPENING_HOURS_OVERLAP: (f) => `Opening hours overlap on day ${f.weekday} of the week.`,
@@ -90,8 +100,6 @@ const sentences = {
 		`Assent is asked from ${f.assent} years, which is not before majority at ${f.majority}.`,
 	MINORS_WITHOUT_BIRTH_DATE: () =>
 		'Minors take part, but no date of birth is asked: nobody will know when they come of age.',
-	REVEAL_WITHOUT_MASK: (f) =>
-		`“${f.measure}” is said to reveal the arm, but nothing is masked in this study.`,
 	BASELINE_OF_CHANGE: (f) =>
 		`“${f.measure}” is a change from “${f.visit}”, where “${f.input}” is not measured.`,
 	BASELINE_OF_CHANGE_LATER: (f) =>

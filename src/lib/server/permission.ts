@@ -15,6 +15,7 @@ const table = {
 		'data_manager',
 		'coordinator',
 		'nurse',
+		'pharmacist',
 		'investigator',
 		'monitor',
 		'auditor',
@@ -25,6 +26,7 @@ const table = {
 		'data_manager',
 		'coordinator',
 		'nurse',
+		'pharmacist',
 		'investigator',
 		'monitor',
 		'auditor',
@@ -34,9 +36,19 @@ const table = {
 	],
 	'study.edit': ['data_manager'],
 	'study.publish': ['data_manager'],
+	'site.approve': ['data_manager'],
+	'site.close': ['data_manager', 'coordinator'],
 	'import.run': ['data_manager'],
 
-	'subject.read': ['data_manager', 'coordinator', 'nurse', 'investigator', 'monitor', 'auditor'],
+	'subject.read': [
+		'data_manager',
+		'coordinator',
+		'nurse',
+		'pharmacist',
+		'investigator',
+		'monitor',
+		'auditor'
+	],
 	'contact.read': ['coordinator', 'investigator'],
 	'contact.edit': ['coordinator'],
 	'screening.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
@@ -45,6 +57,25 @@ const table = {
 	'subject.enrol': ['coordinator', 'investigator'],
 	'subject.randomise': ['coordinator', 'investigator'],
 	'subject.exit': ['coordinator', 'investigator'],
+	'subject.correct': ['coordinator', 'investigator'],
+	/** To be shown one subject's arm in an emergency; to write down that an arm became known; to read that it did. */
+	'subject.unmask': ['investigator'],
+	'unmasking.record': ['coordinator', 'investigator'],
+	'unmasking.read': [
+		'data_manager',
+		'investigator',
+		'monitor',
+		'auditor',
+		'independent_statistician'
+	],
+	/** Sheets with arms on them: for who is not masked. */
+	'code.print': ['pharmacist', 'independent_statistician'],
+
+	'kit.read': ['data_manager', 'coordinator', 'pharmacist', 'investigator', 'monitor', 'auditor'],
+	'kit.plan': ['data_manager'],
+	'kit.keep': ['coordinator', 'pharmacist'],
+	/** To plan, send, receive or write off: each act asks the door for its own right again. */
+	'kit.act': ['data_manager', 'coordinator', 'pharmacist'],
 
 	/** To read what was signed, with the record it is about. */
 	'signature.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
@@ -55,7 +86,9 @@ const table = {
 	'visit.book': ['coordinator'],
 	'visit.chase': ['coordinator'],
 	'visit.measure': ['nurse', 'investigator'],
-	'feed.own': ['coordinator', 'nurse', 'investigator'],
+	/** To keep a value: an open one asks for the right to measure, another one for the role its measure names. */
+	'visit.record': ['nurse', 'investigator', 'pharmacist'],
+	'feed.own': ['coordinator', 'nurse', 'pharmacist', 'investigator'],
 
 	'cut.make': ['data_manager', 'statistician'],
 	'cut.read': ['data_manager', 'statistician', 'independent_statistician', 'auditor'],

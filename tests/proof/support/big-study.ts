@@ -4,19 +4,23 @@ import type { Scene } from '../../support/visit-scene';
 export const subjectCount = 2000;
 
 /**
- * Fills a study with 2,000 subjects, half at either site, who entered over a year and a half: visits whose window has
+ * Fills a study with 2,000 subjects (or as many as asked), half at either site, who entered over a year and a half: visits whose window has
  * passed are completed (a few are not), with every value that their visit plans.
  */
-export async function bigStudy(client: pg.Client, scene: Scene): Promise<void> {
+export async function bigStudy(
+	client: pg.Client,
+	scene: Scene,
+	subjects = subjectCount
+): Promise<void> {
 	const days = [0, 14, 30, 91, 183, 274, 365, 548, 730];
 	const around = [7, 3, 7, 14, 14, 14, 21, 28, 28];
 	for (const [at, site] of scene.sites.entries())
 		await client.query(
 			`insert into app.subject (id, study_id, site_id, protocol_version_id, number, enrolled_on, randomised_at, randomised_on, characteristics)
-			select gen_random_uuid(), $1, $2, $3, $4 || '-' || lpad(n::text, 4, '0') || '-7', day, day + time '09:00', day,
+			select gen_random_uuid(), $1, $2, $3, $4 || '-' || lpad(n::text, greatest(4, length(n::text)), '0') || '-7', day, day + time '09:00', day,
 				jsonb_build_object('sex', case n % 2 when 0 then 'female' else 'male' end, 'birth-date', '19' || (40 + n % 50) || '-03-02')
 			from (select n, current_date - 1 - (n * 540 / ($5::int / 2)) as day from generate_series(1, $5::int / 2) n) s`,
-			[scene.studyId, site.id, scene.protocolVersionId, `0${at + 1}`, subjectCount]
+			[scene.studyId, site.id, scene.protocolVersionId, `0${at + 1}`, subjects]
 		);
 	await client.query(
 		`insert into app.visit (id, study_id, site_id, subject_id, planned_visit_id, name, position, earliest, target, latest, status, happened_on)

@@ -10,6 +10,7 @@ import { makeFeed } from '../../../src/lib/domain/feed/feed.commands.server';
 import { requestLook } from '../../../src/lib/domain/look/look.commands.server';
 import type { LookSpec } from '../../../src/lib/domain/look/look.input';
 import { signPlan } from '../../../src/lib/domain/look/plan.server';
+import { approveSites } from '../../support/approve';
 import { recordMeasurement } from '../../../src/lib/domain/measurement/measurement.commands.server';
 import { recordMeasurementInput } from '../../../src/lib/domain/measurement/measurement.input';
 import type { Role } from '../../../src/lib/domain/person/roles';
@@ -48,6 +49,20 @@ import {
 } from '../../../src/lib/domain/visit/booking.commands.server';
 import { declareMissed, logContact } from '../../../src/lib/domain/visit/chase.commands.server';
 import { finishVisit, startVisit } from '../../../src/lib/domain/visit/conduct.commands.server';
+import {
+	loseKit,
+	planKits,
+	receiveKits,
+	sendKits,
+	setKitLevel
+} from '../../../src/lib/domain/kit/kit.commands.server';
+import { getKitStock } from '../../../src/lib/domain/kit/kit.reads.server';
+import { correctStratum } from '../../../src/lib/domain/randomisation/stratum.commands.server';
+import { askForCodes, sealedCodesJob } from '../../../src/lib/domain/unmasking/codes.server';
+import {
+	recordUnmasking,
+	unmaskSubject
+} from '../../../src/lib/domain/unmasking/unmasking.commands.server';
 import { ids, newId, tokens } from '../../../src/lib/id';
 import type { Actor } from '../../../src/lib/server/actor';
 import { actorFor } from '../../../src/lib/server/auth/actor';
@@ -76,6 +91,8 @@ export interface TwinPerson {
 
 export interface Twin {
 	studyId: string;
+	/** A study that minimises and keeps a stock, with subjects randomised from it. */
+	minimisedStudyId: string;
 	people: Record<string, TwinPerson>;
 	feedTokens: string[];
 	openReportId: string;
@@ -116,6 +133,8 @@ function definitionFrom(begin: PlainDate): StudyDefinition {
 		code: 'TWIN-1',
 		name: 'Twin threads',
 		plannedSubjects: 40,
+		// Somebody signs one checklist below; who is enrolled before that need not wait for it.
+		eligibilitySigned: false,
 		consentVersions: [{ ...definition.consentVersions[0], from: addDays(begin, -60) }]
 	} as StudyDefinition;
 }
@@ -237,6 +256,7 @@ async function play(
 	const definition = definitionFrom(begin);
 	const { studyId } = await createStudyFrom(manager, definition, { training: false });
 	await publishProtocol(manager, studyId, 1);
+	await approveSites(manager, studyId);
 	const [sites = [], rooms = [], consents = [], measures = []] = await db.sql(
 		`select id from app.site where study_id = '${studyId}' order by code`,
 		`select r.id from app.room r join app.site s on s.id = r.site_id where r.study_id = '${studyId}' order by s.code, r.name`,
@@ -255,12 +275,18 @@ async function play(
 		})
 	);
 	// The one thing in which the twins differ. The trail is left out of it, as it would be if the list had come so.
-	if (swapped)
+	const swapArms = async (study: string) => {
+		if (!swapped) return;
 		await db.sql(
 			`set session_replication_role = replica`,
-			`update closed.list_position set arm_key = case arm_key when 'a' then 'b' else 'a' end`
+			`update closed.list_position set arm_key = case arm_key when 'a' then 'b' else 'a' end where study_id = '${study}'`,
+			`update closed.minimisation set arms = jsonb_build_array(arms -> 1, arms -> 0) where study_id = '${study}'`
 		);
+	};
+	await swapArms(studyId);
 	await signPlan(as('statistician'), studyId, { ...model, group: 'arms' });
+	await stockSites(as, studyId, sites);
+	const second = await playMinimised(db, { person, as, swapArms, begin });
 
 	// Ten people enter, eight at the first site and two at the second; one more was considered and one is in hand.
 	const answers = Object.fromEntries(
@@ -342,6 +368,8 @@ async function play(
 		email: investigator.email,
 		password
 	});
+
+	await playUnmasking(db, { as, signer, studyId, sites, subjects, password });
 
 	const visitOf = async (subjectId: string, key: string) =>
 		(
@@ -504,9 +532,173 @@ async function play(
 	});
 	return {
 		studyId,
+		minimisedStudyId: second,
 		people,
 		feedTokens,
 		openReportId: report.id,
 		byArmLookId: byArm.id
 	};
+}
+
+type Acting = (name: string) => Actor;
+
+/** Kits for both sites: full, received, one of them damaged. */
+async function stockSites(as: Acting, studyId: string, sites: { id: string }[]): Promise<void> {
+	const manager = as('data manager');
+	await planKits(manager, studyId, { useDays: 20 });
+	for (const [at, site] of sites.entries()) {
+		await setKitLevel(manager, studyId, {
+			siteId: site.id,
+			fullStock: 20,
+			resupplyAt: 14,
+			version: 0
+		});
+		const { id } = await sendKits(manager, studyId, { siteId: site.id, expiresOn: '2099-01-31' });
+		const keeper = as(at === 0 ? 'coordinator' : 'coordinator elsewhere');
+		await receiveKits(keeper, studyId, id);
+		if (at > 0) continue;
+		const stock = await getKitStock(keeper, studyId);
+		await loseKit(keeper, studyId, {
+			kitNumber: stock.deliveries[0]?.numbers[3] ?? '',
+			status: 'damaged',
+			note: 'Fell from the shelf.'
+		});
+	}
+}
+
+/** A second study of the same people, by minimisation, from stock, until the site may give no more. */
+async function playMinimised(
+	db: FreshDatabase,
+	{
+		person,
+		as,
+		swapArms,
+		begin
+	}: {
+		person: (name: string, role: Role, studyId: string, siteId?: string | null) => Promise<void>;
+		as: Acting;
+		swapArms: (studyId: string) => Promise<void>;
+		begin: PlainDate;
+	}
+): Promise<string> {
+	const manager = as('data manager');
+	const definition: StudyDefinition = {
+		...definitionFrom(begin),
+		code: 'TWIN-2',
+		name: 'Twin threads, minimised',
+		allocation: { method: 'minimisation' }
+	};
+	const { studyId } = await createStudyFrom(manager, definition, { training: false });
+	await publishProtocol(manager, studyId, 1);
+	await approveSites(manager, studyId);
+	const [sites = [], consents = []] = await db.sql(
+		`select id from app.site where study_id = '${studyId}' order by code`,
+		`select id from app.consent_version where study_id = '${studyId}'`
+	);
+	await person('second coordinator', 'coordinator', studyId, sites[0].id as string);
+	await person('second independent statistician', 'independent_statistician', studyId);
+	const independent = as('second independent statistician');
+	const { jobRunId } = await askForList(independent, studyId, { bestChance: 0.75 });
+	await unmasked(db, () =>
+		makeAllocationList({
+			payload: { studyId, askedBy: independent.personId, jobRunId },
+			lastTry: true
+		})
+	);
+	await swapArms(studyId);
+	await planKits(manager, studyId, { useDays: 20 });
+	await setKitLevel(manager, studyId, {
+		siteId: sites[0].id,
+		fullStock: 8,
+		resupplyAt: 6,
+		version: 0
+	});
+	const { id } = await sendKits(manager, studyId, { siteId: sites[0].id, expiresOn: '2099-01-31' });
+	const by = as('second coordinator');
+	await receiveKits(by, studyId, id);
+	const answers = Object.fromEntries(
+		definition.eligibility.map((each) => [each.key, each.kind === 'inclusion' ? 'yes' : 'no'])
+	) as Record<string, 'yes' | 'no'>;
+	// Four may be given of the eight; the fifth is refused, whichever arm it would have been.
+	for (let n = 0; n < 5; n++) {
+		const screening = await addScreening(by, studyId, { siteId: sites[0].id, screenedOn: begin });
+		await recordConsent(by, studyId, screening.id, {
+			consentVersionId: consents[0].id,
+			signedOn: begin,
+			signedTime: '04:30',
+			explainedBy: by.personId,
+			signedBy: 'participant',
+			copyGiven: true
+		});
+		const { version } = await answerEligibility(
+			by,
+			studyId,
+			screening.id,
+			{ answers },
+			screening.version
+		);
+		const subject = await enrolSubject(
+			by,
+			studyId,
+			screening.id,
+			{
+				enrolledOn: begin,
+				stratum: { 'kidney-function': n % 2 ? 'below-45' : 'from-45' },
+				characteristics: { sex: n % 2 ? 'female' : 'male', 'birth-date': `19${60 + n}-04-30` },
+				contact: null
+			},
+			version
+		);
+		const given = await randomiseSubject(by, studyId, subject.id).catch(
+			(refusal: { code: string }) => refusal.code
+		);
+		if ((typeof given === 'string') !== (n === 4)) throw new Error(`Not as planned: ${n} ${given}`);
+	}
+	return studyId;
+}
+
+/** One subject is unmasked, sheets of codes are made for the site, and an accident is written down. */
+async function playUnmasking(
+	db: FreshDatabase,
+	{
+		as,
+		signer,
+		studyId,
+		sites,
+		subjects,
+		password
+	}: {
+		as: Acting;
+		signer: Actor;
+		studyId: string;
+		sites: { id: string }[];
+		subjects: string[];
+		password: string;
+	}
+): Promise<void> {
+	await unmaskSubject(signer, studyId, subjects[0] as string, {
+		reason: 'Unconscious, cause unknown.',
+		email: signer.email,
+		password
+	});
+	await recordUnmasking(as('coordinator'), studyId, subjects[2] as string, {
+		kind: 'accidental',
+		code: '',
+		knownTo: 'The ward',
+		happenedOn: plainDateOf(clock.now().toISOString().slice(0, 10)),
+		happenedTime: '00:10',
+		reason: 'A delivery note lay open.',
+		impact: ''
+	});
+	await correctStratum(
+		as('coordinator'),
+		studyId,
+		subjects[4] as string,
+		{ stratum: { 'kidney-function': 'below-45' }, reason: 'Read from another report.' },
+		(await db.sql(`select version from app.subject where id = '${subjects[4]}'`))[0]?.[0].version
+	);
+	const print = await askForCodes(as('independent statistician'), studyId, sites[0]!.id);
+	await unmasked(db, () =>
+		sealedCodesJob({ payload: { printId: print.id, jobRunId: print.jobRunId }, lastTry: true })
+	);
 }

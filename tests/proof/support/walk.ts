@@ -50,13 +50,20 @@ export async function fillings(
 		report: await idsOf('select id from app.report order by id'),
 		release: await idsOf('select id from app.release order by id'),
 		batch: await idsOf('select id from app.import_batch order by id'),
-		signature: await idsOf('select id from app.signature order by id')
+		signature: await idsOf('select id from app.signature order by id'),
+		delivery: await idsOf('select id from app.kit_delivery order by id'),
+		print: await idsOf('select id from app.code_print order by id')
 	};
 	return (route, param) => {
 		if (param === 'token')
 			return route.id.startsWith('/calendar/')
 				? twin.feedTokens
 				: ['no-such-token-0123456789abcdef'];
+		// The second study's own pages and subjects; what hangs deeper is the same in kind.
+		if (param === 'study')
+			return route.params.every((each) => each === 'study' || each === 'subject')
+				? [twin.studyId, twin.minimisedStudyId]
+				: [twin.studyId];
 		// The study's measures at one visit are enough: the form of the others shows them too.
 		return param === 'measure' ? (found.measure ?? []).slice(0, 6) : (found[param] ?? []);
 	};

@@ -53,6 +53,18 @@ export const recordWords = {
 	allocation_record: 'allocation list',
 	allocation_list: 'allocation list (closed)',
 	list_position: 'place in the allocation list',
+	chance: 'random number of an allocation',
+	minimisation: 'minimisation (closed)',
+	minimisation_choice: 'choice for minimisation (closed)',
+	kit_plan: 'kits of the study',
+	kit_level: 'kit stock of a site',
+	kit_delivery: 'delivery of kits',
+	kit: 'kit',
+	unmasking: 'unmasking',
+	shown_arm: 'arm shown at an unmasking (closed)',
+	code_print: 'sheets of sealed codes',
+	code_sheet: 'sheets of sealed codes (closed)',
+	sealed_code: 'sealed code',
 	job_run: 'job',
 	audit: 'audit trail'
 } as const;
@@ -113,6 +125,7 @@ const technical = new Set([
 	'message_id',
 	'session_id',
 	'form_version',
+	'open_to',
 	'digest'
 ]);
 

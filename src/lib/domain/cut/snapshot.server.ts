@@ -1,4 +1,4 @@
-import { studyDefinition, type StudyDefinition } from '../study/definition';
+import { openTo, studyDefinition, type StudyDefinition } from '../study/definition';
 import type { Reader } from '$lib/server/change';
 import { isUnit } from '../../units/units';
 import { rowsAsOf } from './as-of.server';
@@ -15,6 +15,7 @@ interface MeasurementRow {
 	taken_at: string | null;
 	entered_at: string;
 	source: CutValue['source'];
+	open_to: string | null;
 }
 interface VisitRow {
 	id: string;
@@ -106,9 +107,11 @@ async function definitions(reader: Reader, studyId: string, cutOff: Date) {
 		definition: studyDefinition.parse(definition)
 	}));
 	const measures = new Map<string, CutMeasure>();
+	const hidden = new Set(parsed.flatMap(({ definition }) => [...openTo(definition).keys()]));
 	for (const { definition } of parsed)
 		for (const measure of definition.measures)
-			if (!measures.has(measure.key)) measures.set(measure.key, measureOf(measure));
+			if (!hidden.has(measure.key) && !measures.has(measure.key))
+				measures.set(measure.key, measureOf(measure));
 	return { newest: parsed[0], measures };
 }
 
@@ -121,7 +124,10 @@ export async function snapshot(
 	const { newest, measures } = await definitions(reader, studyId, cutOff);
 	if (!newest) return null;
 	// What belongs to something is read before that something: a row that appears meanwhile has its owner there.
-	const values = await rowsAsOf<MeasurementRow>(reader, 'measurement', studyId, cutOff);
+	// A cut is read by the masked: what could reveal the arm is no part of it, whoever makes it.
+	const values = (await rowsAsOf<MeasurementRow>(reader, 'measurement', studyId, cutOff)).filter(
+		(row) => row.open_to === null
+	);
 	const exits = await rowsAsOf<ExitRow>(reader, 'study_exit', studyId, cutOff);
 	const visits = await rowsAsOf<VisitRow>(reader, 'visit', studyId, cutOff);
 	const subjects = await rowsAsOf<SubjectRow>(reader, 'subject', studyId, cutOff);

@@ -1,6 +1,6 @@
 import type { PlainDate } from '../../time/dates';
 import { problem } from '../problems';
-import type { StudyDefinition } from '../study/definition';
+import { openTo, type StudyDefinition } from '../study/definition';
 import { mostSubjectsPerSite } from '../subject/number';
 import type { ImportRequest } from './import.input';
 import { definitionFromFile, occasionsOf, tellApart, traitsOf } from './protocol';
@@ -119,12 +119,15 @@ class Planner {
 	}
 
 	private matchMeasures(definition: StudyDefinition): string[] {
+		const hidden = openTo(definition);
 		return this.request.measures.map((wanted) => {
 			const found = definition.measures.find(
 				(measure) => same(measure.name, wanted.name) || measure.key === wanted.name
 			);
 			if (!found || found.kind !== 'number')
 				this.add(null, wanted.column, problem('MEASURE_UNKNOWN', { measure: wanted.name }));
+			else if (hidden.has(found.key))
+				this.add(null, wanted.column, problem('MEASURE_HIDDEN', { measure: found.name }));
 			else if (found.unit !== wanted.unit || found.decimals < wanted.decimals)
 				this.add(
 					null,

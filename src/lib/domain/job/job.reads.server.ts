@@ -12,7 +12,8 @@ const closedQueues: readonly string[] = [
 	'allocation-list',
 	'by-arm-look',
 	'closed-report',
-	'closed-release'
+	'closed-release',
+	'sealed-codes'
 ];
 
 const jobs = (reader: Reader) =>

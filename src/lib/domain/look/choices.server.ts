@@ -2,7 +2,7 @@ import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { read, type Reader } from '$lib/server/change';
 import { isUnit } from '../../units/units';
-import { studyDefinition } from '../study/definition';
+import { openTo, studyDefinition } from '../study/definition';
 import type { CutContent } from '../cut/content';
 import type { LookTimeUnit } from './look.input';
 
@@ -39,7 +39,9 @@ export async function lookChoices(reader: Reader, studyId: string): Promise<Look
 		found.timeUnit,
 		...(['day', 'week', 'month', 'year'] as const).filter((unit) => unit !== found.timeUnit)
 	];
+	const hidden = openTo(found);
 	const measures = found.measures
+		.filter(({ key }) => !hidden.has(key))
 		.filter(({ kind }) => kind === 'number' || kind === 'repeated' || kind === 'derived')
 		.map((measure) => ({
 			key: measure.key,

@@ -21,6 +21,7 @@ import type { RecordMeasurementInput } from './measurement.input';
 import {
 	earlierValues,
 	lastAndBaseline,
+	mayEnter,
 	plannedMeasures,
 	valuesAtVisit,
 	type MeasurementRow,
@@ -39,10 +40,10 @@ export async function recordMeasurement(
 	version: number | null,
 	input: RecordMeasurementInput
 ): Promise<{ id: string; version: number }> {
-	const scope = await scopeOfVisit(actor, 'visit.measure', studyId, visitId);
+	const scope = await scopeOfVisit(actor, 'visit.record', studyId, visitId);
 	return change(
 		actor,
-		'visit.measure',
+		'visit.record',
 		scope,
 		async (writer) => {
 			const visit = await holdVisit(writer, studyId, visitId);
@@ -54,6 +55,7 @@ export async function recordMeasurement(
 			const planned = await plannedMeasures(writer, visit);
 			const asked = planned.find((each) => each.measureId === measureId);
 			if (!asked) throw new Refusal('NOT_FOUND');
+			if (!mayEnter(actor, scope, asked)) throw new Refusal('NOT_PERMITTED');
 			const definition = await definitionOf(writer, visit.protocolVersionId);
 			const rows = await valuesAtVisit(writer, visitId);
 			const before = rows.get(measureId);
@@ -74,7 +76,9 @@ export async function recordMeasurement(
 				throw new Refusal('VERSION_NEEDED');
 			}
 			if (!before && version !== null) throw new Refusal('STALE');
-			if (visit.status === 'completed' && input.reason === '')
+			// What only one role enters need not have been there when the others ended the visit.
+			const late = asked.openTo !== null && !before;
+			if (visit.status === 'completed' && !late && input.reason === '')
 				throw new Refusal('REASON_NEEDED', {}, { reason: new Refusal('REASON_NEEDED').message });
 			const kept = before
 				? await alter(writer, before, version as number, columns)

@@ -15,6 +15,7 @@ import {
 import { characteristicsOf } from './derived.server';
 import {
 	earlierValues,
+	mayEnter,
 	plannedMeasures,
 	valuesAtVisit,
 	type EarlierValue,
@@ -109,7 +110,8 @@ export async function getVisitForm(
 		const planned = await plannedMeasures(reader, visit);
 		const values = await valuesAtVisit(reader, visitId);
 		const mayMeasure = may(actor.grants, 'visit.measure', scope);
-		const entering = mayMeasure && (visit.status === 'under way' || visit.status === 'completed');
+		const mayRecord = planned.some((each) => mayEnter(actor, scope, each));
+		const entering = mayRecord && (visit.status === 'under way' || visit.status === 'completed');
 		const names = await namesOf(
 			reader,
 			[...values.values()].map((each) => each.taken_by)
@@ -148,13 +150,17 @@ export async function getVisitForm(
 			},
 			may: {
 				measure: mayMeasure,
+				record: mayRecord,
 				book: may(actor.grants, 'visit.book', scope),
 				chase: may(actor.grants, 'visit.chase', scope)
 			},
-			measures: planned.map(({ measureId, measure }) => {
+			measures: planned.map((each) => {
+				const { measureId, measure, openTo } = each;
 				const row = values.get(measureId);
 				return {
 					measureId,
+					mayEnter: mayEnter(actor, scope, each),
+					openTo,
 					measure: withoutSoftLimits(measure),
 					kept: row ? keptOf(row, names, visit.site.zone) : null,
 					earlier: earlierFor(measure, row !== undefined, earlier)

@@ -1,6 +1,6 @@
 import type { PlainDate } from '$lib/time/dates';
 import type { VisitWindow } from '../schedule/window';
-import type { Measure, StudyDefinition } from '../study/definition';
+import type { Measure, RevealingRole, StudyDefinition } from '../study/definition';
 import type { VisitStatus } from '../visit/status';
 import type { DeriveContext } from './derive';
 
@@ -30,6 +30,10 @@ export interface KeptValue {
 export interface MeasureView {
 	measureId: string;
 	measure: Measure;
+	/** Whether who reads this enters it as well. */
+	mayEnter: boolean;
+	/** The one role, besides, that sees it. */
+	openTo: RevealingRole | null;
 	kept: KeptValue | null;
 	/** Oldest first; empty where the measure does not let them be seen now. */
 	earlier: { visit: string; value: number }[];
@@ -54,7 +58,13 @@ export interface VisitForm {
 		/** The subject's visits have ended. */
 		left: boolean;
 	};
-	may: { measure: boolean; book: boolean; chase: boolean };
+	may: {
+		measure: boolean;
+		/** Enters something at this visit, though not what is measured by the others. */
+		record: boolean;
+		book: boolean;
+		chase: boolean;
+	};
 	measures: MeasureView[];
 	others: number;
 	comparisons: StudyDefinition['comparisons'];

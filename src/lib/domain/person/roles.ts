@@ -4,6 +4,7 @@ export const roles = [
 	'data_manager',
 	'coordinator',
 	'nurse',
+	'pharmacist',
 	'investigator',
 	'monitor',
 	'auditor',
@@ -19,6 +20,7 @@ export const roleNames: Record<Role, string> = {
 	data_manager: 'data manager',
 	coordinator: 'study coordinator',
 	nurse: 'research nurse',
+	pharmacist: 'site pharmacist (unmasked)',
 	investigator: 'site investigator',
 	monitor: 'monitor',
 	auditor: 'auditor',
@@ -28,7 +30,13 @@ export const roleNames: Record<Role, string> = {
 };
 
 /** Roles held at one site (or all sites of a study), for a whole study, or for the whole installation. */
-export const siteRoles: readonly Role[] = ['coordinator', 'nurse', 'investigator', 'monitor'];
+export const siteRoles: readonly Role[] = [
+	'coordinator',
+	'nurse',
+	'pharmacist',
+	'investigator',
+	'monitor'
+];
 export const installationRoles: readonly Role[] = ['administrator', 'data_manager'];
 /** Roles that open closed material: a grant is in force only after a second person has confirmed it. */
 export const closedRoles: readonly Role[] = ['independent_statistician', 'board_member'];
@@ -39,7 +47,7 @@ const stake: readonly Role[] = [
 	'independent_statistician',
 	'board_member'
 ];
-const team: readonly Role[] = [
+const masked: readonly Role[] = [
 	'data_manager',
 	'coordinator',
 	'nurse',
@@ -47,6 +55,8 @@ const team: readonly Role[] = [
 	'monitor',
 	'statistician'
 ];
+
+const team: readonly Role[] = [...masked, 'pharmacist'];
 
 /** Why two roles may not meet in one person (in the same study), or null when they may. The database refuses them too. */
 export function whyApart(a: Role, b: Role): string | null {
@@ -56,6 +66,8 @@ export function whyApart(a: Role, b: Role): string | null {
 		return 'An administrator may have no stake in the results.';
 	if (between(closedRoles, team))
 		return 'Whoever may see closed material holds no role in the study team.';
+	if (between(['pharmacist'], masked))
+		return 'A pharmacist knows what the masked must not know, and holds no masked role.';
 	if (a !== b && closedRoles.includes(a) && closedRoles.includes(b))
 		return 'The board decides on what the independent statistician reports: they are two people.';
 	return null;

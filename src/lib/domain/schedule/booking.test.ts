@@ -30,7 +30,7 @@ describe('opening hours', () => {
 	});
 
 	it('closures win', () => {
-		const closures = [{ from: d('2026-06-08'), to: d('2026-06-09') }];
+		const closures = [{ from: d('2026-06-08'), to: d('2026-06-09'), reason: 'Fair' }];
 		expect(
 			checkOpening(at('2026-06-09T09:00:00+02:00', 30), weekdays, 'Europe/Berlin', closures)?.code
 		).toBe('SITE_CLOSED');

@@ -6,7 +6,8 @@ import type { OpeningHours } from '../study/definition';
 /** From start (included) to end (not included). */
 export type TimeSpan = { start: Date; end: Date };
 
-export type Closure = { from: PlainDate; to: PlainDate };
+/** Days on which a site sees nobody, first and last included. */
+export type Closure = { from: PlainDate; to: PlainDate; reason: string };
 
 export function spanOf(start: Date, minutes: number): TimeSpan {
 	return { start, end: new Date(start.getTime() + minutes * 60_000) };

@@ -1,6 +1,7 @@
+import { sql } from 'kysely';
 import { instantText } from '$lib/time/zones';
 import type { Actor } from '$lib/server/actor';
-import { readOwn } from '$lib/server/change';
+import { readOwn, type Reader } from '$lib/server/change';
 import { judge, keptSignatures, type Judged } from './standing.server';
 
 export interface Verified {
@@ -9,6 +10,8 @@ export interface Verified {
 	/** Of the broken ones, those whose record was signed again and stands so. */
 	renewed: number;
 	damaged: number;
+	/** Of those the trail saw being made, how many are not there any more. */
+	missing: number;
 	/** What to print: one line for each signature that does not stand, then the counts. */
 	lines: string[];
 }
@@ -39,6 +42,7 @@ export const verifySignatures = (actor: Actor): Promise<Verified> =>
 			after = kept.at(-1)?.id ?? after;
 			if (kept.length < batch) break;
 		}
+		const gone = await missingSignatures(reader);
 		const renewed = (judged: Judged) =>
 			judged.standing === 'broken' && standing.has(nameOf(judged));
 		const again = told.filter(renewed).length;
@@ -48,14 +52,38 @@ export const verifySignatures = (actor: Actor): Promise<Verified> =>
 			broken: counts.broken,
 			renewed: again,
 			damaged: counts.damaged,
+			missing: gone.length,
 			lines: [
 				...told.map((judged) => lineOf(judged, renewed(judged))),
-				all === 0
+				...gone.map((id) => `signature ${id}: missing, the trail saw it being made`),
+				all + gone.length === 0
 					? 'No signatures yet.'
-					: `${all} signatures: ${counts.stands} standing, ${counts.broken} broken (${again} of them signed again), ${counts.damaged} damaged.`
+					: `${all} signatures: ${counts.stands} standing, ${counts.broken} broken (${again} of them signed again), ${counts.damaged} damaged, ${gone.length} missing.`
 			]
 		};
 	});
+
+/** Ids of signatures of which the trail holds the making and the table no row. */
+async function missingSignatures(reader: Reader): Promise<string[]> {
+	const rows = await reader
+		.selectFrom('audit.event as e')
+		.select('e.record_id')
+		.where('e.record', '=', 'signature')
+		.where('e.action', '=', 'create')
+		.where((where) =>
+			where.not(
+				where.exists(
+					where
+						.selectFrom('signature as s')
+						.select('s.id')
+						.whereRef(sql`s.id::text`, '=', 'e.record_id')
+				)
+			)
+		)
+		.orderBy('e.id')
+		.execute();
+	return rows.flatMap((row) => row.record_id ?? []);
+}
 
 const nameOf = ({ kept }: Judged) => `${kept.record} ${kept.record_id} ${kept.meaning}`;
 

@@ -1,7 +1,13 @@
 import { converts } from '../../units/convert';
 import { formulaOf, type FormulaInput } from '../measurement/formulas';
 import type { Report } from './check';
-import type { Characteristic, DerivedMeasure, Measure, StudyDefinition } from './definition';
+import {
+	measuresBehind,
+	type Characteristic,
+	type DerivedMeasure,
+	type Measure,
+	type StudyDefinition
+} from './definition';
 
 const splitReference = (reference: string): [string, string] => {
 	const colon = reference.indexOf(':');
@@ -85,12 +91,6 @@ function whyUnfit(
 	}
 }
 
-const measureInputs = (measure: DerivedMeasure): string[] =>
-	Object.values(measure.derivedBy.inputs).flatMap((reference) => {
-		const [kind, name] = splitReference(reference);
-		return kind === 'measure' ? [name] : [];
-	});
-
 function checkCycle(
 	measure: DerivedMeasure,
 	path: string,
@@ -98,7 +98,7 @@ function checkCycle(
 	report: Report
 ): void {
 	const seen = new Set<string>();
-	const open = measureInputs(measure);
+	const open = measuresBehind(measure);
 	for (let key = open.pop(); key !== undefined; key = open.pop()) {
 		if (key === measure.key) {
 			report('stops', path, 'FORMULA_CYCLE', { measure: measure.name });
@@ -107,7 +107,7 @@ function checkCycle(
 		if (seen.has(key)) continue;
 		seen.add(key);
 		const source = measures.get(key);
-		if (source?.kind === 'derived') open.push(...measureInputs(source));
+		if (source?.kind === 'derived') open.push(...measuresBehind(source));
 	}
 }
 
@@ -122,7 +122,7 @@ function checkBaseline(
 	if (!formulaOf(measure.derivedBy.formula).fromBaseline) return;
 	const baseline = definition.visits.find((visit) => visit.key === definition.baselineVisit);
 	if (!baseline) return;
-	for (const key of measureInputs(measure))
+	for (const key of measuresBehind(measure))
 		if (measures.has(key) && !definition.schedule[baseline.key]?.includes(key))
 			report('stops', path, 'BASELINE_OF_CHANGE', {
 				measure: measure.name,
@@ -148,7 +148,7 @@ function checkVisits(
 	for (const visit of definition.visits) {
 		const here = definition.schedule[visit.key] ?? [];
 		if (!here.includes(measure.key)) continue;
-		for (const key of measureInputs(measure))
+		for (const key of measuresBehind(measure))
 			if (measures.has(key) && !here.includes(key))
 				report('stops', path, 'FORMULA_INPUT_NOT_AT_VISIT', {
 					measure: measure.name,

@@ -5,18 +5,12 @@ import type { StudyDefinition } from './definition';
 /** Fewer subjects in a stratum than this seldom complete a block of any usual size. Common practice. */
 const leastInStratum = 4;
 
-/** Strata in which there can be no subjects, enrolment plans, closures, and minors. */
+/** Strata in which there can be no subjects, enrolment plans, closures, minors, and visits too long. */
 export function checkDesign(definition: StudyDefinition, report: Report): void {
 	checkStrata(definition, report);
 	checkPlan(definition, report);
 	checkClosures(definition, report);
 	checkMinors(definition, report);
-	definition.measures.forEach((measure, at) => {
-		if (measure.couldRevealArm && !definition.masked)
-			report('warns', `measures[${at}].couldRevealArm`, 'REVEAL_WITHOUT_MASK', {
-				measure: measure.name
-			});
-	});
 	definition.visits.forEach((visit, at) => {
 		if (visit.lengthMinutes > longestMinutes)
 			report('stops', `visits[${at}].lengthMinutes`, 'VISIT_TOO_LONG', {

@@ -3,6 +3,7 @@ import { minutesOfTime } from '../../time/zones';
 import { problem, type Facts, type ProblemCode } from '../problems';
 import { checkDerived } from './check-derived';
 import { checkDesign } from './check-design';
+import { checkMasking } from './check-masking';
 import { checkSchedule } from './check-schedule';
 import { isRandomised, type Measure, type StudyDefinition } from './definition';
 import type { LocatedProblem } from './template';
@@ -28,6 +29,7 @@ export function checkDefinition(definition: StudyDefinition): Finding[] {
 	checkSchedule(definition, report);
 	definition.measures.forEach((measure, at) => checkMeasure(measure, `measures[${at}]`, report));
 	checkDerived(definition, report);
+	checkMasking(definition, report);
 	checkComparisons(definition, report);
 	checkSites(definition, report);
 	checkDesign(definition, report);

@@ -133,6 +133,7 @@ const visit = z.strictObject({
 
 /** Who may be named to enter what could reveal the arm; whoever does is not masked to it. */
 export const revealingRoles = ['pharmacist', 'nurse', 'investigator'] as const;
+export type RevealingRole = (typeof revealingRoles)[number];
 
 const common = {
 	key: keySchema,
@@ -361,6 +362,35 @@ export function decimalsOfMeasure(measure: Measure): number {
 	return 'decimals' in measure ? measure.decimals : 0;
 }
 
+/**
+ * The role to which each measure's values are open, by its key, for those that could reveal the arm; with what is
+ * derived from them, however far.
+ */
+export function openTo(definition: Pick<StudyDefinition, 'measures'>): Map<string, RevealingRole> {
+	const open = new Map<string, RevealingRole>();
+	for (const measure of definition.measures)
+		if (measure.couldRevealArm) open.set(measure.key, measure.couldRevealArm.enteredBy);
+	for (let grew = open.size > 0; grew;) {
+		grew = false;
+		for (const measure of definition.measures) {
+			if (measure.kind !== 'derived' || open.has(measure.key)) continue;
+			const from = measuresBehind(measure).find((key) => open.has(key));
+			const role = from === undefined ? undefined : open.get(from);
+			if (role) {
+				open.set(measure.key, role);
+				grew = true;
+			}
+		}
+	}
+	return open;
+}
+
+/** Keys of the measures a derived one is worked out from. */
+export const measuresBehind = (measure: DerivedMeasure): string[] =>
+	Object.values(measure.derivedBy.inputs).flatMap((reference) =>
+		reference.startsWith('measure:') ? [reference.slice('measure:'.length)] : []
+	);
+
 /** Measures taken at a visit, in the order of the schedule. */
 export function measuresAt(definition: StudyDefinition, visitKey: string): Measure[] {
 	const byKey = new Map(definition.measures.map((each) => [each.key, each]));
@@ -370,6 +400,10 @@ export function measuresAt(definition: StudyDefinition, visitKey: string): Measu
 export function isRandomised(definition: StudyDefinition): boolean {
 	return definition.arms.length >= 2;
 }
+
+/** What an arm is called; null where there is none to tell, as everywhere in a masked study. */
+export const armName = (definition: StudyDefinition, key: string | null): string | null =>
+	key === null ? null : (definition.arms.find((arm) => arm.key === key)?.name ?? key);
 
 /** The definition as JSON Schema, for people who write one by hand. Rules across fields are not in it. */
 export function definitionJsonSchema(): Record<string, unknown> {

@@ -53,6 +53,8 @@ const fieldOf: Record<string, (facts: Finding['problem']['facts']) => string> = 
 	LIMITS_SOFT_OUTSIDE_HARD: () => 'softLow',
 	LIMITS_MISSING: () => 'hardLow',
 	UNIT_DOES_NOT_CONVERT: () => 'unit',
+	REVEALING_UNMASKED: () => 'couldRevealArm',
+	REVEALING_MIXED: () => 'couldRevealArm',
 	READINGS_TOO_FEW: () => 'readingsNeeded',
 	OPENING_HOURS_MISSING: () => 'openingHours',
 	OPENING_HOURS_TOO_SHORT: () => 'openingHours'

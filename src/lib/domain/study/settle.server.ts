@@ -21,6 +21,7 @@ export async function settleStudy(
 		name: site.name,
 		zone: site.zone,
 		opening: site.openingHours,
+		closures: site.closures ?? [],
 		rooms: [...new Set(site.rooms.map((room) => roomName(room.name)))].map((name) => ({
 			id: newId(),
 			name

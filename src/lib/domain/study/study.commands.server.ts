@@ -12,6 +12,7 @@ import { emptyDefinition } from './empty';
 import {
 	decimalsOfMeasure,
 	isRandomised,
+	openTo,
 	unitOfMeasure,
 	type SiteDefinition,
 	type StudyDefinition
@@ -216,6 +217,7 @@ export async function layOutSchedule(
 		spec: JSON.stringify(visit),
 		length_minutes: visit.lengthMinutes
 	}));
+	const open = openTo(definition);
 	const measures = definition.measures.map((measure, at) => ({
 		id: newId(),
 		study_id: studyId,
@@ -226,7 +228,8 @@ export async function layOutSchedule(
 		decimals: decimalsOfMeasure(measure),
 		kind: measure.kind,
 		position: at + 1,
-		spec: JSON.stringify(measure)
+		spec: JSON.stringify(measure),
+		open_to: open.get(measure.key) ?? null
 	}));
 	await writer.insertInto('planned_visit').values(visits).execute();
 	await writer.insertInto('measure').values(measures).execute();

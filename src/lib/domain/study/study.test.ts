@@ -324,10 +324,6 @@ describe('checking before publishing', () => {
 				d.characteristics = d.characteristics.filter((each) => each.kind !== 'birth-date');
 			}
 		],
-		[
-			'REVEAL_WITHOUT_MASK',
-			(d) => Object.assign(measure(d, 'weight'), { couldRevealArm: { enteredBy: 'pharmacist' } })
-		],
 		['ELIGIBILITY_MISSING', (d) => void (d.eligibility = [])],
 		['OPENING_HOURS_MISSING', (d) => void (d.sites[0]!.openingHours = [])],
 		['OPENING_HOURS_TOO_SHORT', (d) => void (visit(d, 'baseline').lengthMinutes = 400)]

@@ -5,7 +5,8 @@ import { may } from '$lib/server/permission';
 import { plainDateOf, shortDateText } from '$lib/time/dates';
 import { dateInZone, instantText, timeInZone } from '$lib/time/zones';
 import { windowText } from '../schedule/window';
-import { isRandomised, type StudyDefinition } from '../study/definition';
+import { armName, isRandomised, type StudyDefinition } from '../study/definition';
+import { unmaskingsOf } from '../unmasking/unmasking.reads.server';
 import { getDefinition } from '../study/study.reads.server';
 import { windowOfRow } from '../visit/visit.reads.server';
 import { exitMeanings, type ExitKind } from './exit';
@@ -26,6 +27,7 @@ export interface RecordItem {
 		| 'contact'
 		| 'deviation'
 		| 'exit'
+		| 'unmasking'
 		| 'mail';
 	/** In words, with the zone where it is an instant. */
 	when: string;
@@ -65,6 +67,8 @@ export interface SubjectRecord {
 		version: number;
 		enrolledOn: string;
 		kitNumber: string | null;
+		/** Where the study masks nothing. */
+		arm: string | null;
 		facts: { name: string; value: string }[];
 	};
 	site: SiteNow;
@@ -73,9 +77,25 @@ export interface SubjectRecord {
 	ahead: VisitAhead[];
 	exits: ExitKind[];
 	randomised: boolean;
+	/** Whether there is an allocation that is kept from the site. */
+	masked: boolean;
+	maskedStudy: boolean;
+	/** The stratification factors with the level on record, for whoever may correct it. */
+	strata: {
+		key: string;
+		name: string;
+		level: string;
+		levels: { value: string; label: string }[];
+	}[];
 	/** Null without the permission to read them; the permission of their own is asked in a read of its own. */
 	contact: ContactDetails | 'none' | null;
-	may: { randomise: boolean; exit: boolean; editContact: boolean };
+	may: {
+		randomise: boolean;
+		exit: boolean;
+		editContact: boolean;
+		correct: boolean;
+		unmask: boolean;
+	};
 }
 
 /** The whole record of one subject in the order of time. */
@@ -96,6 +116,7 @@ export async function getSubjectRecord(
 				'version',
 				'enrolled_on',
 				'kit_number',
+				'arm_key',
 				'randomised_at',
 				'protocol_version_id',
 				'stratum',
@@ -107,9 +128,17 @@ export async function getSubjectRecord(
 		if (!row) throw new Refusal('NOT_FOUND');
 		const site = await getSite(reader, studyId, siteId);
 		const definition = await getDefinition(reader, studyId, row.protocol_version_id);
+		const study = await reader
+			.selectFrom('study')
+			.select('masked')
+			.where('id', '=', studyId)
+			.executeTakeFirstOrThrow();
 		const visits = await visitsOf(reader, studyId, subjectId, site);
 		const items = [
-			...(await wayIn(reader, subjectId, site, row)),
+			...(await wayIn(reader, subjectId, site, {
+				...row,
+				arm: armName(definition, row.arm_key)
+			})),
 			...visits.items,
 			...(await alongTheWay(reader, studyId, subjectId, site))
 		].sort((a, b) => (a.key < b.key ? -1 : a.key > b.key ? 1 : 0));
@@ -127,6 +156,7 @@ export async function getSubjectRecord(
 				version: row.version,
 				enrolledOn: shortDateText(plainDateOf(row.enrolled_on)),
 				kitNumber: row.kit_number,
+				arm: armName(definition, row.arm_key),
 				facts: factsOf(definition, row.characteristics, row.stratum)
 			},
 			site,
@@ -134,7 +164,10 @@ export async function getSubjectRecord(
 			items,
 			ahead: visits.ahead,
 			exits: exits.map((exit) => exit.kind as ExitKind),
-			randomised: isRandomised(definition)
+			randomised: isRandomised(definition),
+			masked: row.kit_number !== null && study.masked,
+			maskedStudy: study.masked,
+			strata: strataOf(definition, row.stratum)
 		};
 	});
 	return {
@@ -145,10 +178,20 @@ export async function getSubjectRecord(
 		may: {
 			randomise: may(actor.grants, 'subject.randomise', scope),
 			exit: may(actor.grants, 'subject.exit', scope),
-			editContact: may(actor.grants, 'contact.edit', scope)
+			editContact: may(actor.grants, 'contact.edit', scope),
+			correct: may(actor.grants, 'subject.correct', scope),
+			unmask: may(actor.grants, 'unmasking.record', scope)
 		}
 	};
 }
+
+const strataOf = (definition: StudyDefinition, stratum: unknown): SubjectRecord['strata'] =>
+	definition.strata.map(({ key, name, levels }) => ({
+		key,
+		name,
+		level: String((stratum as Record<string, unknown> | null)?.[key] ?? ''),
+		levels: levels.map((each) => ({ value: each.key, label: each.name }))
+	}));
 
 const getContact = (actor: Actor, studyId: string, siteId: string, subjectId: string) =>
 	read(actor, 'contact.read', { studyId, siteId }, async (reader) => {
@@ -198,6 +241,7 @@ async function wayIn(
 		randomised_at: Date | null;
 		kit_number: string | null;
 		imported_as: string | null;
+		arm: string | null;
 	}
 ): Promise<RecordItem[]> {
 	const screenings = await reader
@@ -249,7 +293,11 @@ async function wayIn(
 			when: instantText(subject.randomised_at, site.zone),
 			key: dayKey(dateInZone(subject.randomised_at, site.zone), '~2'),
 			title: 'Randomised',
-			lines: [`Kit ${subject.kit_number ?? ''}.`]
+			lines: [
+				subject.arm === null
+					? `Kit ${subject.kit_number ?? ''}.`
+					: `${subject.arm}, kit ${subject.kit_number ?? ''}.`
+			]
 		});
 	return items;
 }
@@ -395,6 +443,21 @@ async function alongTheWay(
 		.where('subject_id', '=', subjectId)
 		.execute();
 	const items: RecordItem[] = [];
+	for (const each of await unmaskingsOf(reader, studyId, subjectId))
+		items.push({
+			id: each.id,
+			kind: 'unmasking',
+			when: each.recorded,
+			key: instantKey(each.recordedAt, site.zone),
+			title: `Unmasked: ${each.kind.toLowerCase()}`,
+			lines: [
+				each.happened === each.recorded ? '' : `It happened at ${each.happened}.`,
+				`Known to ${each.knownTo}. Recorded by ${each.by}.`,
+				`Reason: ${each.reason}`,
+				each.impact ? `What it may have touched: ${each.impact}` : '',
+				'The arm is not part of this record.'
+			].filter(Boolean)
+		});
 	for (const each of contacts)
 		items.push({
 			id: each.id,

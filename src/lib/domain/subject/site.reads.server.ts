@@ -13,13 +13,15 @@ export interface SiteNow {
 	zone: string;
 	/** The day on the site's calendar. */
 	today: PlainDate;
+	/** The day from which it may see subjects: its ethics committee's approval. */
+	approvedOn: string | null;
 }
 
 /** Within a read or a change: a site of the study and the day it is there. */
 export async function getSite(reader: Reader, studyId: string, siteId: string): Promise<SiteNow> {
 	const site = await reader
 		.selectFrom('site')
-		.select(['id', 'code', 'name', 'zone'])
+		.select(['id', 'code', 'name', 'zone', 'approved_on as approvedOn'])
 		.where('study_id', '=', studyId)
 		.where('id', '=', siteId)
 		.executeTakeFirst();

@@ -5,7 +5,8 @@ import type { Actor } from '$lib/server/actor';
 import { change, mustHaveChanged, type Writer } from '$lib/server/change';
 import { may } from '$lib/server/permission';
 import { getPublished } from '../study/study.reads.server';
-import { isRandomised } from '../study/definition';
+import { armName, isRandomised } from '../study/definition';
+import { tellLowStock } from '../kit/kit.commands.server';
 import { isSigned } from '../signature/signature.reads.server';
 import { answeredVersionOf, answersOf, standing } from './eligibility';
 import { mostSubjectsPerSite, subjectNumber } from './number';
@@ -61,6 +62,8 @@ export async function enrolSubject(
 				{ what: 'The day of enrolment' },
 				{ enrolledOn: 'This day has not come yet.' }
 			);
+		if (site.approvedOn === null || input.enrolledOn < site.approvedOn)
+			throw new Refusal('SITE_NOT_APPROVED', { site: site.name });
 		if (input.enrolledOn < screening.screened_on)
 			throw new Refusal(
 				'RULE',
@@ -193,14 +196,14 @@ async function mustStandSigned(writer: Writer, subjectId: string): Promise<void>
 }
 
 /**
- * The subject's allocation, once: the closed side gives a kit number and nothing else, in open studies too. Visits
- * counted from randomisation get their windows in the same change.
+ * The subject's allocation, once: the closed side gives a kit number, and the arm only where the study masks nothing.
+ * Visits counted from randomisation get their windows in the same change.
  */
 export async function randomiseSubject(
 	actor: Actor,
 	studyId: string,
 	subjectId: string
-): Promise<{ kitNumber: string; version: number }> {
+): Promise<{ kitNumber: string; arm: string | null; version: number }> {
 	const siteId = await siteOf(actor, 'subject.randomise', 'subject', studyId, subjectId);
 	return change(actor, 'subject.randomise', { studyId, siteId }, async (writer) => {
 		const subject = await writer
@@ -227,11 +230,16 @@ export async function randomiseSubject(
 			kit: string;
 		}>`select closed.allocate(${subjectId}::uuid) as kit`.execute(writer);
 		await planSubjectVisits(writer, studyId, subjectId);
+		await tellLowStock(writer, studyId, siteId);
 		const after = await writer
 			.selectFrom('subject')
-			.select(['kit_number', 'version'])
+			.select(['arm_key', 'version'])
 			.where('id', '=', subjectId)
 			.executeTakeFirstOrThrow();
-		return { kitNumber: rows[0]?.kit ?? '', version: after.version };
+		return {
+			kitNumber: rows[0]?.kit ?? '',
+			arm: armName(definition, after.arm_key),
+			version: after.version
+		};
 	});
 }

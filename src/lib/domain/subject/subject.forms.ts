@@ -41,6 +41,24 @@ export const enrolForm = (definition: Pick<Asked, 'strata' | 'characteristics'>)
 		version
 	});
 
+/** To correct a subject's levels. */
+export const stratumForm = (factors: readonly { key: string }[]) =>
+	z.object({
+		...shapeOf(factors.map((each) => `stratum_${each.key}`)),
+		reason: z
+			.string()
+			.trim()
+			.min(1, 'Say why.')
+			.max(500, 'Use at most 500 characters.')
+			.default(''),
+		version
+	});
+
+export const stratumFrom = (data: Flat): { stratum: Record<string, string>; reason: string } => ({
+	stratum: part(data, 'stratum_'),
+	reason: String(data.reason)
+});
+
 const part = (data: Flat, prefix: string): Record<string, string> =>
 	Object.fromEntries(
 		Object.entries(data).flatMap(([name, value]) =>

@@ -220,7 +220,7 @@ async function checkPlace(
 	visit: VisitRow,
 	input: BookVisitInput
 ): Promise<TimeSpan> {
-	const { zone, opening } = visit.site;
+	const { zone, opening, closures } = visit.site;
 	const date = plainDateOf(input.date);
 	if (visit.window === null)
 		throw new Refusal('RULE', {
@@ -230,7 +230,9 @@ async function checkPlace(
 		throw refusedAt('time', `Clocks go forward on that day: there is no ${input.time}.`);
 	const span = spanOf(instantFromLocal(date, input.time, zone), visit.lengthMinutes);
 	if (span.start <= clock.now()) throw refusedAt('date', 'That time has passed.');
-	if (checkOpening(span, opening, zone)) {
+	const closed = closures.find((each) => date >= each.from && date <= each.to);
+	if (closed) throw refusedAt('date', `The site is closed on that day: ${closed.reason}.`);
+	if (checkOpening(span, opening, zone, closures)) {
 		const open = openingText(opening, isoWeekday(date));
 		const refusal = new Refusal('OUTSIDE_HOURS', { open });
 		throw new Refusal('OUTSIDE_HOURS', { open }, { time: refusal.message });

@@ -125,6 +125,7 @@ async function freeOn(
 		date,
 		times: freeTimes({
 			opening: visit.site.opening,
+			closures: visit.site.closures,
 			zone: visit.site.zone,
 			date,
 			minutes: visit.lengthMinutes,

@@ -10,9 +10,16 @@ const opening = [
 ];
 const past = new Date('2026-06-01T00:00:00Z');
 const times = (given: Partial<Parameters<typeof freeTimes>[0]> = {}) =>
-	freeTimes({ opening, zone, date: tuesday, minutes: 30, taken: [], now: past, ...given }).map(
-		(each) => each.time
-	);
+	freeTimes({
+		opening,
+		closures: [],
+		zone,
+		date: tuesday,
+		minutes: 30,
+		taken: [],
+		now: past,
+		...given
+	}).map((each) => each.time);
 
 describe('free times', () => {
 	test('fill each opening in quarters of an hour, as far as the visit still fits', () => {
@@ -39,6 +46,7 @@ describe('free times', () => {
 		const night = [{ weekday: 7, opens: '02:00', closes: '03:00' }];
 		const found = freeTimes({
 			opening: night,
+			closures: [],
 			zone,
 			date: plainDateOf('2026-10-25'),
 			minutes: 15,

@@ -1,6 +1,6 @@
 import type { PlainDate } from '$lib/time/dates';
 import { timeInZone } from '$lib/time/zones';
-import { openSpans, overlap, spanOf, type TimeSpan } from '../schedule/booking';
+import { openSpans, overlap, spanOf, type Closure, type TimeSpan } from '../schedule/booking';
 import type { OpeningHours } from '../study/definition';
 
 const stepMinutes = 15;
@@ -17,15 +17,16 @@ export interface FreeTime {
  */
 export function freeTimes(given: {
 	opening: readonly OpeningHours[];
+	closures: readonly Closure[];
 	zone: string;
 	date: PlainDate;
 	minutes: number;
 	taken: readonly TimeSpan[];
 	now: Date;
 }): FreeTime[] {
-	const { opening, zone, date, minutes, taken, now } = given;
+	const { opening, closures, zone, date, minutes, taken, now } = given;
 	const found = new Map<string, FreeTime>();
-	for (const open of openSpans(opening, zone, date))
+	for (const open of openSpans(opening, zone, date, closures))
 		for (
 			let span = spanOf(open.start, minutes);
 			span.end <= open.end;

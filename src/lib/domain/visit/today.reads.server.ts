@@ -1,7 +1,9 @@
 import { sql } from 'kysely';
 import type { Role } from '../person/roles';
 import { closingWithinDays } from '../schedule/window';
+import { armName } from '../study/definition';
 import { sitesFor, type SiteHead } from '../study/sites.server';
+import { getPublished } from '../study/study.reads.server';
 import type { Actor } from '$lib/server/actor';
 import { read, type Reader } from '$lib/server/change';
 import { clock } from '$lib/time/clock';
@@ -19,6 +21,8 @@ export const rolesIn = (actor: Actor, studyId: string): Set<Role> =>
 export interface TodaysVisit {
 	visitId: string;
 	number: string;
+	/** Where the study masks nothing. */
+	arm: string | null;
 	visit: string;
 	site: string;
 	/** By the site's clocks; null for a visit under way without an appointment today. */
@@ -52,6 +56,7 @@ async function todaysVisits(
 				'v.status',
 				'v.name as visit',
 				's.number',
+				's.arm_key',
 				'a.starts_at',
 				'a.ends_at',
 				'a.staff_id',
@@ -70,7 +75,7 @@ async function todaysVisits(
 		const begun = await reader
 			.selectFrom('visit as v')
 			.innerJoin('subject as s', 's.id', 'v.subject_id')
-			.select(['v.id', 'v.name as visit', 's.number'])
+			.select(['v.id', 'v.name as visit', 's.number', 's.arm_key'])
 			.where('v.site_id', '=', site.id)
 			.where('v.study_id', '=', studyId)
 			.where('v.status', '=', 'under way')
@@ -81,6 +86,7 @@ async function todaysVisits(
 			...rows.map((row) => ({
 				visitId: row.id,
 				number: row.number,
+				arm: row.arm_key,
 				visit: row.visit,
 				site: site.name,
 				time: timeInZone(row.starts_at, site.zone),
@@ -95,6 +101,7 @@ async function todaysVisits(
 				.map((row) => ({
 					visitId: row.id,
 					number: row.number,
+					arm: row.arm_key,
 					visit: row.visit,
 					site: site.name,
 					time: null,
@@ -106,7 +113,10 @@ async function todaysVisits(
 				}))
 		);
 	}
-	return found;
+	// In a masked study no subject has one, and the definition is not asked for.
+	if (found.every((each) => each.arm === null)) return found;
+	const { definition } = await getPublished(reader, studyId);
+	return found.map((each) => ({ ...each, arm: armName(definition, each.arm) }));
 }
 
 export interface WeekAhead {
@@ -270,6 +280,8 @@ export interface StudyState {
 	status: 'draft' | 'open' | 'ended';
 	published: boolean;
 	people: number;
+	/** Sites whose approval is not recorded yet. */
+	unapproved: number;
 	subjects: number;
 	cuts: number;
 }
@@ -282,6 +294,7 @@ export const getStudyState = (actor: Actor, studyId: string): Promise<StudyState
 				exists (select from app.protocol_version v where v.study_id = s.id and v.status = 'published') as published,
 				(select count(distinct r.person_id)::int from app.person_role r where r.study_id = s.id
 					and r.role in ('coordinator', 'nurse', 'investigator')) as people,
+				(select count(*)::int from app.site t where t.study_id = s.id and t.approved_on is null) as unapproved,
 				(select count(*)::int from app.subject u where u.study_id = s.id) as subjects,
 				(select count(*)::int from app.cut c where c.study_id = s.id) as cuts
 			from app.study s where s.id = ${studyId}::uuid`.execute(reader);

@@ -5,6 +5,7 @@ import type { Capability } from '$lib/server/permission';
 import { clock } from '$lib/time/clock';
 import { findPlainDate, plainDateOf, type PlainDate } from '$lib/time/dates';
 import { dateInZone } from '$lib/time/zones';
+import type { Closure } from '../schedule/booking';
 import type { VisitWindow } from '../schedule/window';
 import { studyDefinition, type OpeningHours, type StudyDefinition } from '../study/definition';
 import type { VisitStatus } from './status';
@@ -15,6 +16,7 @@ export interface VisitSite {
 	name: string;
 	zone: string;
 	opening: OpeningHours[];
+	closures: Closure[];
 }
 
 /** One visit with what every rule about it needs. */
@@ -89,7 +91,8 @@ export async function getVisit(
 			'p.code as site_code',
 			'p.name as site_name',
 			'p.zone',
-			'p.opening'
+			'p.opening',
+			'p.closures'
 		])
 		.where('v.study_id', '=', studyId)
 		.where('v.id', '=', visitId)
@@ -116,7 +119,8 @@ export async function getVisit(
 			code: row.site_code,
 			name: row.site_name,
 			zone: row.zone,
-			opening: row.opening as OpeningHours[]
+			opening: row.opening as OpeningHours[],
+			closures: row.closures as Closure[]
 		},
 		today: dateInZone(clock.now(), row.zone)
 	};

@@ -9,7 +9,11 @@ const rules = {
 	/** Mails with a reset link to one address. */
 	reset: { points: 3, duration: 60 * 60 },
 	/** Whole exports by one person. */
-	export: { points: 30, duration: 15 * 60 }
+	export: { points: 30, duration: 15 * 60 },
+	/** Arms one person may ask to be shown. An emergency concerns one subject; a second and third may follow. */
+	unmask: { points: 6, duration: 60 * 60 },
+	/** Sealed codes entered by one person. */
+	code: { points: 5, duration: 15 * 60 }
 } as const;
 type Rule = keyof typeof rules;
 
@@ -33,7 +37,9 @@ function limiter(rule: Rule): RateLimiterPostgres {
 			account: make('account'),
 			address: make('address'),
 			reset: make('reset'),
-			export: make('export')
+			export: make('export'),
+			unmask: make('unmask'),
+			code: make('code')
 		};
 		limiters.set(pool, made);
 	}

@@ -20,7 +20,9 @@ export type MailKind =
 	| 'visit-invitation'
 	| 'visit-moved'
 	| 'visit-cancelled'
-	| 'report-released';
+	| 'report-released'
+	| 'unmasking'
+	| 'kits-low';
 
 interface AllocationRecordTable {
 	id: string;
@@ -49,6 +51,18 @@ interface AppointmentTable {
 	calendar_uid: string;
 	calendar_sequence: Generated<number>;
 	changed_at: Generated<Timestamp>;
+	version: Generated<number>;
+}
+
+interface CodePrintTable {
+	id: string;
+	study_id: string;
+	site_id: string;
+	asked_by: string;
+	asked_at: Generated<Timestamp>;
+	status: Generated<'waiting' | 'made' | 'failed'>;
+	kits: number | null;
+	job_run_id: string | null;
 	version: Generated<number>;
 }
 
@@ -191,6 +205,47 @@ interface JobRunTable {
 	version: Generated<number>;
 }
 
+interface KitTable {
+	study_id: string;
+	kit_number: string;
+	site_id: string;
+	delivery_id: string;
+	expires_on: string;
+	status: Generated<'on the way' | 'in stock' | 'given' | 'damaged' | 'lost'>;
+	note: string | null;
+	subject_id: string | null;
+	version: Generated<number>;
+}
+
+interface KitDeliveryTable {
+	id: string;
+	study_id: string;
+	site_id: string;
+	number: number;
+	kits: number;
+	expires_on: string;
+	sent_by: string;
+	sent_at: Generated<Timestamp>;
+	received_by: string | null;
+	received_at: Timestamp | null;
+	version: Generated<number>;
+}
+
+interface KitLevelTable {
+	site_id: string;
+	study_id: string;
+	full_stock: number;
+	resupply_at: number;
+	told_at: Timestamp | null;
+	version: Generated<number>;
+}
+
+interface KitPlanTable {
+	study_id: string;
+	use_days: number;
+	version: Generated<number>;
+}
+
 interface LinkTable {
 	id: string;
 	person_id: string | null;
@@ -252,6 +307,7 @@ interface MeasureTable {
 	kind: 'number' | 'choice' | 'date' | 'text' | 'repeated' | 'derived';
 	position: number;
 	spec: Json;
+	open_to: 'pharmacist' | 'nurse' | 'investigator' | null;
 }
 
 interface MeasurementTable {
@@ -276,6 +332,7 @@ interface MeasurementTable {
 	taken_by: string;
 	source: 'form' | 'import' | 'derived';
 	version: Generated<number>;
+	open_to: Generated<'pharmacist' | 'nurse' | 'investigator' | null>;
 }
 
 interface MonitoringPlanTable {
@@ -456,6 +513,8 @@ interface SiteTable {
 	zone: string;
 	opening: GeneratedJson;
 	version: Generated<number>;
+	approved_on: string | null;
+	closures: GeneratedJson;
 }
 
 interface StudyTable {
@@ -494,6 +553,22 @@ interface SubjectTable {
 	stratum: GeneratedJson;
 	characteristics: GeneratedJson;
 	version: Generated<number>;
+	/** Filled in by the allocation where nothing is masked; elsewhere always null. */
+	arm_key: string | null;
+}
+
+interface UnmaskingTable {
+	id: string;
+	study_id: string;
+	site_id: string;
+	subject_id: string;
+	kind: 'emergency' | 'sealed code' | 'accidental';
+	person_id: string;
+	known_to: string;
+	happened_at: Timestamp;
+	recorded_at: Generated<Timestamp>;
+	reason: string;
+	impact: string | null;
 }
 
 interface VisitTable {
@@ -558,6 +633,7 @@ interface ClosedAllocationListTable {
 	method: string;
 	hash: string;
 	made_at: Generated<Timestamp>;
+	plan: GeneratedJson;
 }
 
 interface ClosedArmLetterTable {
@@ -566,8 +642,28 @@ interface ClosedArmLetterTable {
 	letter: string;
 }
 
+interface ClosedChanceTable {
+	list_id: string;
+	study_id: string;
+	position: number;
+	coin: Big;
+	draw: Big;
+	subject_id: string | null;
+	used_at: Timestamp | null;
+	levels: Json | null;
+	arm_key: string | null;
+}
+
 interface ClosedClosedReportTable {
 	report_id: string;
+	study_id: string;
+	storage_key: string;
+	file_key: Buffer;
+	sha256: string;
+}
+
+interface ClosedCodeSheetTable {
+	print_id: string;
 	study_id: string;
 	storage_key: string;
 	file_key: Buffer;
@@ -613,6 +709,21 @@ interface ClosedLookResultTable {
 	made_at: Generated<Timestamp>;
 }
 
+interface ClosedMinimisationTable {
+	list_id: string;
+	study_id: string;
+	arms: Json;
+	best_chance: Numeric;
+	random_below: Big;
+}
+
+interface ClosedMinimisationChoiceTable {
+	study_id: string;
+	best_chance: Numeric;
+	chosen_by: string;
+	chosen_at: Generated<Timestamp>;
+}
+
 interface ClosedReleasedCopyTable {
 	release_id: string;
 	study_id: string;
@@ -622,9 +733,27 @@ interface ClosedReleasedCopyTable {
 	sha256: string;
 }
 
+interface ClosedSealedCodeTable {
+	id: string;
+	study_id: string;
+	print_id: string;
+	kit_number: string;
+	code_hash: string;
+	used_at: Timestamp | null;
+	unmasking_id: string | null;
+}
+
+interface ClosedShownArmTable {
+	unmasking_id: string;
+	study_id: string;
+	subject_id: string;
+	arm_key: string;
+}
+
 export interface Tables {
 	allocation_record: AllocationRecordTable;
 	appointment: AppointmentTable;
+	code_print: CodePrintTable;
 	consent: ConsentTable;
 	consent_version: ConsentVersionTable;
 	contact_attempt: ContactAttemptTable;
@@ -636,6 +765,10 @@ export interface Tables {
 	import_batch: ImportBatchTable;
 	installation: InstallationTable;
 	job_run: JobRunTable;
+	kit: KitTable;
+	kit_delivery: KitDeliveryTable;
+	kit_level: KitLevelTable;
+	kit_plan: KitPlanTable;
 	link: LinkTable;
 	look: LookTable;
 	mail: MailTable;
@@ -659,17 +792,24 @@ export interface Tables {
 	study: StudyTable;
 	study_exit: StudyExitTable;
 	subject: SubjectTable;
+	unmasking: UnmaskingTable;
 	visit: VisitTable;
 	'audit.event': AuditEventTable;
 	'audit.seal': AuditSealTable;
 	'audit.sealed': AuditSealedTable;
 	'closed.allocation_list': ClosedAllocationListTable;
 	'closed.arm_letter': ClosedArmLetterTable;
+	'closed.chance': ClosedChanceTable;
 	'closed.closed_report': ClosedClosedReportTable;
+	'closed.code_sheet': ClosedCodeSheetTable;
 	'closed.cut_allocation': ClosedCutAllocationTable;
 	'closed.event': ClosedEventTable;
 	'closed.list_position': ClosedListPositionTable;
 	'closed.look_request': ClosedLookRequestTable;
 	'closed.look_result': ClosedLookResultTable;
+	'closed.minimisation': ClosedMinimisationTable;
+	'closed.minimisation_choice': ClosedMinimisationChoiceTable;
 	'closed.released_copy': ClosedReleasedCopyTable;
+	'closed.sealed_code': ClosedSealedCodeTable;
+	'closed.shown_arm': ClosedShownArmTable;
 }

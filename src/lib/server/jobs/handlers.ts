@@ -1,4 +1,5 @@
 import { makeAllocationList } from '$lib/domain/randomisation/allocation.commands.server';
+import { sealedCodesJob } from '$lib/domain/unmasking/codes.server';
 import { importJob } from '../imports/job';
 import { byArmLookJob, lookJob } from '../looks/jobs';
 import { closedReleaseJob, closedReportJob, releaseJob, reportJob } from '../looks/report-jobs';
@@ -21,5 +22,6 @@ export const closedHandlers: Handlers = {
 	'allocation-list': makeAllocationList,
 	'by-arm-look': byArmLookJob,
 	'closed-report': closedReportJob,
-	'closed-release': closedReleaseJob
+	'closed-release': closedReleaseJob,
+	'sealed-codes': sealedCodesJob
 };

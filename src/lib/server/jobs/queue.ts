@@ -18,6 +18,7 @@ export interface QueuePayloads {
 	'by-arm-look': { lookId: string; jobRunId: string };
 	'closed-report': { reportId: string; jobRunId: string };
 	'closed-release': { releaseId: string };
+	'sealed-codes': { printId: string; jobRunId: string };
 	/** Seals the audit trail; scheduled. */
 	seal: Record<string, never>;
 }
@@ -47,6 +48,7 @@ export const queueSettings: Record<
 	'by-arm-look': { ...retry, retryLimit: 2, expireInSeconds: 30 * minute },
 	'closed-report': { ...retry, retryLimit: 2, expireInSeconds: 10 * minute },
 	'closed-release': { ...retry, expireInSeconds: 10 * minute },
+	'sealed-codes': { ...retry, retryLimit: 2, expireInSeconds: 10 * minute },
 	seal: { ...once, expireInSeconds: 10 * minute }
 };
 

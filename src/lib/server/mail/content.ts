@@ -2,7 +2,7 @@ import type { Selectable } from 'kysely';
 import type { Reader } from '../change';
 import type { MailKind, Tables } from '../db/tables';
 import { invitationContent, resetContent } from './account-content';
-import { releasedContent } from './released-content';
+import { noticeContent, releasedContent } from './released-content';
 import { visitContent } from './visit-content';
 
 export type MailRow = Selectable<Tables['mail']>;
@@ -25,5 +25,7 @@ export const mailContent: Partial<Record<MailKind, ContentMaker>> = {
 	invitation: invitationContent,
 	reset: resetContent,
 	'report-released': releasedContent,
+	unmasking: noticeContent('unmasking'),
+	'kits-low': noticeContent('kits-low'),
 	...visitContent
 };

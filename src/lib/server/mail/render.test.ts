@@ -24,7 +24,9 @@ const good: { [Name in MailName]: MailData<Name> } = {
 	'visit-invitation': { ...visit, minutes: 30 },
 	'visit-moved': { ...visit, minutes: 30, before: 'Mon 8 June 2026, 09:30 Europe/Berlin (+02:00)' },
 	'visit-cancelled': visit,
-	'report-released': { link, since: expires }
+	'report-released': { link, since: expires },
+	unmasking: { link, since: expires },
+	'kits-low': { link, since: expires }
 };
 
 const pageOf = (html: string): Document => new JSDOM(html).window.document;

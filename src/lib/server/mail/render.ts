@@ -34,7 +34,9 @@ const mails = {
 	'visit-invitation': z.strictObject({ ...visit, minutes }),
 	'visit-moved': z.strictObject({ ...visit, minutes, before: line(120) }),
 	'visit-cancelled': z.strictObject(visit),
-	'report-released': z.strictObject({ link, since: line(100) })
+	'report-released': z.strictObject({ link, since: line(100) }),
+	unmasking: z.strictObject({ link, since: line(100) }),
+	'kits-low': z.strictObject({ link, since: line(100) })
 } as const;
 
 export type MailName = keyof typeof mails;

@@ -25,7 +25,7 @@ export const visitRoutes: RouteTable = {
 		POST: 'visit.chase'
 	},
 	'/api/studies/[study=id]/visits/[visit=id]/measurements/[measure=id]': {
-		PUT: 'visit.measure'
+		PUT: 'visit.record'
 	},
 	'/api/studies/[study=id]/visits/[visit=id]/measurements/[measure=id]/history': {
 		GET: 'subject.read'

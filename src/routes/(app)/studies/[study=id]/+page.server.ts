@@ -1,6 +1,10 @@
 import { redirect } from '@sveltejs/kit';
 import { findCuts } from '$lib/domain/cut/cut.reads.server';
 import { findLooks } from '$lib/domain/look/look.reads.server';
+import { findLowStock } from '$lib/domain/kit/kit.reads.server';
+import { toldRoles } from '$lib/domain/unmasking/notice.server';
+import { findRecentUnmaskings } from '$lib/domain/unmasking/unmasking.reads.server';
+import { findToRecord } from '$lib/domain/measurement/measurement.reads.server';
 import { findWaiting } from '$lib/domain/signature/signature.reads.server';
 import {
 	countScreenings,
@@ -14,7 +18,7 @@ import { findWindows } from '$lib/domain/visit/windows.reads.server';
 import { may } from '$lib/server/permission';
 import { actorOf, serve } from '$lib/server/serve';
 import { clock } from '$lib/time/clock';
-import { dateText } from '$lib/time/dates';
+import { dateText, plainDateOf, shortDateText } from '$lib/time/dates';
 import { dateInZone } from '$lib/time/zones';
 import type { PageServerLoad } from './$types';
 import { pointersFor } from './pointers';
@@ -29,26 +33,33 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 	// A board member comes twice a year, to one place.
 	if (roles.size === 1 && roles.has('board_member')) redirect(303, `/studies/${studyId}/board`);
 	return serve(async () => {
-		const atSites = has('coordinator', 'nurse', 'investigator');
+		const atSites = has('coordinator', 'nurse', 'pharmacist', 'investigator');
 		const coordinator = roles.has('coordinator');
 		const analyst = has('statistician', 'independent_statistician');
-		const [work, windows, counts, screenings, state, cuts, looks, toSign] = await Promise.all([
-			atSites ? getWorkAtSites(actor, studyId) : null,
-			coordinator
-				? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
-				: null,
-			has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
-			has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
-			roles.has('data_manager') ? getStudyState(actor, studyId) : null,
-			analyst ? findCuts(actor, studyId) : null,
-			analyst ? findLooks(actor, studyId) : null,
-			may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null
-		]);
+		const [work, windows, counts, screenings, state, cuts, looks, toSign, unmaskings, low, apart] =
+			await Promise.all([
+				atSites ? getWorkAtSites(actor, studyId) : null,
+				coordinator
+					? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
+					: null,
+				has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
+				has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
+				roles.has('data_manager') ? getStudyState(actor, studyId) : null,
+				analyst ? findCuts(actor, studyId) : null,
+				analyst ? findLooks(actor, studyId) : null,
+				may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null,
+				has(...toldRoles) ? findRecentUnmaskings(actor, studyId) : [],
+				has('coordinator', 'pharmacist', 'data_manager') ? findLowStock(actor, studyId) : [],
+				may(actor.grants, 'visit.record', { studyId }) ? findToRecord(actor, studyId) : []
+			]);
 		return {
 			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
 			work,
+			notices: { unmaskings, low },
 			windows,
 			counts,
+			apart: apart.map((each) => ({ ...each, on: shortDateText(plainDateOf(each.on)) })),
+			pharmacist: roles.has('pharmacist'),
 			screenings,
 			state,
 			toSign:

@@ -95,6 +95,22 @@ function nextSteps(
 				'Check the schedule of activities and publish it: that opens the study.'
 			)
 		];
+	if (state.unapproved > 0)
+		return [
+			to(
+				'/sites',
+				'Sites',
+				`${state.unapproved === 1 ? 'One site waits' : `${state.unapproved} sites wait`} for its approval to be recorded: nobody is enrolled before it.`
+			),
+			...further(state, to)
+		];
+	return further(state, to);
+}
+
+function further(
+	state: StudyState,
+	to: (path: string, label: string, text: string) => Pointer
+): Pointer[] {
 	if (state.people === 0 && state.subjects === 0)
 		return [
 			to(

@@ -1,4 +1,7 @@
 import { z } from 'zod';
+import { bestChance } from '$lib/domain/randomisation/allocation.input';
+import { usualChance } from '$lib/domain/randomisation/allocation.server';
+import { minimises } from '$lib/domain/study/allocation-method';
 import {
 	askForList,
 	getAllocationState
@@ -12,29 +15,32 @@ import { actorOf, serve } from '$lib/server/serve';
 import { instantText } from '$lib/time/zones';
 import type { Actions, PageServerLoad } from './$types';
 
-const nothing = z.object({});
+const makeForm = z.object({ bestChance: bestChance.optional() });
 
 export const load: PageServerLoad = async ({ locals, params }) => {
 	const actor = actorOf({ locals });
-	const [{ record, job }, protocol] = await serve(() =>
+	const [{ record, used, job }, protocol] = await serve(() =>
 		Promise.all([getAllocationState(actor, params.study), getProtocol(actor, params.study)])
 	);
 	return {
 		record: record && { ...record, madeAt: instantText(record.madeAt, 'UTC') },
+		used,
 		job,
+		minimises: minimises(protocol.definition),
+		code: protocol.definition.code,
 		randomised: isRandomised(protocol.definition),
 		published: protocol.status === 'published',
 		arms: armsWords(protocol.definition),
 		strata: strataWords(protocol.definition),
 		mayMake: may(actor.grants, 'allocation.make', { studyId: params.study }),
-		form: await formFor(nothing)
+		form: await formFor(makeForm, minimises(protocol.definition) ? { bestChance: usualChance } : {})
 	};
 };
 
 export const actions: Actions = {
 	default: async ({ request, locals, params }) =>
-		submit(request, nothing, async () => {
-			await askForList(actorOf({ locals }), params.study);
+		submit(request, makeForm, async (data) => {
+			await askForList(actorOf({ locals }), params.study, data);
 			return 'The list is being made.';
 		})
 };

@@ -3,6 +3,7 @@ import {
 	askForList,
 	getAllocationState
 } from '$lib/domain/randomisation/allocation.commands.server';
+import { askForListInput } from '$lib/domain/randomisation/allocation.input';
 import { endpoint } from '$lib/server/api/endpoint';
 
 export const GET = endpoint({
@@ -17,6 +18,7 @@ export const GET = endpoint({
 				askedBy: z.string()
 			})
 			.nullable(),
+		used: z.number(),
 		job: z
 			.object({
 				id: z.uuid(),
@@ -27,14 +29,16 @@ export const GET = endpoint({
 			.nullable()
 	}),
 	handle: async ({ actor, params }) => {
-		const { record, job } = await getAllocationState(actor, params.study as string);
-		return { record: record && { ...record, madeAt: record.madeAt.toISOString() }, job };
+		const { record, used, job } = await getAllocationState(actor, params.study as string);
+		return { record: record && { ...record, madeAt: record.madeAt.toISOString() }, used, job };
 	}
 });
 
 export const POST = endpoint({
-	summary: 'Asks for the allocation list, once.',
+	summary:
+		'Asks for the allocation list, once. Where the study minimises, with the chance of the favoured arm.',
+	body: askForListInput,
 	response: z.object({ jobRunId: z.uuid() }),
 	status: 201,
-	handle: ({ actor, params }) => askForList(actor, params.study as string)
+	handle: ({ actor, params, body }) => askForList(actor, params.study as string, body)
 });

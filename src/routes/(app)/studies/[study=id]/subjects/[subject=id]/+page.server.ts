@@ -1,8 +1,10 @@
 import { z } from 'zod';
+import { correctStratum } from '$lib/domain/randomisation/stratum.commands.server';
 import { exitKinds, exitMeanings } from '$lib/domain/subject/exit';
 import { recordExit } from '$lib/domain/subject/exit.commands.server';
 import { getSubjectRecord } from '$lib/domain/subject/record.reads.server';
 import { randomiseSubject, saveContactDetails } from '$lib/domain/subject/subject.commands.server';
+import { besideFields, stratumForm, stratumFrom } from '$lib/domain/subject/subject.forms';
 import { contactForm, exitForm, exitInput } from '$lib/domain/subject/subject.input';
 import { getThreadFrame } from '$lib/domain/subject/threads.reads.server';
 import { formFor, submit } from '$lib/server/forms';
@@ -24,6 +26,21 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 		return {
 			record,
 			frame,
+			openLabel: !record.maskedStudy,
+			stratum:
+				record.may.correct && record.strata.length > 0
+					? await formFor(
+							stratumForm(record.strata),
+							{
+								...Object.fromEntries(
+									record.strata.map((each) => [`stratum_${each.key}`, each.level])
+								),
+								reason: '',
+								version: record.subject.version
+							},
+							'stratum'
+						)
+					: null,
 			mayBook: may(actor.grants, 'visit.book', scope),
 			kinds: exitKinds
 				.filter((kind) => !record.exits.includes(kind))
@@ -57,15 +74,40 @@ export const actions: Actions = {
 			request,
 			nothing,
 			async () => {
-				const { kitNumber } = await randomiseSubject(
+				const { kitNumber, arm } = await randomiseSubject(
 					actorOf({ locals }),
 					params.study,
 					params.subject
 				);
-				return `Randomised. Give kit ${kitNumber}.`;
+				return arm === null
+					? `Randomised. Give kit ${kitNumber}.`
+					: `Randomised to ${arm}. Give kit ${kitNumber}.`;
 			},
 			'randomise'
 		),
+	stratum: async ({ request, locals, params }) => {
+		const actor = actorOf({ locals });
+		const { strata } = await serve(() => getSubjectRecord(actor, params.study, params.subject));
+		return submit(
+			request,
+			stratumForm(strata),
+			async (data) => {
+				const { afterAllocation } = await besideFields(() =>
+					correctStratum(
+						actor,
+						params.study,
+						params.subject,
+						stratumFrom(data),
+						Number(data.version)
+					)
+				);
+				return afterAllocation
+					? 'Corrected as data. The allocation stays, and a deviation says so.'
+					: 'Corrected.';
+			},
+			'stratum'
+		);
+	},
 	exit: ({ request, locals, params }) =>
 		submit(
 			request,

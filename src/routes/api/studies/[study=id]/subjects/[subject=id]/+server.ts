@@ -9,6 +9,8 @@ export const GET = endpoint({
 		number: z.string(),
 		version: z.number(),
 		kitNumber: z.string().nullable(),
+		/** Where the study masks nothing. */
+		arm: z.string().nullable(),
 		items: z.array(
 			z.object({
 				id: z.string(),
@@ -40,6 +42,7 @@ export const GET = endpoint({
 			number: subject.number,
 			version: subject.version,
 			kitNumber: subject.kitNumber,
+			arm: subject.arm,
 			items: items.map(({ id, kind, when, title, lines, measurements }) => ({
 				id,
 				kind,
