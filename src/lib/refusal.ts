@@ -36,6 +36,22 @@ export const refusals = {
 		say: () =>
 			'Somebody changed this since you opened it. Nothing was overwritten: look at it again and repeat your change.'
 	},
+	/** An edit of a draft that somebody else edited meanwhile. */
+	DRAFT_CHANGED: {
+		status: 412,
+		say: (f) =>
+			`${f.who} changed this draft meanwhile: ${f.what} Nothing of yours was kept or lost yet: look at it and apply your change again.`
+	},
+	SITE_STAYS: {
+		status: 422,
+		say: (f) =>
+			`The site “${f.site}” has been part of a published version: it stays, with its records.`
+	},
+	SITE_IN_USE: {
+		status: 409,
+		say: () =>
+			'A site or consent version that is to go is still in use: people have roles at the site, or records refer to it. End those first.'
+	},
 	CONFLICT: {
 		status: 409,
 		say: (f) => String(f.what ?? 'This clashes with something already there.')
@@ -73,6 +89,10 @@ export const refusals = {
 	NOT_DRAFT: { status: 409, say: () => 'This protocol version is published and never changes.' },
 	NOT_PUBLISHED: { status: 409, say: () => 'The study has no published protocol version yet.' },
 	DEFINITION: { status: 422, say: (f) => `The study definition needs another look: ${f.why}` },
+	DEFINITION_FILE: {
+		status: 422,
+		say: (f) => `This file was not taken, and nothing was made. ${f.why}`
+	},
 	SITE_NOT_APPROVED: {
 		status: 422,
 		say: (f) =>

@@ -1,9 +1,6 @@
 import { afterAll, beforeAll, describe, expect, test } from 'vitest';
-import {
-	createStudy,
-	editDraftVisit,
-	publishProtocol
-} from '../../src/lib/domain/study/study.commands.server';
+import { editDraft } from '../../src/lib/domain/study/draft.commands.server';
+import { createStudy, publishProtocol } from '../../src/lib/domain/study/study.commands.server';
 import { getProtocol } from '../../src/lib/domain/study/study.reads.server';
 import type { CreateStudyInput } from '../../src/lib/domain/study/study.input';
 import { actorFor } from '../../src/lib/server/auth/actor';
@@ -87,41 +84,31 @@ describe('a new study', () => {
 		expect(events).toEqual([{ action: 'refused', record: 'study.create' }]);
 	});
 
+	const visit = (key: string, set: Record<string, unknown>) => ({
+		edits: [{ edit: 'change' as const, list: 'visits' as const, key, set }]
+	});
+	const day = (amount: number) => ({ amount, unit: 'day' });
+
 	test('a draft visit changes in place, and a stale change is refused', async () => {
 		const before = await getProtocol(manager, studyId);
-		const visit = { key: 'month-3', name: 'Month three', lengthMinutes: 50, before: 10, after: 12 };
-		await editDraftVisit(manager, studyId, visit, before.version);
+		const set = { name: 'Month three', lengthMinutes: 50, before: day(10), after: day(12) };
+		await editDraft(manager, studyId, visit('month-3', set), before.version);
 		await expect(
-			editDraftVisit(manager, studyId, { ...visit, name: 'Other' }, before.version)
-		).rejects.toMatchObject({ code: 'STALE' });
+			editDraft(manager, studyId, visit('month-3', { name: 'Other' }), before.version)
+		).rejects.toMatchObject({ code: 'DRAFT_CHANGED', status: 412 });
 		const after = await getProtocol(manager, studyId);
-		expect(after.definition.visits.find((each) => each.key === 'month-3')).toMatchObject({
-			name: 'Month three',
-			lengthMinutes: 50,
-			before: { amount: 10, unit: 'day' },
-			after: { amount: 12, unit: 'day' }
-		});
+		expect(after.definition.visits.find((each) => each.key === 'month-3')).toMatchObject(set);
 	});
 
 	test('is not published while its windows overlap', async () => {
 		const before = await getProtocol(manager, studyId);
-		await editDraftVisit(
-			manager,
-			studyId,
-			{ key: 'month-1', name: 'Month 1', lengthMinutes: 30, before: 30, after: 7 },
-			before.version
-		);
+		await editDraft(manager, studyId, visit('month-1', { before: day(30) }), before.version);
 		const broken = await getProtocol(manager, studyId);
 		await expect(publishProtocol(manager, studyId, broken.version)).rejects.toMatchObject({
 			code: 'DEFINITION',
 			message: expect.stringContaining('overlap')
 		});
-		await editDraftVisit(
-			manager,
-			studyId,
-			{ key: 'month-1', name: 'Month 1', lengthMinutes: 30, before: 7, after: 7 },
-			broken.version
-		);
+		await editDraft(manager, studyId, visit('month-1', { before: day(7) }), broken.version);
 	});
 
 	test('is published once: the schedule becomes rows, the study is open, the version is frozen', async () => {

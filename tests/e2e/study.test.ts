@@ -92,24 +92,34 @@ test('a data manager makes a study from a template, changes a window, and publis
 	await page.getByLabel('Time zone of site 1').fill('Europe/London');
 	await page.getByRole('button', { name: 'Make the draft' }).click();
 
-	await expect(page.getByRole('heading', { name: 'Schedule of activities' })).toBeVisible();
+	await expect(page.getByRole('heading', { name: 'Set-up' })).toBeVisible();
+	await axe(page);
+	await page.getByRole('link', { name: 'Read it as a whole' }).click();
 	await expect(page.getByText('Two arms, allocated by chance in equal parts')).toBeVisible();
 	await expect(page.getByRole('row', { name: /^Month 24/ })).toContainText(
 		'24 months after randomisation'
 	);
 	await axe(page);
+	await page.getByRole('link', { name: 'Change', exact: true }).click();
 
-	// A window that overlaps its neighbour's stops publishing, and is mended.
-	const change = async (before: string) => {
-		await page.getByRole('link', { name: 'Change Month 1', exact: true }).click();
-		await page.getByLabel('Window before').fill(before);
-		await page.getByRole('button', { name: 'Keep' }).click();
-		await expect(page.getByRole('button', { name: 'Keep' })).toHaveCount(0);
-	};
-	await change('25');
-	await expect(page.getByText(/The windows of “Week 2” and “Month 1” overlap/)).toBeVisible();
+	// A window that overlaps its neighbour's stops publishing; the finding leads to its field.
+	await page.getByRole('link', { name: 'Visits', exact: true }).click();
+	await page.getByRole('link', { name: 'Month 1', exact: true }).click();
+	const before = page.getByLabel('Window before the target: how many');
+	await before.fill('25');
+	await page.getByRole('button', { name: 'Keep' }).click();
+	await expect(page.getByRole('button', { name: 'Keep' })).toBeDisabled();
+	await page.getByRole('link', { name: 'Overview' }).click();
+	await expect(
+		page.getByText(/The windows of “Week 2” and “Month 1” overlap/).first()
+	).toBeVisible();
 	await expect(page.getByRole('button', { name: 'Publish version 1' })).toBeDisabled();
-	await change('7');
+	await page.getByRole('link', { name: /^Go there: The windows of “Week 2”/ }).click();
+	await expect(before).toBeFocused();
+	await before.fill('7');
+	await page.keyboard.press('Enter');
+	await expect(page.getByRole('button', { name: 'Keep' })).toBeDisabled();
+	await page.getByRole('link', { name: 'Overview' }).click();
 	await expect(page.getByText('Nothing found.')).toBeVisible();
 
 	const publish = page.getByRole('button', { name: 'Publish version 1' });

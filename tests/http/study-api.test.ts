@@ -171,7 +171,6 @@ describe('what is wrong is refused with a field and a sentence, and nothing is w
 	const texts = [null, 7, [], {}, nul, long, '\u{1F9F5}'];
 	const dates = [null, 7, '', '2026-02-30', '2026-13-01', '30.4.2026', '0000-00-00', nul, long];
 	const ids = [null, 7, '', 'not-an-id', nul, '00000000-0000-4000-8000-000000000000'];
-	const numbers = ['x', null, 1e308, -1, 1.5, {}];
 
 	type Case = [string, string, string, unknown, Record<string, string>?];
 	const cases = async (): Promise<[Visitor, ...Case][]> => {
@@ -189,7 +188,9 @@ describe('what is wrong is refused with a field and a sentence, and nothing is w
 		const enrol = { enrolledOn: '2026-03-02', ...particulars };
 		const contact = { name: 'Ada Reed' };
 		const exit = { kind: 'died', happenedOn: '2026-03-02' };
-		const visit = { key: 'baseline', name: 'Baseline', lengthMinutes: 30, before: 0, after: 7 };
+		const edit = { edit: 'change', list: 'visits', key: 'baseline', set: { lengthMinutes: 30 } };
+		const cells = (cell: object) => [{ edit: 'cells', cells: [cell] }];
+		const blank = { code: 'NEVER-2', name: 'Never' };
 		const made: [Visitor, ...Case][] = [];
 		const each = (
 			visitor: Visitor,
@@ -230,8 +231,33 @@ describe('what is wrong is refused with a field and a sentence, and nothing is w
 			Array.from({ length: 200 }, () => ({ name: 'North', zone: 'UTC' }))
 		]);
 		made.push([manager, 'extra field', 'POST', '/api/studies', { ...study, status: 'open' }]);
-		each(manager, 'PATCH', to('/protocol'), visit, 'before', numbers, at(1));
-		each(manager, 'PATCH', to('/protocol'), visit, 'lengthMinutes', [...numbers, 4, 721], at(1));
+		each(manager, 'POST', '/api/studies/blank', blank, 'code', [...texts, 'a b', "';--"]);
+		each(manager, 'POST', '/api/studies/blank', blank, 'name', texts.slice(0, 6));
+		each(
+			manager,
+			'PATCH',
+			to('/protocol'),
+			{ edits: [edit] },
+			'edits',
+			[
+				null,
+				[],
+				'x',
+				[{}],
+				[{ ...edit, edit: 'replace' }],
+				[{ ...edit, list: 'people' }],
+				[{ ...edit, key: long }],
+				[{ ...edit, set: {} }],
+				[{ ...edit, set: 'x' }],
+				[{ ...edit, more: 1 }],
+				[{ edit: 'facts', set: { format: 'other' } }],
+				[{ edit: 'move', list: 'visits', key: 'baseline', to: -1 }],
+				cells({ visit: 'Not a key', measure: 'egfr', on: true }),
+				cells({ visit: 'baseline', measure: 'egfr', on: 'yes' }),
+				Array.from({ length: 1001 }, () => edit)
+			],
+			at(1)
+		);
 		each(
 			coordinator,
 			'POST',

@@ -7,6 +7,10 @@ export type Facts = Readonly<Record<string, string | number>>;
 const sentences = {
 	// Study definitions
 	FILE_NOT_JSON: (f) => `The file is not readable as JSON: ${f.detail}.`,
+	FILE_TOO_LARGE: (f) => `The file is larger than ${f.limit} MB: it cannot be a study definition.`,
+	FILE_NOT_TEXT: () => 'The file is not readable as UTF-8 text.',
+	FILE_OTHER_KIND: (f) =>
+		`The file says it is of the kind “${f.kind}”. A study definition says “heddle.study/1”.`,
 	FIELD_MISSING: () => 'This is missing.',
 	FIELD_UNKNOWN: (f) =>
 		`There is no field called “${f.name}” here. Check the spelling or remove it.`,
@@ -73,6 +77,43 @@ const sentences = {
 		'There is no consent version yet. Nobody can be enrolled without one.',
 	ELIGIBILITY_MISSING: () => 'There are no eligibility criteria.',
 
+	ANCHOR_SELF: (f) =>
+		`The visit “${f.visit}” is counted from itself. Count it from enrolment, randomisation or another visit.`,
+	VISIT_TOO_LONG: (f) =>
+		`“${f.visit}” takes ${f.minutes} minutes; a room is held for at most ${f.most}.`,
+	STRATA_TOO_MANY: (f) =>
+		`There are ${f.strata} strata for ${f.subjects} planned subjects: some strata will stay empty. Use fewer factors or levels, or minimisation.`,
+	STRATA_THIN: (f) =>
+		`There are ${f.strata} strata for ${f.subjects} planned subjects, fewer than ${f.least} in each: blocks will seldom be completed.`,
+	STRATUM_SITE_EMPTY: (f) =>
+		`The site “${f.site}” plans to enrol nobody, so its strata stay empty.`,
+	LEVEL_TWICE: (f) =>
+		`Two levels of “${f.stratum}” are both called “${f.level}”: one of them can have no subjects.`,
+	LEVEL_NOT_A_CHOICE: (f) =>
+		`“${f.level}” is a level of “${f.stratum}”, but not one of the choices asked at enrolment: it can have no subjects.`,
+	PLAN_SITE_UNKNOWN: (f) => `The enrolment plan names the site ${f.site}, which is not a site.`,
+	PLAN_DIFFERS: (f) =>
+		`The enrolment plan adds up to ${f.planned} subjects; the study plans ${f.subjects}.`,
+	CLOSURE_INSIDE_OUT: (f) =>
+		`A closure of the site “${f.site}” ends on ${f.to}, before it begins on ${f.from}.`,
+	MINORS_INSIDE_OUT: (f) =>
+		`Assent is asked from ${f.assent} years, which is not before majority at ${f.majority}.`,
+	MINORS_WITHOUT_BIRTH_DATE: () =>
+		'Minors take part, but no date of birth is asked: nobody will know when they come of age.',
+	BASELINE_OF_CHANGE: (f) =>
+		`“${f.measure}” is a change from “${f.visit}”, where “${f.input}” is not measured.`,
+	BASELINE_OF_CHANGE_LATER: (f) =>
+		`“${f.measure}” is worked out at “${f.at}”, which comes before its baseline “${f.visit}”.`,
+
+	// Edits of a draft
+	EDIT_NO_SUCH: (f) => `There is no ${f.what} “${f.key}” any more.`,
+	EDIT_KEY_TAKEN: (f) => `There is another ${f.what} with the key “${f.key}”. Give one of its own.`,
+	EDIT_STILL_USED: (f) =>
+		`The ${f.what} “${f.name}” cannot be taken away yet. It is still used by ${f.by}.`,
+	EDIT_KEY_BY_RENAMING: (f) =>
+		`The key of a ${f.what} is changed by renaming it, so that all that refers to it follows.`,
+	EDIT_NO_CELL: (f) => `The schedule has no visit “${f.visit}” or no measure “${f.measure}”.`,
+
 	// Numbers of subjects and kits
 	SUBJECT_NUMBER_SHAPE: (f) =>
 		`“${f.text}” is not a subject number. It has two digits for the site, four for the subject and a check digit: 02-0017-0.`,
@@ -117,6 +158,8 @@ const sentences = {
 	NOT_DONE_REASON: () => 'Choose the reason from the list.',
 	DERIVED_NOT_ENTERED: (f) => `“${f.measure}” is worked out from other values and is not entered.`,
 	COMPARISON: (f) => `${f.lower} must be below ${f.higher}: ${f.lowerValue} and ${f.higherValue}.`,
+	COMPARISON_ABOVE: (f) =>
+		`${f.lower} must not be above ${f.higher}: ${f.lowerValue} and ${f.higherValue}.`,
 	DERIVED_INPUT_ABSENT: (f) => `“${f.measure}” cannot be worked out: ${f.input} is not there.`,
 	DERIVED_OUT_OF_SCOPE: (f) => `“${f.measure}” cannot be worked out: ${f.why}.`,
 

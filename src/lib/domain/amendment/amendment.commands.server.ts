@@ -87,73 +87,24 @@ export async function amendmentColumns(
 	};
 }
 
-/** Sites, rooms and consent forms that the version names and the study has not yet. What is there already stays. */
-export async function addPlaces(
+/** Refuses a version that would move a site to another time zone: what is booked there would move with it. */
+export async function keepZones(
 	writer: Writer,
 	studyId: string,
 	definition: StudyDefinition
 ): Promise<void> {
-	const sites = new Map(
-		(
-			await writer
-				.selectFrom('site')
-				.select(['id', 'code', 'zone', 'name', 'opening'])
-				.where('study_id', '=', studyId)
-				.execute()
-		).map((site) => [site.code, site])
-	);
+	const sites = await writer
+		.selectFrom('site')
+		.select(['code', 'zone'])
+		.where('study_id', '=', studyId)
+		.execute();
 	for (const site of definition.sites) {
-		const there = sites.get(site.code);
+		const there = sites.find((each) => each.code === site.code);
 		if (there && there.zone !== site.zone)
 			throw new Refusal('DEFINITION', {
 				why: `Site ${site.code} is in ${there.zone}: its time zone cannot change, or what was booked would move.`
 			});
-		const id = there?.id ?? newId();
-		const opening = JSON.stringify(site.openingHours);
-		if (!there)
-			await writer
-				.insertInto('site')
-				.values({
-					id,
-					study_id: studyId,
-					code: site.code,
-					name: site.name,
-					zone: site.zone,
-					opening
-				})
-				.execute();
-		else if (there.name !== site.name || JSON.stringify(there.opening) !== opening)
-			await writer
-				.updateTable('site')
-				.set({ name: site.name, opening })
-				.where('id', '=', id)
-				.execute();
-		const rooms = new Set(
-			(await writer.selectFrom('room').select('name').where('site_id', '=', id).execute()).map(
-				(room) => room.name
-			)
-		);
-		const fresh = [...new Set(site.rooms.map((room) => room.name.slice(0, 80)))].filter(
-			(name) => !rooms.has(name)
-		);
-		if (fresh.length > 0)
-			await writer
-				.insertInto('room')
-				.values(fresh.map((name) => ({ id: newId(), study_id: studyId, site_id: id, name })))
-				.execute();
 	}
-	for (const form of definition.consentVersions)
-		await writer
-			.insertInto('consent_version')
-			.values({
-				id: newId(),
-				study_id: studyId,
-				label: form.version,
-				language: form.language ?? 'en',
-				approved_on: form.from
-			})
-			.onConflict((conflict) => conflict.columns(['study_id', 'label', 'language']).doNothing())
-			.execute();
 }
 
 /** Subjects who are in the study on an older version and may follow the newest without being asked again. */

@@ -5,7 +5,12 @@ import { decimalsOfMeasure, type StudyDefinition } from '../study/definition';
 
 export type MeasuredNumber = { value: number; unit: UnitCode };
 
-export type ComparisonProblem = { measures: [string, string]; problem: Problem<'COMPARISON'> };
+export type ComparisonProblem = {
+	measures: [string, string];
+	/** Soft: kept once the person has looked again and said so. */
+	weight: 'hard' | 'soft';
+	problem: Problem<'COMPARISON' | 'COMPARISON_ABOVE'>;
+};
 
 /**
  * Pairs of values at one visit that cannot both be right, such as a diastolic pressure that is not below the systolic.
@@ -16,15 +21,17 @@ export function checkComparisons(
 	values: Readonly<Record<string, MeasuredNumber | null | undefined>>
 ): ComparisonProblem[] {
 	const measures = new Map(definition.measures.map((each) => [each.key, each]));
-	return definition.comparisons.flatMap(({ lower, higher }) => {
+	return definition.comparisons.flatMap(({ lower, higher, orEqual, weight = 'hard' }) => {
 		const [low, high] = [values[lower], values[higher]];
 		const [lowMeasure, highMeasure] = [measures.get(lower), measures.get(higher)];
 		if (!low || !high || !lowMeasure || !highMeasure || !converts(low.unit, high.unit)) return [];
-		if (convert(low.value, low.unit, high.unit) < high.value) return [];
+		const value = convert(low.value, low.unit, high.unit);
+		if (value < high.value || (orEqual && value === high.value)) return [];
 		return [
 			{
 				measures: [lower, higher] as [string, string],
-				problem: problem('COMPARISON', {
+				weight,
+				problem: problem(orEqual ? 'COMPARISON_ABOVE' : 'COMPARISON', {
 					lower: lowMeasure.name,
 					higher: highMeasure.name,
 					lowerValue: quantityText(low.value, low.unit, decimalsOfMeasure(lowMeasure)),

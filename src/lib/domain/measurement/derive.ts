@@ -4,7 +4,7 @@ import { ageInYears, findPlainDate, type LeapBirthday, type PlainDate } from '..
 import { bad, good, problem, type Problem, type Result } from '../problems';
 import type { DerivedMeasure, Measure, StudyDefinition } from '../study/definition';
 import type { MeasuredNumber } from './compare';
-import { formulaOf, type FormulaInput, type InputValues } from './formulas';
+import { formulaOf, type Formula, type FormulaInput, type InputValues } from './formulas';
 
 /** What is known of the subject on the day of the visit. */
 export type DeriveContext = {
@@ -13,6 +13,8 @@ export type DeriveContext = {
 	measures: Readonly<Record<string, MeasuredNumber | null | undefined>>;
 	/** Numbers, keys of choices, and birth dates, by the key of the characteristic. */
 	characteristics: Readonly<Record<string, string | number | MeasuredNumber | null | undefined>>;
+	/** Values at the study’s baseline visit by the key of the measure; at that visit itself, 'here'. */
+	baseline?: Readonly<Record<string, MeasuredNumber | null | undefined>> | 'here';
 	leapBirthday?: LeapBirthday;
 };
 
@@ -36,15 +38,23 @@ export function derive(
 	const formula = formulaOf(measure.derivedBy.formula);
 	const values: Record<string, number | string> = {};
 	for (const [name, reference] of Object.entries(measure.derivedBy.inputs)) {
-		const needed: FormulaInput = formula.inputs[name] ?? {
-			kind: 'number',
-			unit: measure.unit,
-			name
-		};
+		const needed = neededFor(measure, formula, name);
 		const value = inputValue(needed, reference, context);
 		if (value === null)
 			return bad(problem('DERIVED_INPUT_ABSENT', { measure: measure.name, input: needed.name }));
 		values[name] = value;
+	}
+	if (formula.fromBaseline) {
+		const reference = measure.derivedBy.inputs.value ?? '';
+		const found = baselineValue(neededFor(measure, formula, 'value'), reference, context);
+		if (found === null)
+			return bad(
+				problem('DERIVED_INPUT_ABSENT', {
+					measure: measure.name,
+					input: 'the value at the baseline visit'
+				})
+			);
+		values.baseline = found;
 	}
 	const missing = Object.keys(formula.inputs).find((name) => !(name in values));
 	if (missing)
@@ -70,6 +80,25 @@ export function derive(
 		source: formula.source,
 		inputs: values
 	});
+}
+
+/** What an input needs; where the formula takes what it is given, in the unit of the measure. */
+function neededFor(measure: DerivedMeasure, formula: Formula, name: string): FormulaInput {
+	const needed = formula.inputs[name];
+	return needed && formula.unit !== 'as inputs'
+		? needed
+		: { kind: 'number', unit: measure.unit, name: needed?.name ?? name };
+}
+
+function baselineValue(
+	needed: FormulaInput,
+	reference: string,
+	context: DeriveContext
+): number | null {
+	if (context.baseline === undefined) return null;
+	const measures = context.baseline === 'here' ? context.measures : context.baseline;
+	const found = inputValue(needed, reference, { ...context, measures });
+	return typeof found === 'number' ? found : null;
 }
 
 function inputValue(

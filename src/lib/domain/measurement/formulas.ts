@@ -20,6 +20,8 @@ export type Formula = {
 	inputs: Readonly<Record<string, FormulaInput>>;
 	/** Takes any number of further inputs of the same unit under names of the study's choosing. */
 	variadic?: boolean;
+	/** Also takes the value that its input `value` had at the study’s baseline visit, under the name `baseline`. */
+	fromBaseline?: boolean;
 	/** Why the formula does not apply to these values, or null. */
 	outOfScope?: (values: InputValues) => string | null;
 	compute: (values: InputValues) => number;
@@ -109,6 +111,15 @@ export const formulas = {
 			const all = Object.values(v).map(Number);
 			return all.reduce((total, value) => total + value, 0) / all.length;
 		}
+	},
+	'change-from-baseline': {
+		name: 'Change from baseline',
+		source: 'Arithmetic.',
+		text: 'value at this visit − value at the baseline visit',
+		unit: 'as inputs',
+		inputs: { value: { kind: 'number', unit: '1', name: 'value' } },
+		fromBaseline: true,
+		compute: (v) => number(v, 'value') - number(v, 'baseline')
 	}
 } as const satisfies Record<string, Formula>;
 

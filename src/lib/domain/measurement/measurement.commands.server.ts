@@ -14,9 +14,9 @@ import {
 } from '../visit/visit.reads.server';
 import { clock } from '$lib/time/clock';
 import { assess, type Assessed } from './assess';
-import { checkComparisons, type MeasuredNumber } from './compare';
+import { checkComparisons, type ComparisonProblem, type MeasuredNumber } from './compare';
 import { readDecimal } from './decimal';
-import { deriveAtVisit, measuredNumber } from './derived.server';
+import { deriveAfterBaseline, deriveAtVisit, measuredNumber } from './derived.server';
 import type { RecordMeasurementInput } from './measurement.input';
 import {
 	earlierValues,
@@ -59,8 +59,10 @@ export async function recordMeasurement(
 			const definition = await definitionOf(writer, visit.protocolVersionId);
 			const rows = await valuesAtVisit(writer, visitId);
 			const before = rows.get(measureId);
-			const { value, softAnswer } = await judge(writer, visit, asked, definition, input);
-			refuseAgainstOthers(definition, planned, rows, asked, value);
+			const { value, softAnswer } = await judge(writer, visit, asked, definition, input, {
+				planned,
+				rows
+			});
 			const columns = {
 				...columnsOf(value),
 				soft_answer: softAnswer,
@@ -82,6 +84,7 @@ export async function recordMeasurement(
 				? await alter(writer, before, version as number, columns)
 				: await add(writer, visit, asked, columns);
 			await deriveAtVisit(writer, actor, visit, visit.status === 'completed');
+			await deriveAfterBaseline(writer, actor, visit, definition);
 			return kept;
 		},
 		{ reason: input.reason }
@@ -93,36 +96,44 @@ const refusedBy = (problem: Problem) => {
 	return new Refusal(code, { why: problem.message }, { entry: problem.message });
 };
 
-/** What will be kept, once the rules of the measure agree; an unusual value needs the person's answer. */
+/** What will be kept, once the rules agree, those across measures too; an unusual value needs the person's answer. */
 async function judge(
 	writer: Writer,
 	visit: VisitRow,
-	{ measure }: PlannedMeasure,
+	asked: PlannedMeasure,
 	definition: StudyDefinition,
-	input: RecordMeasurementInput
+	input: RecordMeasurementInput,
+	others: { planned: readonly PlannedMeasure[]; rows: ReadonlyMap<string, MeasurementRow> }
 ): Promise<{ value: Assessed; softAnswer: string | null }> {
+	const { measure } = asked;
 	const earlier = await earlierValues(writer, visit, [measure.key]);
 	const verdict = assess(measure, input.entry, {
 		today: visit.today,
 		...lastAndBaseline(measure, earlier, definition.baselineVisit)
 	});
 	if (verdict.result === 'refused') throw refusedBy(verdict.problem);
-	if (verdict.result === 'ok') return { value: verdict.value, softAnswer: null };
+	const broken = againstOthers(definition, others, asked, verdict.value);
+	const wrong = broken.find(({ weight }) => weight === 'hard');
+	if (wrong) throw refusedBy(wrong.problem);
+	const unusual = [
+		...(verdict.result === 'ask' ? verdict.problems : []),
+		...broken.map(({ problem }) => problem)
+	];
+	if (unusual.length === 0) return { value: verdict.value, softAnswer: null };
 	if (input.softAnswer === '') {
-		const why = verdict.problems.map((each) => each.message).join(' ');
+		const why = unusual.map((each) => each.message).join(' ');
 		throw new Refusal('SOFT_LIMIT', { why }, { softAnswer: why });
 	}
 	return { value: verdict.value, softAnswer: input.softAnswer };
 }
 
-/** Two values of one visit that cannot both be right. */
-function refuseAgainstOthers(
+/** Rules across measures that this value would break with the others of the visit. */
+function againstOthers(
 	definition: StudyDefinition,
-	planned: readonly PlannedMeasure[],
-	rows: ReadonlyMap<string, MeasurementRow>,
+	{ planned, rows }: Parameters<typeof judge>[5],
 	asked: PlannedMeasure,
 	value: Assessed
-): void {
+): ComparisonProblem[] {
 	const values: Record<string, MeasuredNumber | null> = Object.fromEntries(
 		planned.map((each) => [each.measure.key, measuredNumber(rows.get(each.measureId))])
 	);
@@ -130,10 +141,9 @@ function refuseAgainstOthers(
 		value.kind === 'number' || value.kind === 'repeated'
 			? { value: value.value, unit: value.unit }
 			: null;
-	const broken = checkComparisons(definition, values).find((each) =>
+	return checkComparisons(definition, values).filter((each) =>
 		each.measures.includes(asked.measure.key)
 	);
-	if (broken) throw refusedBy(broken.problem);
 }
 
 interface Kept {

@@ -273,6 +273,18 @@ describe('comparisons', () => {
 			'Diastolic pressure must be below Systolic pressure: 130.0 mmHg and 130.0 mmHg.'
 		);
 		expect(checkComparisons(definition, { diastolic: mmHg(200), systolic: null })).toEqual([]);
+		const [pair] = definition.comparisons;
+		const equal = {
+			...definition,
+			comparisons: [
+				{ lower: '', higher: '', ...pair, orEqual: true as const, weight: 'soft' as const }
+			]
+		};
+		const same = { diastolic: mmHg(130), systolic: mmHg(130) };
+		expect(checkComparisons(equal, same)).toEqual([]);
+		expect(checkComparisons(equal, { ...same, systolic: mmHg(129) })).toMatchObject([
+			{ weight: 'soft', problem: { code: 'COMPARISON_ABOVE' } }
+		]);
 	});
 });
 
@@ -402,6 +414,34 @@ describe('derived values', () => {
 				characteristics: {}
 			})
 		).toBe(110);
+	});
+
+	it('a change from baseline is the difference in the measure’s own unit, none without a baseline, and nought there', () => {
+		const change = derived('change-from-baseline', { value: 'measure:weight' }, 'kg', 1);
+		const now = body(82.4, 180);
+		const at = (value: number, unit: 'kg' | '[lb_av]'): DeriveContext => ({
+			...now,
+			baseline: { weight: { value, unit } }
+		});
+		expect(outcome(change, at(85, 'kg'))).toBe(-2.6);
+		// 185 lb is 83.9 kg (1 lb = 0.45359237 kg, exact).
+		expect(outcome(change, at(185, '[lb_av]'))).toBe(-1.5);
+		expect(outcome(change, { ...now, baseline: {} })).toBe('DERIVED_INPUT_ABSENT');
+		expect(outcome(change, now)).toBe('DERIVED_INPUT_ABSENT');
+		expect(outcome(change, { ...now, baseline: 'here' })).toBe(0);
+		expect(outcome(change, { ...at(85, 'kg'), measures: {} })).toBe('DERIVED_INPUT_ABSENT');
+	});
+
+	it('a change of temperature has no offset: from 98.6 °F to 38.0 °C is 1.0 °C or 1.8 °F', () => {
+		const context: DeriveContext = {
+			on: today,
+			measures: { temperature: { value: 38, unit: 'Cel' } },
+			baseline: { temperature: { value: 98.6, unit: '[degF]' } },
+			characteristics: {}
+		};
+		const inputs = { value: 'measure:temperature' };
+		expect(outcome(derived('change-from-baseline', inputs, 'Cel', 1), context)).toBe(1);
+		expect(outcome(derived('change-from-baseline', inputs, '[degF]', 1), context)).toBe(1.8);
 	});
 
 	it('derived from derived, whatever the order', () => {

@@ -24,6 +24,7 @@ export function checkDerived(definition: StudyDefinition, report: Report): void 
 		checkInputs(measure, path, measures, characteristics, report);
 		checkCycle(measure, path, measures, report);
 		checkVisits(definition, measure, path, measures, report);
+		checkBaseline(definition, measure, path, measures, report);
 	});
 }
 
@@ -44,9 +45,11 @@ function checkInputs(
 		report('stops', path, 'UNIT_DOES_NOT_CONVERT', { from: formula.unit, to: measure.unit });
 
 	for (const [input, reference] of Object.entries(inputs)) {
+		// A formula that takes what it is given takes it in the unit of the measure.
 		const needed: FormulaInput | undefined =
-			formula.inputs[input] ??
-			(formula.variadic ? { kind: 'number', unit: measure.unit, name: input } : undefined);
+			formula.unit === 'as inputs' && (formula.variadic || formula.inputs[input])
+				? { kind: 'number', unit: measure.unit, name: input }
+				: formula.inputs[input];
 		if (!needed) {
 			report('stops', path, 'FORMULA_INPUT_UNKNOWN', { formula: key, input });
 			continue;
@@ -106,6 +109,33 @@ function checkCycle(
 		const source = measures.get(key);
 		if (source?.kind === 'derived') open.push(...measuresBehind(source));
 	}
+}
+
+/** A change from baseline needs its value at the baseline visit, and has no sense before it. */
+function checkBaseline(
+	definition: StudyDefinition,
+	measure: DerivedMeasure,
+	path: string,
+	measures: ReadonlyMap<string, Measure>,
+	report: Report
+): void {
+	if (!formulaOf(measure.derivedBy.formula).fromBaseline) return;
+	const baseline = definition.visits.find((visit) => visit.key === definition.baselineVisit);
+	if (!baseline) return;
+	for (const key of measuresBehind(measure))
+		if (measures.has(key) && !definition.schedule[baseline.key]?.includes(key))
+			report('stops', path, 'BASELINE_OF_CHANGE', {
+				measure: measure.name,
+				visit: baseline.name,
+				input: measures.get(key)?.name ?? key
+			});
+	for (const visit of definition.visits)
+		if (visit.order < baseline.order && definition.schedule[visit.key]?.includes(measure.key))
+			report('stops', path, 'BASELINE_OF_CHANGE_LATER', {
+				measure: measure.name,
+				at: visit.name,
+				visit: baseline.name
+			});
 }
 
 function checkVisits(

@@ -30,7 +30,9 @@ function checkAnchors(definition: StudyDefinition, report: Report): boolean {
 			const next = byKey.get(key);
 			if (!next || passed.has(key)) {
 				hold = false;
-				if (next) report('stops', path, 'ANCHOR_CYCLE', { visit: visit.name });
+				if (next && anchor === `visit:${visit.key}` && anchor === visit.anchor)
+					report('stops', path, 'ANCHOR_SELF', { visit: visit.name });
+				else if (next) report('stops', path, 'ANCHOR_CYCLE', { visit: visit.name });
 				else if (anchor === visit.anchor) report('stops', path, 'ANCHOR_UNKNOWN', { anchor: key });
 				return;
 			}

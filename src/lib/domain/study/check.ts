@@ -2,6 +2,7 @@ import { converts } from '../../units/convert';
 import { minutesOfTime } from '../../time/zones';
 import { problem, type Facts, type ProblemCode } from '../problems';
 import { checkDerived } from './check-derived';
+import { checkDesign } from './check-design';
 import { checkMasking } from './check-masking';
 import { checkSchedule } from './check-schedule';
 import { isRandomised, type Measure, type StudyDefinition } from './definition';
@@ -31,6 +32,7 @@ export function checkDefinition(definition: StudyDefinition): Finding[] {
 	checkMasking(definition, report);
 	checkComparisons(definition, report);
 	checkSites(definition, report);
+	checkDesign(definition, report);
 	if (definition.consentVersions.length === 0)
 		report('stops', 'consentVersions', 'CONSENT_VERSION_MISSING');
 	if (definition.eligibility.length === 0) report('warns', 'eligibility', 'ELIGIBILITY_MISSING');

@@ -269,7 +269,20 @@ export const studyDefinition = z
 		visits: z.array(visit).min(1).max(100),
 		measures: z.array(measure).min(1).max(200),
 		comparisons: z
-			.array(z.strictObject({ lower: keySchema, higher: keySchema }))
+			.array(
+				z.strictObject({
+					lower: keySchema,
+					higher: keySchema,
+					orEqual: z
+						.literal(true)
+						.optional()
+						.meta({ description: 'Whether the two may be equal; no when left out.' }),
+					weight: z.enum(['hard', 'soft']).optional().meta({
+						description:
+							'hard refuses what breaks the rule, soft asks to look again; hard when left out.'
+					})
+				})
+			)
 			.max(20)
 			.meta({ description: 'Pairs of measures of which the first must be below the second.' }),
 		schedule: z

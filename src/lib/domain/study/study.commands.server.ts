@@ -7,13 +7,15 @@ import { change, mustHaveChanged, type Writer } from '$lib/server/change';
 import { plainDateOf } from '$lib/time/dates';
 import { clock } from '$lib/time/clock';
 import {
-	addPlaces,
 	amendmentColumns,
 	holdVersion,
+	keepZones,
 	letFollow
 } from '../amendment/amendment.commands.server';
 import { publishAmendmentInput, type PublishAmendmentInput } from '../amendment/amendment.input';
 import { checkDefinition } from './check';
+import { readStudyFile } from './definition-file';
+import { emptyDefinition } from './empty';
 import {
 	decimalsOfMeasure,
 	isRandomised,
@@ -22,7 +24,8 @@ import {
 	type SiteDefinition,
 	type StudyDefinition
 } from './definition';
-import type { CreateStudyInput, EditVisitInput } from './study.input';
+import { settleStudy } from './settle.server';
+import type { CreateBlankInput, CreateStudyInput } from './study.input';
 import { readDefinition } from './template';
 import { findTemplate } from './templates.server';
 
@@ -69,6 +72,38 @@ export async function createStudy(
 	});
 }
 
+/** A new study from nothing: a draft with one visit and one measure, to be set up by hand. */
+export const createBlankStudy = (
+	actor: Actor,
+	{ code, name, training }: CreateBlankInput
+): Promise<{ studyId: string }> =>
+	createStudyFrom(actor, emptyDefinition(code, name), { training });
+
+const mostNamed = 5;
+
+/** A new study from a file with a definition: taken whole, as a draft, or refused with what is wrong and where. */
+export async function createStudyFromFile(
+	actor: Actor,
+	bytes: Uint8Array,
+	{ code, training }: { code?: string | undefined; training: boolean }
+): Promise<{ studyId: string }> {
+	const read = readStudyFile(bytes);
+	if (!read.ok) {
+		const named = read.problems
+			.slice(0, mostNamed)
+			.map(({ path, problem }) => (path === '' ? problem.message : `${path}: ${problem.message}`));
+		const more = read.problems.length - named.length;
+		throw new Refusal(
+			'DEFINITION_FILE',
+			{ why: `${named.join(' ')}${more > 0 ? ` And ${more} more.` : ''}` },
+			Object.fromEntries(
+				read.problems.map(({ path, problem }) => [path || 'file', problem.message])
+			)
+		);
+	}
+	return createStudyFrom(actor, { ...read.definition, ...(code ? { code } : {}) }, { training });
+}
+
 /** A new study from a whole definition: a template that was changed, or a file that somebody wrote. */
 export async function createStudyFrom(
 	actor: Actor,
@@ -107,7 +142,7 @@ export async function createStudyFrom(
 				definition: JSON.stringify(read.definition)
 			})
 			.execute();
-		await addSites(writer, studyId, read.definition);
+		await settleStudy(writer, studyId, read.definition);
 		return { studyId };
 	});
 }
@@ -115,50 +150,8 @@ export async function createStudyFrom(
 const codeTaken = (code: string) =>
 	new Refusal('CODE_TAKEN', { code }, { code: 'There is a study with this code already.' });
 
-async function addSites(writer: Writer, studyId: string, definition: StudyDefinition) {
-	for (const site of definition.sites) {
-		const siteId = newId();
-		await writer
-			.insertInto('site')
-			.values({
-				id: siteId,
-				study_id: studyId,
-				code: site.code,
-				name: site.name,
-				zone: site.zone,
-				opening: JSON.stringify(site.openingHours),
-				closures: JSON.stringify(site.closures ?? [])
-			})
-			.execute();
-		if (site.rooms.length > 0)
-			await writer
-				.insertInto('room')
-				.values(
-					site.rooms.map((room) => ({
-						id: newId(),
-						study_id: studyId,
-						site_id: siteId,
-						name: room.name.slice(0, 80)
-					}))
-				)
-				.execute();
-	}
-	if (definition.consentVersions.length > 0)
-		await writer
-			.insertInto('consent_version')
-			.values(
-				definition.consentVersions.map((version) => ({
-					id: newId(),
-					study_id: studyId,
-					label: version.version,
-					language: version.language ?? 'en',
-					approved_on: version.from
-				}))
-			)
-			.execute();
-}
-
-async function lockedDraft(writer: Writer, studyId: string) {
+/** The newest version, held for this change; refused where it is no draft. */
+export async function lockedDraft(writer: Writer, studyId: string) {
 	const draft = await writer
 		.selectFrom('protocol_version')
 		.select(['id', 'number', 'version', 'definition', 'status', 'summary'])
@@ -173,45 +166,6 @@ async function lockedDraft(writer: Writer, studyId: string) {
 	if (!read.ok) throw new Error(`The draft of study ${studyId} does not hold.`);
 	return { ...draft, definition: read.definition };
 }
-
-/** Changes a visit of the draft in place. */
-export const editDraftVisit = (
-	actor: Actor,
-	studyId: string,
-	input: EditVisitInput,
-	version: number
-): Promise<{ version: number }> =>
-	change(actor, 'study.edit', { studyId }, async (writer) => {
-		const draft = await lockedDraft(writer, studyId);
-		if (!draft.definition.visits.some((visit) => visit.key === input.key))
-			throw new Refusal('NOT_FOUND');
-		const definition: StudyDefinition = {
-			...draft.definition,
-			visits: draft.definition.visits.map((visit) =>
-				visit.key === input.key
-					? {
-							...visit,
-							name: input.name,
-							lengthMinutes: input.lengthMinutes,
-							before: { ...visit.before, amount: input.before },
-							after: { ...visit.after, amount: input.after }
-						}
-					: visit
-			)
-		};
-		const changed = await writer
-			.updateTable('protocol_version')
-			.set({ definition: JSON.stringify(definition) })
-			.where('id', '=', draft.id)
-			.where('version', '=', version)
-			.returning('version')
-			.execute();
-		mustHaveChanged(changed);
-		return { version: changed[0]?.version ?? version };
-	});
-
-/** The longest a visit can hold a room, as the table of bookings has it. */
-const longestMinutes = 720;
 
 export interface Published {
 	protocolVersionId: string;
@@ -238,14 +192,9 @@ export const publishProtocol = (
 		const draft = await lockedDraft(writer, studyId);
 		const { definition } = draft;
 		const stops = checkDefinition(definition).filter((finding) => finding.weight === 'stops');
-		const tooLong = definition.visits.find((visit) => visit.lengthMinutes > longestMinutes);
 		if (stops.length > 0)
 			throw new Refusal('DEFINITION', {
 				why: stops.map((finding) => finding.problem.message).join(' ')
-			});
-		if (tooLong)
-			throw new Refusal('DEFINITION', {
-				why: `“${tooLong.name}” is longer than ${longestMinutes} minutes.`
 			});
 		const amends =
 			draft.number > 1 ? await amendmentColumns(writer, studyId, draft, amendment) : {};
@@ -262,8 +211,9 @@ export const publishProtocol = (
 			.returning(['id', 'version'])
 			.execute();
 		mustHaveChanged(changed);
+		if (draft.number > 1) await keepZones(writer, studyId, definition);
+		await settleStudy(writer, studyId, definition);
 		await layOutSchedule(writer, studyId, draft.id, definition);
-		if (draft.number > 1) await addPlaces(writer, studyId, definition);
 		await writer
 			.updateTable('study')
 			.set({ status: 'open' })

@@ -57,6 +57,20 @@ export const createStudyInput = z.strictObject({
 });
 export type CreateStudyInput = z.output<typeof createStudyInput>;
 
+/** A new study from nothing. */
+export const createBlankInput = z.strictObject({
+	code,
+	name,
+	training: z.boolean().default(false)
+});
+export type CreateBlankInput = z.output<typeof createBlankInput>;
+
+/** What is said beside a file: another code than the file’s own, so that one study can begin from another. */
+export const createFromFileInput = z.strictObject({
+	code: code.optional(),
+	training: z.stringbool().default(false)
+});
+
 /** The same as a form says it: sites as two columns of fields, of which empty rows do not count. */
 export const createStudyForm = z.object({
 	template,
@@ -77,26 +91,3 @@ export const createStudyForm = z.object({
 export const publishInput = z.object({
 	version: z.coerce.number().int().min(1).max(1_000_000_000)
 });
-
-const width = z.coerce
-	.number('Give a whole number.')
-	.int('Give a whole number.')
-	.min(0, 'Give a number from 0 to 366.')
-	.max(366, 'Give a number from 0 to 366.');
-
-/** A draft's visit: its name, its room time, and its window in the unit that the draft has. */
-export const editVisitInput = z.strictObject({
-	key: z.string().max(40),
-	name: line(100, 'Name the visit.'),
-	lengthMinutes: z.coerce
-		.number('Give a whole number.')
-		.int('Give a whole number.')
-		.min(5, 'From 5 to 720 minutes.')
-		.max(720, 'From 5 to 720 minutes.'),
-	before: width,
-	after: width
-});
-export const editVisitForm = editVisitInput.extend({
-	version: z.coerce.number().int().min(1).max(1_000_000_000)
-});
-export type EditVisitInput = z.output<typeof editVisitInput>;

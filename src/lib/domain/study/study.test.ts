@@ -2,8 +2,10 @@ import { readFileSync, writeFileSync } from 'node:fs';
 import { resolve } from 'node:path';
 import { describe, expect, it } from 'vitest';
 import { format } from 'prettier';
+import { plainDateOf } from '../../time/dates';
 import { checkDefinition, mayPublish } from './check';
 import { definitionJsonSchema, measuresAt, type StudyDefinition } from './definition';
+import { placeOf, placeText } from './finding-place';
 import { readDefinition, readTemplate } from './template';
 
 const folder = resolve('templates/studies');
@@ -24,14 +26,16 @@ const codes = (definition: StudyDefinition, weight?: 'stops' | 'warns') =>
 		.map((finding) => finding.problem.code);
 
 describe('templates', () => {
-	it.each(['two-arm-trial.json', 'single-arm-cohort.json'])(
-		'%s reads and may be published',
-		(name) => {
-			const findings = checkDefinition(definitionOf(name));
-			expect(findings).toEqual([]);
-			expect(mayPublish(findings)).toBe(true);
-		}
-	);
+	it.each([
+		'two-arm-trial.json',
+		'three-arm-open-trial.json',
+		'single-arm-cohort.json',
+		'run-in-stepped-schedule.json'
+	])('%s reads and may be published', (name) => {
+		const findings = checkDefinition(definitionOf(name));
+		expect(findings).toEqual([]);
+		expect(mayPublish(findings)).toBe(true);
+	});
 
 	it('the trial has nine visits over 24 months in two masked arms', () => {
 		const definition = trial();
@@ -134,6 +138,14 @@ describe('checking before publishing', () => {
 		return found;
 	};
 
+	const day = plainDateOf;
+	/** The eGFR becomes the change, in kilograms, of another measure. */
+	const changeOf = (draft: StudyDefinition, key: string) =>
+		Object.assign(measure(draft, 'egfr'), {
+			unit: 'kg',
+			derivedBy: { formula: 'change-from-baseline', inputs: { value: `measure:${key}` } }
+		});
+
 	it.each<[string, (draft: StudyDefinition) => void]>([
 		['ARMS_TOO_FEW', (d) => d.arms.pop()],
 		['ANCHOR_WITHOUT_ARMS', (d) => d.arms.pop()],
@@ -146,6 +158,48 @@ describe('checking before publishing', () => {
 			(d) => {
 				visit(d, 'month-3').anchor = 'visit:month-6';
 				visit(d, 'month-6').anchor = 'visit:month-3';
+			}
+		],
+		['ANCHOR_SELF', (d) => void (visit(d, 'month-3').anchor = 'visit:month-3')],
+		['VISIT_TOO_LONG', (d) => void (visit(d, 'month-3').lengthMinutes = 721)],
+		['STRATA_TOO_MANY', (d) => void (d.plannedSubjects = 3)],
+		['LEVEL_TWICE', (d) => void (d.strata[0]!.levels[1]!.name = 'below 45 mL/min/1.73 m²')],
+		['LEVEL_NOT_A_CHOICE', (d) => void (d.strata[0]!.key = 'sex')],
+		[
+			'CLOSURE_INSIDE_OUT',
+			(d) =>
+				void (d.sites[0]!.closures = [
+					{ from: day('2026-08-14'), to: day('2026-08-03'), reason: 'Summer' }
+				])
+		],
+		['MINORS_INSIDE_OUT', (d) => void (d.minors = { majority: 16, assentFrom: 16 })],
+		[
+			'PLAN_SITE_UNKNOWN',
+			(d) =>
+				void (d.enrolmentPlan = {
+					from: '2026-06',
+					months: 12,
+					sites: [{ site: '09', subjects: 240 }]
+				})
+		],
+		[
+			'BASELINE_OF_CHANGE',
+			(d) => {
+				changeOf(d, 'weight');
+				d.schedule.baseline = d.schedule.baseline!.filter((each) => each !== 'weight');
+			}
+		],
+		[
+			'BASELINE_OF_CHANGE_LATER',
+			(d) => {
+				changeOf(d, 'weight');
+				d.baselineVisit = 'month-6';
+			}
+		],
+		[
+			'FORMULA_INPUT_KIND',
+			(d) => {
+				changeOf(d, 'potassium');
 			}
 		],
 		['WINDOW_MONTHS', (d) => void (visit(d, 'week-2').after = { amount: 1, unit: 'month' })],
@@ -254,6 +308,22 @@ describe('checking before publishing', () => {
 			'LIMITS_MISSING',
 			(d) => Object.assign(measure(d, 'weight'), { hardLow: undefined, hardHigh: undefined })
 		],
+		[
+			'PLAN_DIFFERS',
+			(d) =>
+				void (d.enrolmentPlan = {
+					from: '2026-06',
+					months: 12,
+					sites: [{ site: '01', subjects: 7 }]
+				})
+		],
+		[
+			'MINORS_WITHOUT_BIRTH_DATE',
+			(d) => {
+				d.minors = { majority: 18, assentFrom: 7 };
+				d.characteristics = d.characteristics.filter((each) => each.kind !== 'birth-date');
+			}
+		],
 		['ELIGIBILITY_MISSING', (d) => void (d.eligibility = [])],
 		['OPENING_HOURS_MISSING', (d) => void (d.sites[0]!.openingHours = [])],
 		['OPENING_HOURS_TOO_SHORT', (d) => void (visit(d, 'baseline').lengthMinutes = 400)]
@@ -261,6 +331,76 @@ describe('checking before publishing', () => {
 		const draft = change(cohort, edit);
 		expect(codes(draft, 'warns')).toContain(code);
 		expect(mayPublish(checkDefinition(draft))).toBe(true);
+	});
+
+	it('thin strata and a site that enrols nobody are for a person to weigh; minimisation has no strata to fill', () => {
+		const draft = change(trial, (d) => {
+			d.plannedSubjects = 15;
+			d.enrolmentPlan = {
+				from: '2026-06',
+				months: 12,
+				sites: [
+					{ site: '01', subjects: 15 },
+					{ site: '02', subjects: 0 }
+				]
+			};
+		});
+		expect(codes(draft, 'warns')).toEqual(['STRATUM_SITE_EMPTY', 'STRATA_THIN']);
+		draft.allocation = { method: 'minimisation' };
+		draft.plannedSubjects = 3;
+		expect(codes(draft)).not.toContain('STRATA_TOO_MANY');
+	});
+
+	it('what the limits of a definition rule out is refused with what is allowed', () => {
+		const read = readDefinition(
+			change(trial, (d) => {
+				d.arms[0]!.ratio = 0;
+				visit(d, 'month-3').after = { amount: 2000, unit: 'day' };
+				d.measures = Array.from({ length: 400 }, (_, at) => ({
+					...d.measures[0]!,
+					key: `measure-${at}`
+				}));
+			})
+		);
+		if (read.ok) throw new Error('read');
+		expect(Object.fromEntries(read.problems.map((p) => [p.path, p.problem.message]))).toEqual({
+			'arms[0].ratio': 'Give a number from 1 to 10.',
+			'visits[3].after.amount': 'Give a number from 0 to 366.',
+			measures: 'At most 200 allowed here.'
+		});
+	});
+
+	it('every finding has its place: a part of set-up, the item, and the field that takes the focus', () => {
+		const place = (edit: (draft: StudyDefinition) => void, code: string) => {
+			const draft = change(trial, edit);
+			const found = checkDefinition(draft).find(({ problem }) => problem.code === code);
+			if (!found) throw new Error(code);
+			return placeText(placeOf(found, draft));
+		};
+		expect(
+			place((d) => void (visit(d, 'week-2').after = { amount: 9, unit: 'day' }), 'WINDOWS_OVERLAP')
+		).toBe('visits?item=month-1&field=before');
+		expect(place((d) => void (visit(d, 'month-3').anchor = 'visit:month-3'), 'ANCHOR_SELF')).toBe(
+			'visits?item=month-3&field=anchor'
+		);
+		expect(place((d) => void (measure(d, 'potassium').softHigh = 3), 'LIMITS_INSIDE_OUT')).toBe(
+			'measures?item=potassium&field=softLow'
+		);
+		expect(place((d) => void (d.schedule['month-6'] = []), 'VISIT_WITHOUT_MEASURES')).toBe(
+			'schedule?list=visits&item=month-6'
+		);
+		expect(place((d) => void (d.baselineVisit = 'none'), 'VISIT_UNKNOWN')).toBe(
+			'study?field=baselineVisit'
+		);
+		expect(place((d) => void (d.sites[1]!.openingHours = []), 'OPENING_HOURS_MISSING')).toBe(
+			'sites?item=02&field=openingHours'
+		);
+		expect(place((d) => void (d.consentVersions = []), 'CONSENT_VERSION_MISSING')).toBe(
+			'eligibility?field=consentVersions'
+		);
+		expect(place((d) => void (d.strata[0]!.key = 'sex'), 'LEVEL_NOT_A_CHOICE')).toBe(
+			'arms?list=strata&item=sex&field=levels'
+		);
 	});
 
 	it('finds an overlap that only short months bring out', () => {

@@ -37,3 +37,10 @@ export const studyTemplates: readonly StudyTemplate[] = Object.entries(files)
 
 export const findTemplate = (key: string): StudyTemplate | undefined =>
 	studyTemplates.find((template) => template.key === key);
+
+/** The templates as a list to choose from. */
+export const templateHeads = studyTemplates.map(({ key, summary, definition: { name } }) => ({
+	key,
+	name,
+	summary
+}));

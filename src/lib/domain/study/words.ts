@@ -1,6 +1,6 @@
 import { unitText, type UnitCode } from '$lib/units/units';
 import { numberText } from '$lib/units/convert';
-import { isRandomised, type Measure, type PlannedVisit, type StudyDefinition } from './definition';
+import type { Measure, PlannedVisit, StudyDefinition } from './definition';
 
 const numbers = ['no', 'one', 'two', 'three', 'four', 'five', 'six', 'seven', 'eight'];
 const counted = (n: number) => numbers[n] ?? String(n);
@@ -8,7 +8,7 @@ const days = (amount: number, unit: string) => `${amount} ${unit}${amount === 1 
 
 /** 'two arms, 2 to 1: Treatment A (2), Treatment B (1)' */
 export function armsWords(definition: Pick<StudyDefinition, 'arms'>): string {
-	if (!isRandomised(definition as StudyDefinition))
+	if (definition.arms.length < 2)
 		return 'One arm: everybody follows the same plan, and nobody is randomised.';
 	const { arms } = definition;
 	const ratio = arms.map((arm) => arm.ratio).join(' to ');

@@ -2,7 +2,7 @@ import { redirect } from '@sveltejs/kit';
 import { fieldErrors } from '$lib/server/api/fields';
 import { createStudy } from '$lib/domain/study/study.commands.server';
 import { createStudyForm, createStudyInput } from '$lib/domain/study/study.input';
-import { findTemplate, studyTemplates } from '$lib/domain/study/templates.server';
+import { findTemplate, studyTemplates, templateHeads } from '$lib/domain/study/templates.server';
 import { Refusal, type FieldErrors } from '$lib/refusal';
 import { formFor, submit } from '$lib/server/forms';
 import { actorOf } from '$lib/server/serve';
@@ -13,17 +13,14 @@ const zones = Intl.supportedValuesOf('timeZone');
 
 export const load: PageServerLoad = async ({ locals, url }) => {
 	actorOf({ locals });
-	const chosen = findTemplate(url.searchParams.get('template') ?? '') ?? studyTemplates[0];
+	const chosen =
+		findTemplate(url.searchParams.get('template') ?? 'two-arm-trial') ?? studyTemplates[0];
 	if (!chosen) throw new Error('There is no study template.');
 	const { definition } = chosen;
 	// Two rows more than the template has, for those whose browser adds none.
 	const spare = ['', ''];
 	return {
-		templates: studyTemplates.map(({ key, summary, definition: { name } }) => ({
-			key,
-			name,
-			summary
-		})),
+		templates: templateHeads,
 		arms: definition.arms.length,
 		zones,
 		form: await formFor(createStudyForm, {
@@ -62,7 +59,7 @@ export const actions: Actions = {
 				throw new Refusal('INVALID', {}, besideRows(fieldErrors(input.error), rows));
 			made = (await createStudy(actor, input.data)).studyId;
 		});
-		if (made) redirect(303, `/studies/${made}/schedule`);
+		if (made) redirect(303, `/studies/${made}/setup`);
 		return answer;
 	}
 };

@@ -1,10 +1,7 @@
 import { redirect } from '@sveltejs/kit';
 import { createAmendment } from '$lib/domain/amendment/amendment.commands.server';
-import { amendmentInput, publishAmendmentForm } from '$lib/domain/amendment/amendment.input';
-import { findAmends } from '$lib/domain/amendment/amends.reads.server';
-import { checkDefinition, mayPublish } from '$lib/domain/study/check';
-import { editDraftVisit, publishProtocol } from '$lib/domain/study/study.commands.server';
-import { editVisitForm, publishInput } from '$lib/domain/study/study.input';
+import { amendmentInput } from '$lib/domain/amendment/amendment.input';
+import { shownFindings } from '$lib/domain/study/shown-findings';
 import { getProtocol, getStudy } from '$lib/domain/study/study.reads.server';
 import { planVisits } from '$lib/domain/schedule/window';
 import {
@@ -23,6 +20,15 @@ import { shortDateText } from '$lib/time/dates';
 import { dateInZone } from '$lib/time/zones';
 import type { Actions, PageServerLoad } from './$types';
 
+/** What came of publishing: the first version opens the study, a later one is followed by some or by nobody yet. */
+function followWords(follow: string | null): string {
+	if (follow === null) return 'Published. The study is open.';
+	if (follow === 'many') return 'Published. The subjects follow it one after the other.';
+	const count = Number(follow);
+	if (!Number.isSafeInteger(count) || count <= 0) return 'Published. Nobody follows it yet.';
+	return `Published. ${count === 1 ? 'One subject follows it.' : `${count} subjects follow it.`}`;
+}
+
 export const load: PageServerLoad = async ({ locals, params, url }) => {
 	const actor = actorOf({ locals });
 	const scope = { studyId: params.study };
@@ -30,11 +36,7 @@ export const load: PageServerLoad = async ({ locals, params, url }) => {
 		Promise.all([getProtocol(actor, params.study), getStudy(actor, params.study)])
 	);
 	const { definition } = protocol;
-	const findings = checkDefinition(definition);
-	const editable = protocol.status === 'draft' && may(actor.grants, 'study.edit', scope);
-	const edited = editable
-		? definition.visits.find((visit) => visit.key === url.searchParams.get('visit'))
-		: undefined;
+	const draft = protocol.status === 'draft';
 	// Every anchor on the same day, so that the three dates can be read side by side.
 	const example = dateInZone(clock.now(), definition.sites[0]?.zone ?? 'UTC');
 	const planned = planVisits(definition, { enrolment: example, randomisation: example });
@@ -89,95 +91,30 @@ export const load: PageServerLoad = async ({ locals, params, url }) => {
 			from: shortDateText(version.from)
 		})),
 		characteristics: definition.characteristics.map((each) => each.name),
-		findings: findings.map(({ weight, path, problem }) => ({ weight, path, say: problem.message })),
-		editable,
-		mayPublish:
-			protocol.status === 'draft' && may(actor.grants, 'study.publish', scope)
-				? mayPublish(findings)
-				: null,
-		mayAmend: protocol.status === 'published' && may(actor.grants, 'study.edit', scope),
+		findings: draft ? shownFindings(definition) : [],
+		editable: draft && may(actor.grants, 'study.edit', scope),
+		mayAmend: !draft && may(actor.grants, 'study.edit', scope),
 		amend: await formFor(amendmentInput, { summary: '' }, 'amend'),
-		amends:
-			protocol.status === 'draft' && protocol.number > 1
-				? await serve(() => findAmends(actor, params.study))
-				: null,
-		publishAmendment: await formFor(
-			publishAmendmentForm,
-			{ approvedOn: '', reconsent: '', reconsentBy: '', version: protocol.version },
-			'publishAmendment'
-		),
-		publish: await formFor(publishInput, { version: protocol.version }, 'publish'),
-		edit: edited
-			? {
-					name: edited.name,
-					before: edited.before.unit,
-					after: edited.after.unit,
-					form: await formFor(
-						editVisitForm,
-						{
-							key: edited.key,
-							name: edited.name,
-							lengthMinutes: edited.lengthMinutes,
-							before: edited.before.amount,
-							after: edited.after.amount,
-							version: protocol.version
-						},
-						'edit'
-					)
-				}
-			: null
+		justPublished:
+			!draft && url.searchParams.get('published') === 'yes'
+				? followWords(url.searchParams.get('follow'))
+				: null
 	};
 };
 
 export const actions: Actions = {
-	publish: async ({ request, locals, params }) =>
-		submit(
-			request,
-			publishInput,
-			async ({ version }) => {
-				await publishProtocol(actorOf({ locals }), params.study, version);
-				return 'Published. The study is open.';
-			},
-			'publish'
-		),
-	amend: async ({ request, locals, params }) =>
-		submit(
-			request,
-			amendmentInput,
-			async (data) => {
-				const { number } = await createAmendment(actorOf({ locals }), params.study, data);
-				return `Version ${number} is a draft now. Change it, then publish it.`;
-			},
-			'amend'
-		),
-	publishAmendment: async ({ request, locals, params }) =>
-		submit(
-			request,
-			publishAmendmentForm,
-			async ({ version, ...answers }) => {
-				const { followed, jobRunId } = await publishProtocol(
-					actorOf({ locals }),
-					params.study,
-					version,
-					answers
-				);
-				if (jobRunId) return 'Published. The subjects follow it one after the other.';
-				return `Published. ${followed === 0 ? 'Nobody follows it yet.' : followed === 1 ? 'One subject follows it.' : `${followed} subjects follow it.`}`;
-			},
-			'publishAmendment'
-		),
-	edit: async ({ request, locals, params }) => {
+	amend: async ({ request, locals, params }) => {
 		let done = false;
 		const answer = await submit(
 			request,
-			editVisitForm,
-			async ({ version, ...visit }) => {
-				await editDraftVisit(actorOf({ locals }), params.study, visit, version);
+			amendmentInput,
+			async (data) => {
+				await createAmendment(actorOf({ locals }), params.study, data);
 				done = true;
 			},
-			'edit'
+			'amend'
 		);
-		if (done) redirect(303, `/studies/${params.study}/schedule`);
+		if (done) redirect(303, `/studies/${params.study}/setup`);
 		return answer;
 	}
 };

@@ -1,7 +1,7 @@
 import { z } from 'zod';
 import { checkDefinition } from '$lib/domain/study/check';
-import { editDraftVisit } from '$lib/domain/study/study.commands.server';
-import { editVisitInput } from '$lib/domain/study/study.input';
+import { editDraft } from '$lib/domain/study/draft.commands.server';
+import { editDraftInput } from '$lib/domain/study/edits.input';
 import { getProtocol } from '$lib/domain/study/study.reads.server';
 import { endpoint } from '$lib/server/api/endpoint';
 
@@ -41,10 +41,23 @@ export const GET = endpoint({
 });
 
 export const PATCH = endpoint({
-	summary: 'Changes a visit of the draft.',
-	body: editVisitInput,
-	response: z.object({ version: z.number() }),
+	summary: 'Changes the draft: all of the edits or none. Answers with the edits that undo them.',
+	body: editDraftInput,
+	response: z.object({
+		version: z.number(),
+		inverse: z.array(z.record(z.string(), z.unknown())),
+		findings: z.array(
+			z.object({
+				weight: z.enum(['stops', 'warns']),
+				path: z.string(),
+				say: z.string(),
+				section: z.string(),
+				place: z.string()
+			})
+		)
+	}),
 	needsVersion: true,
+	limit: 2 * 1024 * 1024,
 	handle: ({ actor, params, body, version }) =>
-		editDraftVisit(actor, params.study as string, body, version)
+		editDraft(actor, params.study as string, body, version)
 });
