@@ -1,3 +1,4 @@
+import type { CutFlow } from '$lib/domain/flow/cut-flow';
 import type { LookReportInput } from '$lib/report';
 import type { GrowthResult, TestedEstimate } from '$lib/stats/types';
 
@@ -248,3 +249,51 @@ export const byArm = (change: Partial<LookReportInput> = {}): LookReportInput =>
 		result: growthResult(['Placebo', 'Venatrol']),
 		...change
 	});
+
+const column = (arm: string | null, n: number) => ({
+	arm,
+	n,
+	discontinued: 1,
+	ended: [
+		{ label: 'died', n: 0 },
+		{ label: 'consent withdrawn', n: 1 },
+		{ label: 'lost to follow-up', n: 2 },
+		{ label: 'stopped visits', n: 0 }
+	],
+	completed: 3,
+	inFollowUp: n - 6,
+	measured: n - 1
+});
+
+/** 40 assessed, 27 enrolled, 25 randomised, at two sites with a plan; by arm where arms are named. */
+export const flowHeld = (arms: [string, string] | null = null): CutFlow => ({
+	flow: {
+		randomises: true,
+		assessed: 40,
+		inScreening: 2,
+		excluded: [
+			{ label: 'eGFR above 60 at screening', n: 8 },
+			{ label: 'Declined', n: 3 }
+		],
+		takenOver: 0,
+		enrolled: 27,
+		notRandomised: [
+			{ label: 'left before', n: 1 },
+			{ label: 'not randomised yet', n: 1 }
+		],
+		columns: arms ? [column(arms[0], 13), column(arms[1], 12)] : [column(null, 25)]
+	},
+	plan: [
+		{ site: 'Northmoor', goal: 30, counts: [4, 9, 16] },
+		{ site: 'Saltreach', goal: 18, counts: [0, 5, 11] }
+	].map(({ site, goal, counts }) => ({
+		site,
+		goal,
+		months: ['2026-04', '2026-05', '2026-06', '2026-07'].map((month, at) => ({
+			month,
+			planned: (goal * Math.min(at + 1, 3)) / 3,
+			enrolled: counts[at] ?? null,
+			inMonth: (counts[at] ?? 0) - (counts[at - 1] ?? 0)
+		}))
+	}))
+});

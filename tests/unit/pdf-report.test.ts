@@ -6,7 +6,7 @@ import { afterAll, beforeAll, describe, expect, test } from 'vitest';
 import { groupedHex, lookReport, type LookReportInput, type TableNode } from '$lib/report';
 import { columnWidths } from '$lib/server/pdf/table';
 import { renderReport } from '$lib/server/pdf/render';
-import { byArm, fingerprint, growthResult, lookInput } from './pdf-fixture';
+import { byArm, fingerprint, flowHeld, growthResult, lookInput } from './pdf-fixture';
 
 const createdAt = new Date('2026-06-01T07:00:00Z');
 let folder: string;
@@ -213,6 +213,48 @@ describe('closed and released copies', () => {
 	});
 });
 
+/** As many reasons as are listed, each as long as may be typed, and sites with long names. */
+function hostileFlow(long: string) {
+	const held = flowHeld();
+	held.flow.excluded = Array.from({ length: 8 }, (_, at) => ({
+		label: `${at} β≥ ${at % 2 ? long : 'did not come for a reason '}`.repeat(12),
+		n: 1
+	}));
+	return { ...held, plan: held.plan.map((site) => ({ ...site, site: `${site.site} ${long} 中` })) };
+}
+
+describe('the flow of participants on paper', () => {
+	test('is drawn and tagged, with the numbers in a table, and by letter in a closed report', async () => {
+		const { pages, path, run, tree } = await printed(byArm({ flow: flowHeld(['Arm A', 'Arm B']) }));
+		const all = flat(pages.join(' '));
+		expect(all).toContain('Assessed for eligibility: 40');
+		expect(all).toContain('Arm B: 12');
+		expect(all).toContain('Enrolment against plan');
+		expect(run('pdfinfo', '-struct', path).match(/^ *Figure\b/gm)).toHaveLength(
+			tree.body.filter((node) => node.kind === 'figure').length
+		);
+		const raw = run('qpdf', '--json', '--json-key=qpdf', path);
+		expect(raw).toContain('/Alt": "u:Assessed for eligibility: 40. Not entered: 11');
+		expect(raw).toContain('/Alt": "u:By 2026-06: 27 enrolled, 48 planned.');
+		expect(run('qpdf', '--check', path)).toContain('No syntax or stream encoding errors');
+	});
+
+	test('a diagram higher than a page is made smaller, and stays whole on one', async () => {
+		const held = flowHeld();
+		const arms = Array.from({ length: 9 }, (_, at) => ({
+			...held.flow.columns[0]!,
+			arm: `Arm ${'ABCDEFGHI'[at]}`
+		}));
+		const { pages } = await printed(
+			byArm({ flow: { ...hostileFlow('a reason'), flow: { ...held.flow, columns: arms } } })
+		);
+		const drawn = pages.filter((page) => /From assessment to the cut-off/.test(page));
+		expect(drawn).toHaveLength(1);
+		expect(drawn[0]).toContain('Assessed for eligibility: 40');
+		expect(drawn[0]!.match(/Completed: 3/g)).toHaveLength(9);
+	});
+});
+
 describe('what people may type', () => {
 	const long = 'Wolfeschlegelsteinhausenbergerdorff'.repeat(3);
 	const hostile: Partial<LookReportInput> = {
@@ -225,6 +267,7 @@ describe('what people may type', () => {
 		group: { kind: 'characteristic', label: `cohort ${long}` },
 		result: growthResult([`First ${long}`, `Second & <last> 中 ${long}`]),
 		cut: { ...lookInput().cut, label: `Cut ${long}` },
+		flow: hostileFlow(long),
 		released: { to: long, at: '2026-06-02T09:30:00Z' }
 	};
 

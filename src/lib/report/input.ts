@@ -1,3 +1,4 @@
+import type { CutFlow } from '$lib/domain/flow/cut-flow';
 import type { GrowthResult } from '$lib/stats/types';
 
 export interface LookReportInput {
@@ -16,6 +17,8 @@ export interface LookReportInput {
 		measurements: number;
 	};
 	look: { number: number; planned: boolean; question: string };
+	/** At the cut-off: everybody together, or by coded arm. Null says that the cut does not hold it. */
+	flow?: CutFlow | null;
 	measure: { name: string; unit: string; derived?: boolean };
 	/** `unit` as beside a number ("years"), `one` as after "per" ("year"); `name` is what the time is ("age"). */
 	time: { name: string; unit: string; one: string };
@@ -105,7 +108,8 @@ export function checkInput(input: LookReportInput): void {
 			`the result was made by engine ${result.engineVersion}, not ${provenance.engineVersion}`
 		);
 	}
-	if (input.group?.kind === 'arm' && input.kind === 'open') {
+	const flowByArm = input.flow?.flow.columns.some((column) => column.arm !== null) ?? false;
+	if ((input.group?.kind === 'arm' || flowByArm) && input.kind === 'open') {
 		throw new ReportFault(
 			'ARMS_IN_OPEN_REPORT',
 			'an open report is pooled; it may not compare arms'

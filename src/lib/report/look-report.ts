@@ -2,6 +2,7 @@ import { dependence, estimates, figures, fit, provenance } from './answer';
 import { count, groupedHex, instant } from './format';
 import { checkInput, ReportFault, type LookReportInput } from './input';
 import { names as namesOf } from './names';
+import { participants } from './participants';
 import { asked, people } from './question';
 import { reportText, type CautionNode, type Definition, type ReportTree } from './tree';
 import { fill, words } from './words';
@@ -58,6 +59,7 @@ export function lookReport(input: LookReportInput): ReportTree {
 		},
 		body: [
 			...asked(input, names),
+			...participants(input),
 			...people(input, names),
 			...estimates(input, names),
 			...dependence(input),
@@ -118,7 +120,8 @@ function refuseArmNames(input: LookReportInput, tree: ReportTree): void {
 		input.cut.label,
 		input.cut.id,
 		...Object.values(input.covariates ?? {}).map((c) => c.label),
-		...input.result.notes.map((n) => n.sentence)
+		...input.result.notes.map((n) => n.sentence),
+		...(input.flow?.flow.excluded ?? []).map(({ label }) => label)
 	];
 	const printed = reportText(tree);
 	for (const armName of armNames) {

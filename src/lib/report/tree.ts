@@ -1,3 +1,5 @@
+import type { FlowData } from '$lib/components/charts/flow';
+import type { PlanData } from '$lib/components/charts/plan';
 import type { ResidualData } from '$lib/components/charts/residual';
 import type { TrajectoryData } from '$lib/components/charts/trajectory';
 
@@ -71,11 +73,33 @@ export interface FigureNode {
 	caption: string;
 	/** The figure in words. */
 	alt: string;
-	chart: { type: 'trajectory'; data: TrajectoryData } | { type: 'residual'; data: ResidualData };
+	chart:
+		| { type: 'trajectory'; data: TrajectoryData }
+		| { type: 'residual'; data: ResidualData }
+		| { type: 'flow'; data: FlowData }
+		| { type: 'plan'; data: PlanData };
 }
 
 export type ReportNode =
 	HeadingNode | ParagraphNode | CautionNode | DefinitionsNode | TableNode | FigureNode;
+
+function chartText(chart: FigureNode['chart']): string[] {
+	switch (chart.type) {
+		case 'trajectory':
+			return [chart.data.x.label, chart.data.y.label, ...chart.data.lines.map((l) => l.label)];
+		case 'residual':
+			return [chart.data.fitted.label, chart.data.residual.label];
+		case 'flow':
+			return flowText(chart.data);
+		case 'plan':
+			return chart.data.months.map(({ month }) => month);
+	}
+}
+
+const flowText = ({ steps, columns }: FlowData): string[] =>
+	[...steps.flatMap(({ main, side }) => (side ? [main, side] : [main])), ...columns].flatMap(
+		({ title, lines }) => [title, ...lines]
+	);
 
 /** Every string that a reader of the tree may see, in order. */
 export function reportText(tree: ReportTree): string[] {
@@ -92,17 +116,7 @@ export function reportText(tree: ReportTree): string[] {
 			case 'table':
 				return [n.caption, ...n.columns.map((c) => c.label), ...n.rows.flat(), n.note ?? ''];
 			case 'figure':
-				return [
-					n.caption,
-					n.alt,
-					...(n.chart.type === 'trajectory'
-						? [
-								n.chart.data.x.label,
-								n.chart.data.y.label,
-								...n.chart.data.lines.map((l) => l.label)
-							]
-						: [n.chart.data.fitted.label, n.chart.data.residual.label])
-				];
+				return [n.caption, n.alt, ...chartText(n.chart)];
 		}
 	};
 	const { cover, everyPage } = tree;

@@ -31,6 +31,8 @@ export interface FlowGeometry {
 export const FLOW_LINE = 18;
 const PAD = 10;
 const GAP = 22;
+/** Columns narrower than this go into another row: their words would be cut. */
+const LEAST = 190;
 
 function fill(box: FlowBox, x: number, y: number, width: number): DrawnBox {
 	const letters = charactersIn(width - 2 * PAD);
@@ -82,14 +84,26 @@ export function flowGeometry(data: FlowData, width: number): FlowGeometry {
 		boxes.push(beside);
 		y = beside.y + beside.height + GAP;
 	}
-	const count = Math.max(1, data.columns.length);
+	const wanted = Math.max(1, data.columns.length);
+	const count = narrow
+		? 1
+		: Math.min(wanted, Math.max(1, Math.floor((width + GAP) / (LEAST + GAP))));
 	const each = narrow ? width - 2 : (width - GAP * (count - 1) - 2) / count;
+	/** Where threads to further rows run down: between the first column and the second. */
+	const trunk = round(1 + each + GAP / 2);
+	const firstBend = round(y - GAP / 2);
 	let lowest = y;
 	data.columns.forEach((column, at) => {
-		const box = fill(column, narrow ? 1 : 1 + at * (each + GAP), narrow ? lowest : y, each);
-		if (above && (!narrow || at === 0)) threads.push(down(above, box));
+		const place = at % count;
+		if (place === 0) y = lowest;
+		const box = fill(column, 1 + place * (each + GAP), y, each);
+		if (above && at < count) threads.push(down(above, box));
+		else if (above && !narrow)
+			threads.push(
+				`M${trunk},${firstBend}V${round(y - GAP / 2)}H${round(box.x + box.width / 2)}V${box.y}`
+			);
 		boxes.push(box);
-		lowest = narrow ? box.y + box.height + GAP : Math.max(lowest, box.y + box.height + GAP);
+		lowest = Math.max(lowest, box.y + box.height + GAP);
 	});
 	return { height: Math.ceil(lowest - GAP + 2), boxes, threads };
 }

@@ -46,11 +46,23 @@ export interface CutSubject {
 	stratum: Record<string, string | number | null>;
 	characteristics: Record<string, string | number | null>;
 	exits: { kind: string; on: string }[];
+	/** Came by the screening log; otherwise taken over from a file. */
+	screened?: boolean;
 	visits: CutVisit[];
 }
 
+/** Entries of the screening log that ended alike, counted: no person stands in it. */
+export interface CutScreening {
+	outcome: 'in progress' | 'entered' | 'not entered';
+	reason: string | null;
+	n: number;
+}
+
+/** The first format holds no screening log, and nothing that only the flow of participants needs. */
+export type CutFormat = 'heddle.cut/1' | 'heddle.cut/2';
+
 export interface CutContent {
-	format: 'heddle.cut/1';
+	format: CutFormat;
 	study: string;
 	cutOffAt: string;
 	protocolVersion: number;
@@ -58,10 +70,14 @@ export interface CutContent {
 	anchor: 'enrolment' | 'randomisation';
 	timeUnit: StudyDefinition['timeUnit'];
 	baselineVisit: string;
+	primaryMeasure?: string;
+	randomises?: boolean;
+	enrolmentPlan?: StudyDefinition['enrolmentPlan'] | null;
 	measures: CutMeasure[];
 	characteristics: Characteristic[];
 	sites: { code: string; name: string }[];
 	subjects: CutSubject[];
+	screening?: CutScreening[];
 }
 
 /** Values that count as measurements: what was measured, not what was left out. */

@@ -72,12 +72,13 @@ export const remakeCut = (actor: Actor, studyId: string, cutId: string) =>
 	read(actor, 'cut.read', { studyId }, async (reader) => {
 		const cut = await reader
 			.selectFrom('cut')
-			.select(['number', 'fingerprint', 'cut_off_at'])
+			.select(['number', 'fingerprint', 'cut_off_at', 'content'])
 			.where('id', '=', cutId)
 			.where('study_id', '=', studyId)
 			.executeTakeFirst();
 		if (!cut) throw new Refusal('NOT_FOUND');
-		const content = await snapshot(reader, studyId, cut.cut_off_at);
+		const { format } = JSON.parse(cut.content) as CutContent;
+		const content = await snapshot(reader, studyId, cut.cut_off_at, format);
 		const again = content ? fingerprintNow(textOf(content)) : null;
 		return {
 			number: cut.number,

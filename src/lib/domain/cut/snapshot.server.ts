@@ -1,8 +1,16 @@
-import { openTo, studyDefinition, type StudyDefinition } from '../study/definition';
+import { isRandomised, openTo, studyDefinition, type StudyDefinition } from '../study/definition';
 import type { Reader } from '$lib/server/change';
 import { isUnit } from '../../units/units';
 import { rowsAsOf } from './as-of.server';
-import type { CutContent, CutMeasure, CutSubject, CutValue, CutVisit } from './content';
+import type {
+	CutContent,
+	CutFormat,
+	CutMeasure,
+	CutScreening,
+	CutSubject,
+	CutValue,
+	CutVisit
+} from './content';
 
 interface MeasurementRow {
 	visit_id: string;
@@ -44,6 +52,11 @@ interface ExitRow {
 	happened_on: string;
 	/** Put back by a correction: as if it had not been said. */
 	taken_back_at: string | null;
+}
+interface ScreeningRow {
+	outcome: CutScreening['outcome'];
+	reason: string | null;
+	subject_id: string | null;
 }
 interface SiteRow {
 	id: string;
@@ -94,6 +107,18 @@ function grouped<T>(rows: readonly T[], key: (row: T) => string): Map<string, T[
 	return groups;
 }
 
+/** Counted by how they ended, in the exact words; in one order, whatever order the rows come in. */
+function screeningOf(rows: readonly ScreeningRow[]): CutScreening[] {
+	const alike = grouped(rows, (row) => JSON.stringify([row.outcome, row.reason]));
+	return [...alike.entries()]
+		.sort(([a], [b]) => byText(a, b))
+		.map(([, [row, ...rest]]) => ({
+			outcome: (row as ScreeningRow).outcome,
+			reason: (row as ScreeningRow).reason,
+			n: rest.length + 1
+		}));
+}
+
 /** Every measure that a published version knew by then; the newest wording of each. */
 async function definitions(reader: Reader, studyId: string, cutOff: Date) {
 	const versions = await reader
@@ -121,7 +146,9 @@ async function definitions(reader: Reader, studyId: string, cutOff: Date) {
 export async function snapshot(
 	reader: Reader,
 	studyId: string,
-	cutOff: Date
+	cutOff: Date,
+	/** An earlier one to make a cut of that time again. */
+	format: CutFormat = 'heddle.cut/2'
 ): Promise<CutContent | null> {
 	const { newest, measures } = await definitions(reader, studyId, cutOff);
 	if (!newest) return null;
@@ -134,6 +161,7 @@ export async function snapshot(
 		(exit) => exit.taken_back_at === null
 	);
 	const visits = await rowsAsOf<VisitRow>(reader, 'visit', studyId, cutOff);
+	const screenings = await rowsAsOf<ScreeningRow>(reader, 'screening', studyId, cutOff);
 	const subjects = await rowsAsOf<SubjectRow>(reader, 'subject', studyId, cutOff);
 	const sites = await rowsAsOf<SiteRow>(reader, 'site', studyId, cutOff);
 	const keys = async (table: 'measure' | 'planned_visit') =>
@@ -152,6 +180,8 @@ export async function snapshot(
 	const valuesOf = grouped(values, (row) => row.visit_id);
 	const visitsOf = grouped(visits, (row) => row.subject_id);
 	const exitsOf = grouped(exits, (row) => row.subject_id);
+	const screened = new Set(screenings.map((row) => row.subject_id));
+	const withFlow = format !== 'heddle.cut/1';
 
 	const visitOf = (row: VisitRow): CutVisit => ({
 		key: row.planned_visit_id === null ? null : (visitKeys.get(row.planned_visit_id) ?? null),
@@ -186,10 +216,11 @@ export async function snapshot(
 		visits: (visitsOf.get(row.id) ?? [])
 			.sort((a, b) => a.position - b.position || byText(a.id, b.id))
 			.map(visitOf)
-			.filter(hasHappened)
+			.filter(hasHappened),
+		...(withFlow ? { screened: screened.has(row.id) } : {})
 	});
 	return {
-		format: 'heddle.cut/1',
+		format,
 		study: studyId,
 		cutOffAt: cutOff.toISOString(),
 		protocolVersion: newest.number,
@@ -201,6 +232,14 @@ export async function snapshot(
 		sites: sites.map(({ code, name }) => ({ code, name })).sort((a, b) => byText(a.code, b.code)),
 		subjects: subjects
 			.sort((a, b) => byText(a.number, b.number) || byText(a.id, b.id))
-			.map(subjectOf)
+			.map(subjectOf),
+		...(withFlow
+			? {
+					primaryMeasure: newest.definition.primaryMeasure,
+					randomises: isRandomised(newest.definition),
+					enrolmentPlan: newest.definition.enrolmentPlan ?? null,
+					screening: screeningOf(screenings)
+				}
+			: {})
 	};
 }

@@ -77,3 +77,23 @@ export function enrolmentAgainstPlan(
 		};
 	});
 }
+
+/** The sites added up, month by month. */
+export function allSites(sites: readonly SitePlan[]): SitePlan {
+	const months = sites[0]?.months ?? [];
+	return {
+		site: 'All sites',
+		goal: sites.reduce((sum, site) => sum + site.goal, 0),
+		months: months.map((month, at) => {
+			const of = sites.flatMap((site) => site.months[at] ?? []);
+			const sum = (pick: (month: PlanMonth) => number) =>
+				of.reduce((all, each) => all + pick(each), 0);
+			return {
+				month: month.month,
+				planned: sum((each) => each.planned),
+				enrolled: month.enrolled === null ? null : sum((each) => each.enrolled ?? 0),
+				inMonth: sum((each) => each.inMonth)
+			};
+		})
+	};
+}

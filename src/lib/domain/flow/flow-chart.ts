@@ -1,7 +1,9 @@
 import type { FlowBox, FlowData } from '$lib/components/charts/flow';
 import { total, type Counted, type Flow, type FlowColumn } from './flow';
 
-const capital = (text: string) => text.charAt(0).toUpperCase() + text.slice(1);
+/** A word that begins small on purpose stays so: eGFR, pH. */
+export const capital = (text: string) =>
+	/^\p{Ll}\p{Lu}/u.test(text) ? text : text.charAt(0).toUpperCase() + text.slice(1);
 const line = ({ label, n }: Counted) => `${capital(label)}: ${n}`;
 
 const columnBox = (flow: Flow, column: FlowColumn): FlowBox => ({
@@ -49,8 +51,8 @@ export function flowChart(flow: Flow): FlowData {
 	};
 }
 
-/** The same as a table: one row a count. */
-export function flowRows(flow: Flow): [string, number][] {
+/** The steps that everybody goes through, one row a count. */
+export function stepRows(flow: Flow): [string, number][] {
 	const inside = flow.columns.reduce((sum, column) => sum + column.n, 0);
 	return [
 		['Assessed for eligibility', flow.assessed],
@@ -59,19 +61,33 @@ export function flowRows(flow: Flow): [string, number][] {
 		['Taken over from a file', flow.takenOver],
 		['Enrolled', flow.enrolled],
 		...flow.notRandomised.map(({ label, n }): [string, number] => [`Not randomised: ${label}`, n]),
-		...(flow.randomises ? [['Randomised', inside] as [string, number]] : []),
-		...flow.columns.flatMap((column): [string, number][] => {
+		...(flow.randomises ? [['Randomised', inside] as [string, number]] : [])
+	];
+}
+
+/** What became of those in one column; the same rows for every column of a flow. */
+export function columnRows(flow: Flow, column: FlowColumn): [string, number][] {
+	return [
+		...(flow.randomises
+			? [['stopped the treatment', column.discontinued] as [string, number]]
+			: []),
+		...column.ended.map(({ label, n }): [string, number] => [label, n]),
+		['completed', column.completed],
+		['in follow-up', column.inFollowUp],
+		['with a value of the primary measure', column.measured]
+	];
+}
+
+/** The same as a table: one row a count. */
+export function flowRows(flow: Flow): [string, number][] {
+	return [
+		...stepRows(flow),
+		...flow.columns.flatMap((column) => {
 			const of = column.arm ? `${column.arm}: ` : '';
 			return [
-				...(column.arm ? [[`${of}all`, column.n] as [string, number]] : []),
-				...(flow.randomises
-					? [[`${of}stopped the treatment`, column.discontinued] as [string, number]]
-					: []),
-				...column.ended.map(({ label, n }): [string, number] => [`${of}${label}`, n]),
-				[`${of}completed`, column.completed],
-				[`${of}in follow-up`, column.inFollowUp],
-				[`${of}with a value of the primary measure`, column.measured]
-			].map(([label, n]): [string, number] => [capital(String(label)), Number(n)]);
+				...(column.arm ? [['all', column.n] as [string, number]] : []),
+				...columnRows(flow, column)
+			].map(([label, n]): [string, number] => [capital(`${of}${label}`), n]);
 		})
 	];
 }

@@ -10,6 +10,7 @@ import { Cancelled, supervised, type Supervision } from '../jobs/run';
 import type { Delivery } from '../jobs/worker';
 import { log } from '../log';
 import { answerLook } from './answer';
+import { lettersOf } from './letters';
 
 const neutral = 'The look could not be made. The independent statistician can read why.';
 
@@ -99,33 +100,6 @@ export const lookJob = (delivery: Delivery<'look'>): Promise<void> =>
 		}
 	);
 
-/** Each allocated subject's letter at the cut-off; letters alone leave this function. */
-const lettersOf = (actorId: string, studyId: string, cutId: string) =>
-	read(systemActor(actorId), 'job.read', {}, async (reader) => {
-		const frozen = await reader
-			.selectFrom('closed.cut_allocation')
-			.select('content')
-			.where('cut_id', '=', cutId)
-			.where('study_id', '=', studyId)
-			.executeTakeFirst();
-		const letters = new Map(
-			(
-				await reader
-					.selectFrom('closed.arm_letter')
-					.select(['arm_key', 'letter'])
-					.where('study_id', '=', studyId)
-					.execute()
-			).map(({ arm_key, letter }) => [arm_key, letter])
-		);
-		const held = (frozen?.content ?? {}) as unknown as Record<string, string>;
-		return new Map(
-			Object.entries(held).flatMap(([subjectId, arm]) => {
-				const letter = letters.get(arm);
-				return letter === undefined ? [] : [[subjectId, letter] as const];
-			})
-		);
-	});
-
 const keepClosed = (
 	actorId: string,
 	look: { id: string; study_id: string },
@@ -164,11 +138,13 @@ export const byArmLookJob = (delivery: Delivery<'by-arm-look'>): Promise<void> =
 						.executeTakeFirstOrThrow()
 				);
 				const { content } = await cutOf(jobRunId, look.study_id, look.cut_id);
-				const letters = await lettersOf(jobRunId, look.study_id, look.cut_id);
+				const letters = await read(systemActor(jobRunId), 'job.read', {}, (reader) =>
+					lettersOf(reader, look.study_id, look.cut_id)
+				);
 				const { result, inputHash } = await answerLook(
 					content,
 					lookSpec.parse(request.spec),
-					letters,
+					letters.of,
 					supervision
 				);
 				await keepClosed(jobRunId, look, result, inputHash);

@@ -1,7 +1,10 @@
+import { contentOf } from '$lib/domain/cut/cut.reads.server';
+import { cutFlow } from '$lib/domain/flow/cut-flow';
 import type { LookRefused, LookResult } from '$lib/domain/look/result';
 import { isRefused } from '$lib/domain/look/result';
 import { Refusal } from '$lib/refusal';
 import type { Reader } from '../change';
+import { lettersOf } from './letters';
 import type { ReportFacts } from './report-input';
 
 export interface HeldReport {
@@ -78,6 +81,8 @@ export async function heldReport(reader: Reader, reportId: string): Promise<Held
 		input_hash: row.input_hash
 	});
 	if (!result || isRefused(result) || !inputHash) throw new Refusal('LOOK_NOT_READY');
+	const { content } = await contentOf(reader, row.study_id, row.cut_id);
+	const letters = row.kind === 'pooled' ? null : await lettersOf(reader, row.study_id, row.cut_id);
 	return {
 		id: row.id,
 		studyId: row.study_id,
@@ -100,6 +105,7 @@ export async function heldReport(reader: Reader, reportId: string): Promise<Held
 				fingerprint: row.fingerprint
 			},
 			look: { number: row.number, planned: row.planned },
+			flow: cutFlow(content, letters),
 			result,
 			inputHash
 		}

@@ -1,4 +1,5 @@
 import type { LookReportInput } from '$lib/report';
+import type { CutFlow } from '$lib/domain/flow/cut-flow';
 import type { CutHead } from '$lib/domain/cut/cut.reads.server';
 import type { LookResult } from '$lib/domain/look/result';
 import manifest from '../../../../package.json';
@@ -7,6 +8,8 @@ export interface ReportFacts {
 	study: { name: string; code: string; training: boolean };
 	cut: CutHead;
 	look: { number: number; planned: boolean };
+	/** Null where the cut holds no screening log; left out where it is not shown. */
+	flow?: CutFlow | null;
 	result: LookResult;
 	inputHash: string;
 	made: { at: Date; by: string };
@@ -30,6 +33,7 @@ export function reportInput(facts: ReportFacts): LookReportInput {
 			measurements: cut.measurements
 		},
 		look: { number: look.number, planned: look.planned, question: words.question },
+		...(facts.flow === undefined ? {} : { flow: facts.flow }),
 		measure: words.measure,
 		time: words.time,
 		...(words.group ? { group: words.group } : {}),

@@ -1,5 +1,8 @@
 import { render } from 'svelte/server';
 import SVGtoPDF from 'svg-to-pdfkit';
+import { flowGeometry, type FlowBox } from '$lib/components/charts/flow';
+import FlowChart from '$lib/components/charts/FlowChart.svelte';
+import PlanChart from '$lib/components/charts/PlanChart.svelte';
 import ResidualChart from '$lib/components/charts/ResidualChart.svelte';
 import TrajectoryChart from '$lib/components/charts/TrajectoryChart.svelte';
 import { paperPalette } from '$lib/components/charts/palette';
@@ -13,6 +16,8 @@ import type { Style, Type } from './type';
  */
 const DRAWN = { width: 640, height: 320, lowest: 234 };
 const SCALE = WIDTH / DRAWN.width;
+/** How much smaller a diagram of boxes may be drawn to stay on the page: its words are then 8.5 points high. */
+const BOXES_LEAST = 0.8;
 const SPACE = 8;
 const BELOW = 12;
 const caption: Style = { size: 11, weight: 'bold' };
@@ -24,36 +29,73 @@ function spelled(chart: FigureNode['chart'], type: Type): FigureNode['chart'] {
 		label: type.spell(of.label),
 		unit: type.spell(of.unit)
 	});
-	if (chart.type === 'residual') {
-		const { fitted, residual } = chart.data;
-		return { ...chart, data: { ...chart.data, fitted: axis(fitted), residual: axis(residual) } };
-	}
-	const { x, y, lines } = chart.data;
-	return {
-		...chart,
-		data: {
-			...chart.data,
-			x: axis(x),
-			y: axis(y),
-			lines: lines.map((l) => ({ ...l, label: type.spell(l.label) }))
+	const box = (of: FlowBox): FlowBox => ({
+		title: type.spell(of.title),
+		lines: of.lines.map((line) => type.spell(line))
+	});
+	switch (chart.type) {
+		case 'residual': {
+			const { fitted, residual } = chart.data;
+			return { ...chart, data: { ...chart.data, fitted: axis(fitted), residual: axis(residual) } };
 		}
-	};
+		case 'trajectory': {
+			const { x, y, lines } = chart.data;
+			return {
+				...chart,
+				data: {
+					...chart.data,
+					x: axis(x),
+					y: axis(y),
+					lines: lines.map((l) => ({ ...l, label: type.spell(l.label) }))
+				}
+			};
+		}
+		case 'flow':
+			return {
+				...chart,
+				data: {
+					steps: chart.data.steps.map(({ main, side }) => ({
+						main: box(main),
+						side: side && box(side)
+					})),
+					columns: chart.data.columns.map(box)
+				}
+			};
+		case 'plan':
+			return chart;
+	}
+}
+
+/** How high a chart is drawn, and how low it may become to save a page. A diagram of boxes is as high as its words. */
+function heights(chart: FigureNode['chart']): { height: number; lowest: number } {
+	if (chart.type === 'flow') {
+		const { height } = flowGeometry(chart.data, DRAWN.width);
+		return { height, lowest: height * BOXES_LEAST };
+	}
+	return chart.type === 'plan' ? { height: DRAWN.lowest, lowest: DRAWN.lowest } : DRAWN;
 }
 
 /** The chart that the screen shows, drawn by the same component with ink for paper. */
-function chartSvg(node: FigureNode, type: Type, height: number): string {
+function chartSvg(node: FigureNode, chart: FigureNode['chart'], height: number): string {
 	const shared = {
 		title: node.caption,
 		desc: node.alt,
 		palette: paperPalette,
-		width: DRAWN.width,
-		height
+		width: DRAWN.width
 	};
-	const chart = spelled(node.chart, type);
-	const { body } =
-		chart.type === 'trajectory'
-			? render(TrajectoryChart, { props: { ...shared, data: chart.data } })
-			: render(ResidualChart, { props: { ...shared, data: chart.data } });
+	const drawn = () => {
+		switch (chart.type) {
+			case 'trajectory':
+				return render(TrajectoryChart, { props: { ...shared, height, data: chart.data } });
+			case 'residual':
+				return render(ResidualChart, { props: { ...shared, height, data: chart.data } });
+			case 'flow':
+				return render(FlowChart, { props: { ...shared, data: chart.data } });
+			case 'plan':
+				return render(PlanChart, { props: { ...shared, height, data: chart.data } });
+		}
+	};
+	const { body } = drawn();
 	// Without a size of its own the drawing takes the one it is given.
 	return body
 		.replace(/<!--.*?-->/gs, '')
@@ -94,23 +136,31 @@ const captionHeight = (flow: Flow, node: FigureNode): number =>
 
 /** Room that a figure must find, its caption and the space above it included. */
 export const figureNeeds = (flow: Flow, node: FigureNode): number =>
-	SPACE + captionHeight(flow, node) + DRAWN.lowest * SCALE + BELOW;
+	SPACE +
+	captionHeight(flow, node) +
+	heights(spelled(node.chart, flow.type)).lowest * SCALE +
+	BELOW;
 
 export function drawFigure(flow: Flow, node: FigureNode): void {
 	const { doc, type } = flow;
+	const chart = spelled(node.chart, type);
+	const wanted = heights(chart);
 	flow.space(SPACE);
-	flow.need(figureNeeds(flow, node) - SPACE);
+	flow.need(captionHeight(flow, node) + wanted.lowest * SCALE + BELOW);
 	flow.text(node.caption, caption, { tag: 'P' });
 	flow.y += 4;
-	const drawn = Math.min(DRAWN.height, Math.floor((flow.room - BELOW) / SCALE));
+	const drawn = Math.min(wanted.height, Math.floor((flow.room - BELOW) / SCALE));
+	// Boxes are as high as their words, so they are made smaller as a whole; the others are laid out anew.
+	const smaller = chart.type === 'flow' ? drawn / wanted.height : 1;
+	const width = WIDTH * smaller;
 	const height = drawn * SCALE;
 	const figure = flow.element('Figure', flow.root, {
 		alt: node.alt,
-		bbox: [MARGIN, flow.y, MARGIN + WIDTH, flow.y + height]
+		bbox: [MARGIN, flow.y, MARGIN + width, flow.y + height]
 	});
 	flow.mark(figure, 'Figure', () => {
-		SVGtoPDF(doc, inRuns(chartSvg(node, type, drawn), type), MARGIN, flow.y, {
-			width: WIDTH,
+		SVGtoPDF(doc, inRuns(chartSvg(node, chart, drawn), type), MARGIN, flow.y, {
+			width,
 			height,
 			assumePt: true,
 			fontCallback: (family: string, bold: boolean) =>
