@@ -17,7 +17,6 @@ export function participants({ flow: held }: LookReportInput): ReportNode[] {
 	const chart = flowChart(held.flow);
 	return [
 		heading('Participant flow'),
-		paragraph(words.flow.what),
 		...flowBreaks(held.flow).map((said): ReportNode => ({
 			kind: 'caution',
 			tone: 'warning',
@@ -30,6 +29,7 @@ export function participants({ flow: held }: LookReportInput): ReportNode[] {
 			alt: flowWords(chart),
 			chart: { type: 'flow', data: chart }
 		},
+		paragraph(words.flow.what),
 		...numbers(held.flow),
 		...enrolment(held)
 	];

@@ -6,7 +6,7 @@ import { differences } from './differences';
 import { applyEdits } from './edits';
 import { editsBetween, inverseOf } from './edits-between';
 import { editDraftInput, type Edit } from './edits.input';
-import { anyEdits } from './edits.example.server';
+import { anyEdits } from './edits.example';
 import { changedPlaces, clash } from './places';
 import { readDefinition } from './template';
 import { studyTemplates } from './templates.server';
