@@ -3,6 +3,14 @@ import { freezeCut, remakeCut, takeOutCut } from '../../src/lib/domain/cut/cut.c
 import { contentOf, findCuts } from '../../src/lib/domain/cut/cut.reads.server';
 import type { CutContent } from '../../src/lib/domain/cut/content';
 import { fingerprintNow } from '../../src/lib/domain/cut/fingerprint.server';
+import { cutFlow } from '../../src/lib/domain/flow/cut-flow';
+import { flowBreaks } from '../../src/lib/domain/flow/flow';
+import { canonical } from '../../src/lib/domain/cut/canonical';
+import {
+	addScreening,
+	closeScreening
+} from '../../src/lib/domain/subject/screening.commands.server';
+import { newId } from '../../src/lib/id';
 import { randomiseSubject } from '../../src/lib/domain/subject/subject.commands.server';
 import type { Actor } from '../../src/lib/server/actor';
 import { read } from '../../src/lib/server/change';
@@ -169,5 +177,87 @@ describe('the cut of a masked trial', () => {
 		expect(text).not.toContain(kitNumber);
 		expect(text.toLowerCase()).not.toContain('kit');
 		await again();
+	});
+
+	test('counts the screening log as it stood, and is made again the same when people were screened since', async () => {
+		const scene = await makeScene(db);
+		const screened = async (reason: string | null) => {
+			const { id } = await addScreening(scene.coordinator, scene.studyId, {
+				siteId: scene.sites[0]?.id as string,
+				screenedOn: '2026-03-02' as never
+			});
+			if (reason !== null) await closeScreening(scene.coordinator, scene.studyId, id, reason, 1);
+			return id;
+		};
+		const subject = await enrolOne(scene);
+		await screened('Declined');
+		await screened('Declined');
+		const open = await screened(null);
+		await asOwner(db, async (client) => {
+			await client.query(
+				`insert into app.measurement (id, study_id, site_id, subject_id, visit_id, measure_id, value, unit, taken_by, source)
+				select gen_random_uuid(), v.study_id, v.site_id, v.subject_id, v.id, m.id, 80, m.unit, $2, 'form'
+				from app.visit v join app.measure m on m.study_id = v.study_id and m.key = 'weight' where v.study_id = $1 and v.position = 1`,
+				[scene.studyId, scene.nurse.personId]
+			);
+		});
+		const statistician = await scene.person('statistician');
+		const cut = await freezeCut(statistician, scene.studyId, { label: 'First', cutOffAt: '' });
+		const content = await cutOf(statistician, scene.studyId, cut.id);
+		expect(content).toMatchObject({
+			format: 'heddle.cut/2',
+			randomises: true,
+			screening: [
+				{ outcome: 'entered', reason: null, n: 1 },
+				{ outcome: 'in progress', reason: null, n: 1 },
+				{ outcome: 'not entered', reason: 'Declined', n: 2 }
+			],
+			subjects: [{ number: subject.number, screened: true }]
+		});
+		const held = cutFlow(content, null);
+		expect(held?.flow).toMatchObject({ assessed: 4, inScreening: 1, enrolled: 1 });
+		expect(flowBreaks(held?.flow as never)).toEqual([]);
+
+		await closeScreening(scene.coordinator, scene.studyId, open, 'Moved away', 1);
+		await enrolOne(scene);
+		await screened(null);
+		expect(await remakeCut(statistician, scene.studyId, cut.id)).toMatchObject({ same: true });
+		const later = await freezeCut(statistician, scene.studyId, { label: 'Later', cutOffAt: '' });
+		expect((await cutOf(statistician, scene.studyId, later.id)).screening).toEqual([
+			{ outcome: 'entered', reason: null, n: 2 },
+			{ outcome: 'in progress', reason: null, n: 1 },
+			{ outcome: 'not entered', reason: 'Declined', n: 2 },
+			{ outcome: 'not entered', reason: 'Moved away', n: 1 }
+		]);
+	});
+
+	test('of the first format is made again in the first format, and no flow is read out of it', async () => {
+		const scene = await importScene(db);
+		const statistician = await scene.person('statistician');
+		await importFile(scene, orthodontCsv(), orthodontMapping);
+		const now = await freezeCut(statistician, scene.studyId, { label: 'Now', cutOffAt: '' });
+		const content = await cutOf(statistician, scene.studyId, now.id);
+		const {
+			screening: _screening,
+			primaryMeasure: _primary,
+			randomises: _randomises,
+			enrolmentPlan: _plan,
+			...rest
+		} = content;
+		const text = canonical({
+			...rest,
+			format: 'heddle.cut/1',
+			subjects: content.subjects.map(({ screened: _, ...subject }) => subject)
+		} as never);
+		const id = newId();
+		await asOwner(db, (client) =>
+			client.query(
+				`insert into app.cut (id, study_id, number, label, cut_off_at, extracted_at, made_by, subjects, measurements, fingerprint, content)
+				select $2, study_id, 99, 'Of old', cut_off_at, extracted_at, made_by, subjects, measurements, $3, $4 from app.cut where id = $1`,
+				[now.id, id, fingerprintNow(text), text]
+			)
+		);
+		expect(await remakeCut(statistician, scene.studyId, id)).toMatchObject({ same: true });
+		expect(cutFlow(await cutOf(statistician, scene.studyId, id), null)).toBeNull();
 	});
 });

@@ -222,6 +222,10 @@ describe('a pooled look', () => {
 		);
 		expect(text).toContain(printed.estimate);
 		expect(text).toContain('−0.305');
+		// Everybody came by a file, and is counted together.
+		expect(text).toContain('Participant flow');
+		expect(text).toMatch(/Taken over from a file\s+27/);
+		expect(text).not.toMatch(/Arm [A-Z]\b/);
 
 		await expect(
 			releaseReport(statistician, scene.studyId, id, { people: [scene.manager.personId] })
@@ -416,6 +420,14 @@ describe('a look by arm', () => {
 		const text = textOf(pdf);
 		expect(text).toContain('Arm A');
 		expect(text).toContain('NOT PLANNED');
+		// The flow at the cut-off, by letter.
+		const allocated = (await db.sql(
+			`select count(*) filter (where arm_key = 'a')::int as a, count(*) filter (where arm_key = 'b')::int as b
+			from closed.list_position where study_id = '${scene.studyId}' and subject_id is not null`
+		)) as [[{ a: number; b: number }]];
+		const [[{ a, b }]] = allocated;
+		expect(text).toMatch(/People\s+Arm A\s+Arm B/);
+		expect(text).toMatch(new RegExp(`Randomised\\s+${a}\\s+${b}\\b`));
 		const file = join(db.files, 'closed.pdf');
 		writeFileSync(file, pdf);
 		const whole = execFileSync('qpdf', ['--qdf', '--object-streams=disable', file, '-'], {
