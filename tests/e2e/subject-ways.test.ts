@@ -67,6 +67,7 @@ const test = base.extend<object, { shared: Shared }>({
 				])
 			);
 			await use({ server, scene, subject });
+			if (process.env.SHOWLOGS) console.log('LOGS', server.logs().slice(-4000));
 			await server.stop();
 		},
 		{ scope: 'worker', timeout: 240_000 }
