@@ -105,6 +105,9 @@ beforeAll(async () => {
 			addDays(monday, 3)
 		])
 	);
+	const [[visit] = []] = await server.database.sql(
+		`select version from app.visit where id = '${things.visit}'`
+	);
 	const booked = await by.coordinator?.send(
 		'POST',
 		`/api/studies/${scene.studyId}/visits/${things.visit}/appointment`,
@@ -113,7 +116,8 @@ beforeAll(async () => {
 			time: '09:00',
 			roomId: scene.sites[0].rooms[0],
 			staffId: scene.sites[0].nurse.id
-		}
+		},
+		{ 'if-match': `"${visit?.version}"` }
 	);
 	expect(booked?.status, await booked?.text()).toBe(201);
 	await server.mailTo(contact.email);
