@@ -8,7 +8,7 @@ export const studyRoutes: RouteTable = {
 	'/(app)/studies/new': { GET: 'study.create', POST: 'study.create' },
 	'/(app)/studies/new/blank': { GET: 'study.create', POST: 'study.create' },
 	'/(app)/studies/new/file': { GET: 'study.create', POST: 'study.create' },
-	[`${study}/schedule`]: { GET: 'study.read' },
+	[`${study}/schedule`]: { GET: 'study.read', POST: 'study.edit' },
 	[`${study}/schedule/versions`]: { GET: 'study.read' },
 	[`${study}/schedule/definition.json`]: { GET: 'study.read' },
 	[`${study}/setup`]: { GET: 'study.edit', POST: 'study.publish' },
