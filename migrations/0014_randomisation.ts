@@ -488,7 +488,10 @@ begin
 end $$;
 `.execute(db);
 
-/** As before, and: by either method, from the site's stock where one is kept, and with the arm where nothing is masked. */
+/**
+ * As before, but a consent that was withdrawn does not count, nor does a way out that was taken back; and by either method,
+ * from the site's stock where one is kept, and with the arm where nothing is masked.
+ */
 const allocate = (db: Kysely<unknown>) =>
 	sql`
 create or replace function closed.allocate(p_subject uuid) returns text language plpgsql security definer set search_path = pg_catalog as $$
@@ -503,10 +506,10 @@ begin
 	if s.kit_number is not null then
 		raise exception using errcode = 'HD011', message = 'ALREADY_RANDOMISED';
 	end if;
-	if not exists (select from app.consent c where c.subject_id = s.id and c.signed_at <= at) then
+	if not exists (select from app.consent c where c.subject_id = s.id and c.signed_at <= at and c.withdrawn_on is null) then
 		raise exception using errcode = 'HD012', message = 'CONSENT_NEEDED';
 	end if;
-	if exists (select from app.study_exit e where e.subject_id = s.id) then
+	if exists (select from app.study_exit e where e.subject_id = s.id and e.taken_back_at is null) then
 		raise exception using errcode = 'HD014', message = 'LEFT_STUDY';
 	end if;
 	select * into l from closed.allocation_list x where x.study_id = s.study_id;

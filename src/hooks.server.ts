@@ -67,14 +67,14 @@ const framing: Handle = async ({ event, resolve }) => {
 const personOf = (locals: App.Locals) => locals.session?.personId;
 
 const usualBody = 1024 * 1024;
-const takesFiles = /\/imports?$/;
+const takesFiles = /\/(imports?|scans?)$/;
 
 /** Cookies travel with requests from anywhere; whatever changes something must say that it comes from our own pages. */
 const sameOrigin: Handle = async ({ event, resolve }) => {
 	if (!reading.has(event.request.method)) {
 		const origin = event.request.headers.get('origin');
 		if (origin !== config().origin) return turnAway(event, new Refusal('CROSS_SITE'));
-		// The server takes large bodies for the sake of imports; nothing else has a use for one.
+		// The server takes large bodies for the sake of imports and scans; nothing else has a use for one.
 		const length = Number(event.request.headers.get('content-length') ?? 0);
 		if (length > usualBody && !takesFiles.test(event.route.id ?? ''))
 			return turnAway(event, new Refusal('TOO_LARGE', { limit: '1 MiB' }));

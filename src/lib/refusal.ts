@@ -100,7 +100,7 @@ export const refusals = {
 	},
 	CONSENT_NEEDED: {
 		status: 422,
-		say: () => 'A valid consent on or before this day is needed first.'
+		say: (f) => `A valid consent on or before this day is needed first. ${f.why ?? ''}`.trim()
 	},
 	CONSENT_EARLY: {
 		status: 422,

@@ -4,9 +4,9 @@ import { readSubjectNumber } from '../../src/lib/domain/subject/number';
 import {
 	addScreening,
 	answerEligibility,
-	closeScreening,
-	recordConsent
+	closeScreening
 } from '../../src/lib/domain/subject/screening.commands.server';
+import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import {
 	enrolSubject,
 	randomiseSubject,

@@ -20,9 +20,9 @@ import { verifySignatures } from '../../src/lib/domain/signature/verify.server';
 import {
 	addScreening,
 	answerEligibility,
-	closeScreening,
-	recordConsent
+	closeScreening
 } from '../../src/lib/domain/subject/screening.commands.server';
+import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import { getScreening } from '../../src/lib/domain/subject/screening.reads.server';
 import {
 	enrolSubject,

@@ -63,7 +63,7 @@ function described(): Described {
 /** What the driver gives back for a column of this type, in the words of tables.ts. */
 const kinds: Record<string, RegExp> = {
 	uuid: /^string$/,
-	text: /^(string|'|Role|VisitStatus|JobStatus|MailKind)/,
+	text: /^(string|'|Role|VisitStatus|JobStatus|MailKind|MailStatus)/,
 	'character varying': /^string$/,
 	boolean: /^boolean$/,
 	integer: /^number$/,

@@ -107,7 +107,10 @@ test('the whole way in goes over the API: screening, consent, answers, enrolment
 	const own = (rest: string) => of(scene.studyId, `/subjects/${subject.id}${rest}`);
 	const kit = await coordinator.send('POST', own('/randomisation'));
 	expect(kit.status).toBe(201);
-	expect(Object.keys((await kit.json()) as object).sort()).toEqual(['kitNumber', 'version']);
+	const given = (await kit.json()) as { arm: string | null };
+	expect(Object.keys(given).sort()).toEqual(['arm', 'kitNumber', 'version']);
+	// The study is masked.
+	expect(given.arm).toBeNull();
 	expect((await coordinator.send('POST', own('/randomisation'))).status).toBe(409);
 	const contact = { name: 'Ada Reed', email: 'ada@example.org' };
 	expect((await coordinator.send('PUT', own('/contact-details'), contact, at(0))).status).toBe(200);

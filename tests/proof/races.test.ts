@@ -9,9 +9,9 @@ import { keptList, reproduce } from '../../src/lib/domain/randomisation/reproduc
 import { startVisit } from '../../src/lib/domain/visit/conduct.commands.server';
 import {
 	addScreening,
-	answerEligibility,
-	recordConsent
+	answerEligibility
 } from '../../src/lib/domain/subject/screening.commands.server';
+import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import { actorFor } from '../../src/lib/server/auth/actor';
 import { hashPassword } from '../../src/lib/server/auth/password';
 import { addDays } from '../../src/lib/time/dates';

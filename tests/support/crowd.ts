@@ -3,6 +3,7 @@ import { openDatabase, useDatabase, type Database } from '../../src/lib/server/d
 import { forgetSender } from '../../src/lib/server/jobs/queue';
 import { newId } from '../../src/lib/id';
 import type { Role } from '../../src/lib/domain/person/roles';
+import { keepScan } from '../../src/lib/domain/upload/upload.commands.server';
 import { freezeCut } from '../../src/lib/domain/cut/cut.commands.server';
 import { uploadImport } from '../../src/lib/domain/import/import.commands.server';
 import { requestLook } from '../../src/lib/domain/look/look.commands.server';
@@ -14,6 +15,7 @@ import { actorFor } from '../../src/lib/server/auth/actor';
 import { useEnvironment, type FreshDatabase } from './database';
 import { addPerson, addRole, asOwner, signIn, type Visitor } from './people';
 import type { RunningServer } from './server';
+import { smallPdf } from './files';
 import { addSubject, around, visitScene, type Scene } from './visit-scene';
 
 const password = 'linen warp and weft';
@@ -162,6 +164,18 @@ async function furnish(
 		method: 'REML',
 		df: 'kenward-roger'
 	});
+	const consents = await database.sql(
+		`select id from app.consent where subject_id = '${subject.id}'`
+	);
+	made.consent = consents[0]?.[0]?.id as string;
+	made.scan = (
+		await keepScan(await actorFor(site.coordinator.id, 'scene'), scene.studyId, made.consent, {
+			bytes: smallPdf,
+			name: 'form.pdf',
+			type: 'application/pdf',
+			reason: ''
+		})
+	).id;
 	made.signature = await signedChecklist(database, scene, siteIndex, passwordHash);
 	Object.assign(made, { batch: batch.id, cut: cut.id, look: look.id });
 	await asOwner(database, async (client) => {

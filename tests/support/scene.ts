@@ -2,12 +2,13 @@ import {
 	askForList,
 	makeAllocationList
 } from '../../src/lib/domain/randomisation/allocation.commands.server';
+import type { ConsentInput } from '../../src/lib/domain/consent/consent.input';
 import type { EnrolInput } from '../../src/lib/domain/subject/subject.input';
 import {
 	addScreening,
-	answerEligibility,
-	recordConsent
+	answerEligibility
 } from '../../src/lib/domain/subject/screening.commands.server';
+import { recordConsent } from '../../src/lib/domain/consent/consent.commands.server';
 import { enrolSubject } from '../../src/lib/domain/subject/subject.commands.server';
 import { findTemplate } from '../../src/lib/domain/study/templates.server';
 import { approveSites } from './approve';
@@ -139,6 +140,13 @@ export const consentOn = (scene: Scene, by: Actor, on: string) => ({
 	consentVersionId: scene.consentVersionId,
 	signedOn: on,
 	signedTime: '10:00',
+	obtainedOn: on,
+	obtainedTime: '10:00',
+	relationship: '',
+	witnessed: false,
+	minor: false,
+	assent: '' as const,
+	assentReason: '',
 	explainedBy: by.personId,
 	signedBy: 'participant' as const,
 	copyGiven: true
@@ -149,11 +157,11 @@ export async function enrolOne(
 	scene: Scene,
 	actor: Actor = scene.coordinator,
 	siteId = scene.sites[0]?.id as string,
-	change: Partial<EnrolInput> & { on?: string } = {}
+	change: Partial<EnrolInput> & { on?: string; consent?: ConsentInput } = {}
 ): Promise<{ id: string; number: string }> {
-	const { on = '2026-03-02', ...input } = change;
+	const { on = '2026-03-02', consent, ...input } = change;
 	const screening = await addScreening(actor, scene.studyId, { siteId, screenedOn: on });
-	await recordConsent(actor, scene.studyId, screening.id, consentOn(scene, actor, on));
+	await recordConsent(actor, scene.studyId, screening.id, consent ?? consentOn(scene, actor, on));
 	const { version } = await answerEligibility(
 		actor,
 		scene.studyId,

@@ -72,6 +72,11 @@ async function examples(
 			await one(`(select 'entered' as name, id, study_id from app.screening where site_id = ${saltreach} and outcome = 'entered' limit 1)
 			union all (select 'in progress', id, study_id from app.screening where site_id = ${saltreach} and outcome = 'in progress' limit 1)`)
 		),
+		consent: as(
+			await one(
+				`select 'of a subject' as name, id, study_id from app.consent where site_id = ${saltreach} and subject_id is not null order by id limit 1`
+			)
+		),
 		signature: as(
 			await one(
 				`select 'signed' as name, id, study_id from app.signature where site_id = ${saltreach} order by id limit 1`

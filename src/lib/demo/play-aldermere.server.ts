@@ -7,9 +7,9 @@ import { recordExit } from '$lib/domain/subject/exit.commands.server';
 import {
 	addScreening,
 	answerEligibility,
-	closeScreening,
-	recordConsent
+	closeScreening
 } from '$lib/domain/subject/screening.commands.server';
+import { recordConsent } from '$lib/domain/consent/consent.commands.server';
 import { enrolSubject, randomiseSubject } from '$lib/domain/subject/subject.commands.server';
 import { bookVisit, moveAppointment } from '$lib/domain/visit/booking.commands.server';
 import { declareMissed, logContact } from '$lib/domain/visit/chase.commands.server';
@@ -230,6 +230,13 @@ export class Trial {
 			consentVersionId: this.cast.consentVersionId,
 			signedOn: subject.enrolsOn,
 			signedTime: '08:02',
+			obtainedOn: subject.enrolsOn,
+			obtainedTime: '08:03',
+			relationship: '',
+			witnessed: false,
+			minor: false,
+			assent: '' as const,
+			assentReason: '',
 			explainedBy: coordinator.personId,
 			signedBy: 'participant',
 			copyGiven: true

@@ -54,6 +54,8 @@ const table = {
 	'screening.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],
 	'screening.edit': ['coordinator', 'investigator'],
 	'consent.record': ['coordinator', 'investigator'],
+	/** The signed form names the person: as contact details, for the site's own. */
+	'consent.scan': ['coordinator', 'investigator'],
 	'subject.enrol': ['coordinator', 'investigator'],
 	'subject.randomise': ['coordinator', 'investigator'],
 	'subject.exit': ['coordinator', 'investigator'],
@@ -76,6 +78,17 @@ const table = {
 	'kit.keep': ['coordinator', 'pharmacist'],
 	/** To plan, send, receive or write off: each act asks the door for its own right again. */
 	'kit.act': ['data_manager', 'coordinator', 'pharmacist'],
+	'subject.transfer': ['coordinator', 'investigator'],
+	/** Counts of who came in, who left and why; no subject is named. */
+	'flow.read': [
+		'data_manager',
+		'coordinator',
+		'investigator',
+		'monitor',
+		'auditor',
+		'statistician',
+		'independent_statistician'
+	],
 
 	/** To read what was signed, with the record it is about. */
 	'signature.read': ['data_manager', 'coordinator', 'investigator', 'monitor', 'auditor'],

@@ -1,6 +1,6 @@
 import { sql, type QueryExecutorProvider } from 'kysely';
 
-type Kept = 'measurement' | 'visit' | 'subject' | 'study_exit' | 'site';
+type Kept = 'measurement' | 'visit' | 'subject' | 'study_exit' | 'site' | 'screening';
 
 /**
  * The rows of a table as they stood at an instant, by the audit trail: rows made later are left out, and whatever

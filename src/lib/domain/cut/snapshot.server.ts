@@ -42,6 +42,8 @@ interface ExitRow {
 	subject_id: string;
 	kind: string;
 	happened_on: string;
+	/** Put back by a correction: as if it had not been said. */
+	taken_back_at: string | null;
 }
 interface SiteRow {
 	id: string;
@@ -128,7 +130,9 @@ export async function snapshot(
 	const values = (await rowsAsOf<MeasurementRow>(reader, 'measurement', studyId, cutOff)).filter(
 		(row) => row.open_to === null
 	);
-	const exits = await rowsAsOf<ExitRow>(reader, 'study_exit', studyId, cutOff);
+	const exits = (await rowsAsOf<ExitRow>(reader, 'study_exit', studyId, cutOff)).filter(
+		(exit) => exit.taken_back_at === null
+	);
 	const visits = await rowsAsOf<VisitRow>(reader, 'visit', studyId, cutOff);
 	const subjects = await rowsAsOf<SubjectRow>(reader, 'subject', studyId, cutOff);
 	const sites = await rowsAsOf<SiteRow>(reader, 'site', studyId, cutOff);

@@ -32,6 +32,17 @@ export async function sitesFor(
 		.execute();
 }
 
+/** All sites of the study by name: somebody may be moved to one where the actor has no part. */
+export const findAllSites = (actor: Actor, studyId: string): Promise<SiteHead[]> =>
+	read(actor, 'study.enter', { studyId }, (reader) =>
+		reader
+			.selectFrom('site')
+			.select(['id', 'code', 'name', 'zone'])
+			.where('study_id', '=', studyId)
+			.orderBy('code')
+			.execute()
+	);
+
 export const findSitesWhere = (
 	actor: Actor,
 	studyId: string,

@@ -6,6 +6,13 @@ import type { Actor } from '$lib/server/actor';
 import { change, mustHaveChanged, type Writer } from '$lib/server/change';
 import { plainDateOf } from '$lib/time/dates';
 import { clock } from '$lib/time/clock';
+import {
+	amendmentColumns,
+	holdVersion,
+	keepZones,
+	letFollow
+} from '../amendment/amendment.commands.server';
+import { publishAmendmentInput, type PublishAmendmentInput } from '../amendment/amendment.input';
 import { checkDefinition } from './check';
 import { readStudyFile } from './definition-file';
 import { emptyDefinition } from './empty';
@@ -147,7 +154,7 @@ const codeTaken = (code: string) =>
 export async function lockedDraft(writer: Writer, studyId: string) {
 	const draft = await writer
 		.selectFrom('protocol_version')
-		.select(['id', 'number', 'version', 'definition', 'status'])
+		.select(['id', 'number', 'version', 'definition', 'status', 'summary'])
 		.where('study_id', '=', studyId)
 		.orderBy('number', 'desc')
 		.limit(1)
@@ -160,16 +167,28 @@ export async function lockedDraft(writer: Writer, studyId: string) {
 	return { ...draft, definition: read.definition };
 }
 
+export interface Published {
+	protocolVersionId: string;
+	version: number;
+	/** Subjects who follow the new version already. */
+	followed: number;
+	/** The job by which many do, where it needs one. */
+	jobRunId: string | null;
+}
+
 /**
  * Publishes the draft: it never changes again, its visits and measures become rows, and the study is open.
- * Refused while the check before publishing finds something that stops.
+ * Refused while the check before publishing finds something that stops. An amendment says when it was approved and whether
+ * people are asked again; subjects who are stay on their version until then.
  */
 export const publishProtocol = (
 	actor: Actor,
 	studyId: string,
-	version: number
-): Promise<{ protocolVersionId: string; version: number }> =>
+	version: number,
+	amendment: PublishAmendmentInput = publishAmendmentInput.parse({})
+): Promise<Published> =>
 	change(actor, 'study.publish', { studyId }, async (writer) => {
+		await holdVersion(writer, studyId, true);
 		const draft = await lockedDraft(writer, studyId);
 		const { definition } = draft;
 		const stops = checkDefinition(definition).filter((finding) => finding.weight === 'stops');
@@ -177,9 +196,12 @@ export const publishProtocol = (
 			throw new Refusal('DEFINITION', {
 				why: stops.map((finding) => finding.problem.message).join(' ')
 			});
+		const amends =
+			draft.number > 1 ? await amendmentColumns(writer, studyId, draft, amendment) : {};
 		const changed = await writer
 			.updateTable('protocol_version')
 			.set({
+				...amends,
 				status: 'published',
 				published_at: clock.now(),
 				published_by: actor.personId
@@ -189,6 +211,7 @@ export const publishProtocol = (
 			.returning(['id', 'version'])
 			.execute();
 		mustHaveChanged(changed);
+		if (draft.number > 1) await keepZones(writer, studyId, definition);
 		await settleStudy(writer, studyId, definition);
 		await layOutSchedule(writer, studyId, draft.id, definition);
 		await writer
@@ -197,7 +220,13 @@ export const publishProtocol = (
 			.where('id', '=', studyId)
 			.where('status', '=', 'draft')
 			.execute();
-		return { protocolVersionId: draft.id, version: changed[0]?.version ?? version };
+		const following =
+			draft.number > 1 ? await letFollow(writer, actor, studyId) : { followed: 0, jobRunId: null };
+		return {
+			protocolVersionId: draft.id,
+			version: changed[0]?.version ?? version,
+			...following
+		};
 	});
 
 /** The version's visits, measures and grid as rows; positions count from 1 in the schedule's order. */

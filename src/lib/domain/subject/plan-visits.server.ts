@@ -20,7 +20,14 @@ export async function planSubjectVisits(
 ): Promise<void> {
 	const subject = await writer
 		.selectFrom('subject')
-		.select(['id', 'site_id', 'protocol_version_id', 'enrolled_on', 'randomised_on'])
+		.select([
+			'id',
+			'site_id',
+			'protocol_version_id',
+			'enrolled_on',
+			'randomised_on',
+			'version_since'
+		])
 		.where('study_id', '=', studyId)
 		.where('id', '=', subjectId)
 		.executeTakeFirst();
@@ -33,21 +40,44 @@ export async function planSubjectVisits(
 		.where('protocol_version_id', '=', subject.protocol_version_id)
 		.execute();
 	const existing = await writer
-		.selectFrom('visit')
-		.select(['id', 'planned_visit_id', 'status', 'earliest', 'target', 'latest', 'happened_on'])
-		.where('study_id', '=', studyId)
-		.where('subject_id', '=', subjectId)
+		.selectFrom('visit as v')
+		.leftJoin('planned_visit as p', 'p.id', 'v.planned_visit_id')
+		.select([
+			'v.id',
+			'p.key',
+			'p.protocol_version_id',
+			'p.position as planned_position',
+			'v.position',
+			'v.status',
+			'v.earliest',
+			'v.target',
+			'v.latest',
+			'v.happened_on'
+		])
+		.where('v.study_id', '=', studyId)
+		.where('v.subject_id', '=', subjectId)
+		.orderBy('v.position')
 		.execute();
 	const exits = await writer
 		.selectFrom('study_exit')
 		.select('kind')
 		.where('study_id', '=', studyId)
 		.where('subject_id', '=', subjectId)
+		.where('taken_back_at', 'is', null)
 		.execute();
-	const byPlan = new Map(existing.map((visit) => [visit.planned_visit_id, visit]));
+	// A key is the same visit in every version.
+	const byPlan = new Map(existing.map((visit) => [visit.key, visit]));
+	const own = existing.find((visit) => visit.protocol_version_id === subject.protocol_version_id);
+	// Whoever follows another version than the first has visits counted on from what was there before.
+	const ahead =
+		subject.version_since === null
+			? 0
+			: own && own.planned_position !== null
+				? own.position - own.planned_position
+				: (existing.at(-1)?.position ?? 0);
 	const byKey = new Map(rows.map((row) => [row.key, row]));
 	const took = Object.fromEntries(
-		rows.map((row) => [row.key, day(byPlan.get(row.id)?.happened_on ?? null)])
+		rows.map((row) => [row.key, day(byPlan.get(row.key)?.happened_on ?? null)])
 	);
 	const left = exits.some((exit) => endsVisits(exit.kind));
 	const fresh = [];
@@ -58,9 +88,11 @@ export async function planSubjectVisits(
 	})) {
 		const row = byKey.get(visit.key);
 		if (!row || !window) continue;
-		const there = byPlan.get(row.id);
+		const there = byPlan.get(row.key);
 		if (!there) {
-			if (!left)
+			// What closed before the subject came to this version was never asked of it.
+			const asked = subject.version_since === null || window.latest >= subject.version_since;
+			if (!left && asked)
 				fresh.push({
 					id: newId(),
 					study_id: studyId,
@@ -68,7 +100,7 @@ export async function planSubjectVisits(
 					subject_id: subject.id,
 					planned_visit_id: row.id,
 					name: row.name,
-					position: row.position,
+					position: row.position + ahead,
 					...window
 				});
 			continue;
@@ -77,6 +109,8 @@ export async function planSubjectVisits(
 			there.earliest !== window.earliest ||
 			there.target !== window.target ||
 			there.latest !== window.latest;
+		// A visit of an earlier version was over when the subject came to this one.
+		if (there.protocol_version_id !== subject.protocol_version_id) continue;
 		if (moved && (there.status === 'planned' || there.status === 'booked'))
 			await writer.updateTable('visit').set(window).where('id', '=', there.id).execute();
 	}

@@ -4,12 +4,15 @@ import { read, type Reader } from '$lib/server/change';
 import { may } from '$lib/server/permission';
 import { plainDateOf, shortDateText } from '$lib/time/dates';
 import { dateInZone, instantText, timeInZone } from '$lib/time/zones';
-import { windowText } from '../schedule/window';
 import { armName, isRandomised, type StudyDefinition } from '../study/definition';
 import { unmaskingsOf } from '../unmasking/unmasking.reads.server';
+import { consentViews, type ConsentView } from '../consent/consent.reads.server';
+import { tasksOf, type ReconsentTask } from '../consent/reconsent.reads.server';
+import { inWindow, windowText } from '../schedule/window';
 import { getDefinition } from '../study/study.reads.server';
 import { windowOfRow } from '../visit/visit.reads.server';
-import { exitMeanings, type ExitKind } from './exit';
+import type { ExitKind } from './exit';
+import { exitItems, movedItems, refusedItems } from './record-ways.server';
 import { measurementsOf, type MeasurementLine } from './record-values.server';
 import { getSite, siteOf, type SiteNow } from './site.reads.server';
 import type { ThreadRow } from './thread';
@@ -28,6 +31,8 @@ export interface RecordItem {
 		| 'deviation'
 		| 'exit'
 		| 'unmasking'
+		| 'refusal'
+		| 'transfer'
 		| 'mail';
 	/** In words, with the zone where it is an instant. */
 	when: string;
@@ -49,6 +54,9 @@ export interface VisitAhead {
 	status: ThreadRow['visits'][number]['status'];
 	booked: string | null;
 	bookedOn: string | null;
+	bookedAt: Date | null;
+	/** Booked on a day that an amendment took out of its window, and not because somebody said why. */
+	toMove: boolean;
 }
 
 export interface ContactDetails {
@@ -76,6 +84,8 @@ export interface SubjectRecord {
 	items: RecordItem[];
 	ahead: VisitAhead[];
 	exits: ExitKind[];
+	/** Ways out that stand, to be taken back where they were a mistake. */
+	standing: { id: string; kind: ExitKind; on: string }[];
 	randomised: boolean;
 	/** Whether there is an allocation that is kept from the site. */
 	masked: boolean;
@@ -87,6 +97,14 @@ export interface SubjectRecord {
 		level: string;
 		levels: { value: string; label: string }[];
 	}[];
+	/** The protocol version the subject follows, and what it must be asked again about. */
+	version: { number: number; since: string | null; newest: number };
+	tasks: ReconsentTask[];
+	consents: ConsentView[];
+	/** A site the subject has left sees what was collected there; where it went, and when. */
+	away: { to: string; on: string } | null;
+	underWay: number;
+	lostAfterAttempts: number;
 	/** Null without the permission to read them; the permission of their own is asked in a read of its own. */
 	contact: ContactDetails | 'none' | null;
 	may: {
@@ -95,6 +113,9 @@ export interface SubjectRecord {
 		editContact: boolean;
 		correct: boolean;
 		unmask: boolean;
+		consent: boolean;
+		scan: boolean;
+		transfer: boolean;
 	};
 }
 
@@ -106,70 +127,108 @@ export async function getSubjectRecord(
 ): Promise<SubjectRecord> {
 	const siteId = await siteOf(actor, 'subject.read', 'subject', studyId, subjectId);
 	const scope = { studyId, siteId };
-	const record = await read(actor, 'subject.read', scope, async (reader) => {
-		const row = await reader
-			.selectFrom('subject')
-			.select([
-				'id',
-				'number',
-				'imported_as',
-				'version',
-				'enrolled_on',
-				'kit_number',
-				'arm_key',
-				'randomised_at',
-				'protocol_version_id',
-				'stratum',
-				'characteristics'
-			])
-			.where('study_id', '=', studyId)
-			.where('id', '=', subjectId)
-			.executeTakeFirst();
-		if (!row) throw new Refusal('NOT_FOUND');
-		const site = await getSite(reader, studyId, siteId);
-		const definition = await getDefinition(reader, studyId, row.protocol_version_id);
-		const study = await reader
-			.selectFrom('study')
-			.select('masked')
-			.where('id', '=', studyId)
-			.executeTakeFirstOrThrow();
-		const visits = await visitsOf(reader, studyId, subjectId, site);
-		const items = [
-			...(await wayIn(reader, subjectId, site, {
-				...row,
-				arm: armName(definition, row.arm_key)
-			})),
-			...visits.items,
-			...(await alongTheWay(reader, studyId, subjectId, site))
-		].sort((a, b) => (a.key < b.key ? -1 : a.key > b.key ? 1 : 0));
-		const exits = await reader
-			.selectFrom('study_exit')
-			.select('kind')
-			.where('study_id', '=', studyId)
-			.where('subject_id', '=', subjectId)
-			.execute();
-		return {
-			subject: {
-				id: row.id,
-				number: row.number,
-				importedAs: row.imported_as,
-				version: row.version,
-				enrolledOn: shortDateText(plainDateOf(row.enrolled_on)),
-				kitNumber: row.kit_number,
-				arm: armName(definition, row.arm_key),
-				facts: factsOf(definition, row.characteristics, row.stratum)
-			},
-			site,
-			thread: await threadOf(reader, studyId, subjectId),
-			items,
-			ahead: visits.ahead,
-			exits: exits.map((exit) => exit.kind as ExitKind),
-			randomised: isRandomised(definition),
-			masked: row.kit_number !== null && study.masked,
-			maskedStudy: study.masked,
-			strata: strataOf(definition, row.stratum)
-		};
-	});
+	const seenFrom = may(actor.grants, 'subject.read', scope)
+		? siteId
+		: ((await formerSite(actor, studyId, subjectId)) ?? siteId);
+	const mayScan = may(actor.grants, 'consent.scan', scope);
+	const record = await read(
+		actor,
+		'subject.read',
+		{ studyId, siteId: seenFrom },
+		async (reader) => {
+			const row = await reader
+				.selectFrom('subject')
+				.select([
+					'id',
+					'number',
+					'imported_as',
+					'version',
+					'enrolled_on',
+					'kit_number',
+					'arm_key',
+					'randomised_at',
+					'protocol_version_id',
+					'version_since',
+					'stratum',
+					'characteristics'
+				])
+				.where('study_id', '=', studyId)
+				.where('id', '=', subjectId)
+				.executeTakeFirst();
+			if (!row) throw new Refusal('NOT_FOUND');
+			const site = await getSite(reader, studyId, siteId);
+			const definition = await getDefinition(reader, studyId, row.protocol_version_id);
+			const study = await reader
+				.selectFrom('study')
+				.select('masked')
+				.where('id', '=', studyId)
+				.executeTakeFirstOrThrow();
+			const visits = await visitsOf(reader, studyId, subjectId, site);
+			const consents = await consentViews(reader, { subjectId }, site.zone, mayScan);
+			const versions = await reader
+				.selectFrom('protocol_version')
+				.select(['id', 'number'])
+				.where('study_id', '=', studyId)
+				.where('status', '=', 'published')
+				.orderBy('number')
+				.execute();
+			const items = [
+				...(await wayIn(
+					reader,
+					subjectId,
+					site,
+					{ ...row, arm: armName(definition, row.arm_key) },
+					consents
+				)),
+				...visits.items,
+				...(await alongTheWay(reader, studyId, subjectId, site))
+			].sort((a, b) => (a.key < b.key ? -1 : a.key > b.key ? 1 : 0));
+			const exits = await reader
+				.selectFrom('study_exit')
+				.select(['id', 'kind', 'happened_on'])
+				.where('study_id', '=', studyId)
+				.where('subject_id', '=', subjectId)
+				.where('taken_back_at', 'is', null)
+				.orderBy('happened_on')
+				.execute();
+			return {
+				subject: {
+					id: row.id,
+					number: row.number,
+					importedAs: row.imported_as,
+					version: row.version,
+					enrolledOn: shortDateText(plainDateOf(row.enrolled_on)),
+					kitNumber: row.kit_number,
+					arm: armName(definition, row.arm_key),
+					facts: factsOf(definition, row.characteristics, row.stratum)
+				},
+				site,
+				thread: await threadOf(reader, studyId, subjectId),
+				items,
+				ahead: visits.ahead,
+				exits: exits.map((exit) => exit.kind as ExitKind),
+				masked: row.kit_number !== null && study.masked,
+				maskedStudy: study.masked,
+				strata: strataOf(definition, row.stratum),
+				standing: exits.map((exit) => ({
+					id: exit.id,
+					kind: exit.kind as ExitKind,
+					on: dayWords(exit.happened_on)
+				})),
+				version: {
+					number: versions.find((each) => each.id === row.protocol_version_id)?.number ?? 1,
+					since: row.version_since === null ? null : dayWords(row.version_since),
+					newest: versions.at(-1)?.number ?? 1
+				},
+				tasks: await tasksOf(reader, studyId, site, subjectId),
+				consents,
+				away: seenFrom === siteId ? null : await whereTo(reader, subjectId, site),
+				underWay: visits.underWay,
+				lostAfterAttempts: definition.lostAfterAttempts ?? 1,
+				randomised: isRandomised(definition)
+			};
+		}
+	);
 	return {
 		...record,
 		contact: may(actor.grants, 'contact.read', scope)
@@ -180,7 +239,10 @@ export async function getSubjectRecord(
 			exit: may(actor.grants, 'subject.exit', scope),
 			editContact: may(actor.grants, 'contact.edit', scope),
 			correct: may(actor.grants, 'subject.correct', scope),
-			unmask: may(actor.grants, 'unmasking.record', scope)
+			unmask: may(actor.grants, 'unmasking.record', scope),
+			consent: may(actor.grants, 'consent.record', scope),
+			scan: mayScan,
+			transfer: may(actor.grants, 'subject.transfer', scope)
 		}
 	};
 }
@@ -192,6 +254,30 @@ const strataOf = (definition: StudyDefinition, stratum: unknown): SubjectRecord[
 		level: String((stratum as Record<string, unknown> | null)?.[key] ?? ''),
 		levels: levels.map((each) => ({ value: each.key, label: each.name }))
 	}));
+/** A site of the actor's that the subject was at before. */
+const formerSite = (actor: Actor, studyId: string, subjectId: string) =>
+	read(actor, 'subject.read', { studyId }, async (reader) => {
+		const rows = await reader
+			.selectFrom('transfer')
+			.select('from_site_id')
+			.where('study_id', '=', studyId)
+			.where('subject_id', '=', subjectId)
+			.execute();
+		return (
+			rows.find((row) => may(actor.grants, 'subject.read', { studyId, siteId: row.from_site_id }))
+				?.from_site_id ?? null
+		);
+	});
+
+async function whereTo(reader: Reader, subjectId: string, site: SiteNow) {
+	const last = await reader
+		.selectFrom('transfer')
+		.select('transferred_on')
+		.where('subject_id', '=', subjectId)
+		.orderBy('made_at', 'desc')
+		.executeTakeFirst();
+	return { to: site.name, on: last ? dayWords(last.transferred_on) : '' };
+}
 
 const getContact = (actor: Actor, studyId: string, siteId: string, subjectId: string) =>
 	read(actor, 'contact.read', { studyId, siteId }, async (reader) => {
@@ -242,19 +328,13 @@ async function wayIn(
 		kit_number: string | null;
 		imported_as: string | null;
 		arm: string | null;
-	}
+	},
+	consents: readonly ConsentView[]
 ): Promise<RecordItem[]> {
 	const screenings = await reader
 		.selectFrom('screening')
 		.select(['id', 'number', 'screened_on'])
 		.where('subject_id', '=', subjectId)
-		.execute();
-	const consents = await reader
-		.selectFrom('consent as c')
-		.innerJoin('consent_version as v', 'v.id', 'c.consent_version_id')
-		.innerJoin('person as p', 'p.id', 'c.explained_by')
-		.select(['c.id', 'v.label', 'c.signed_at', 'c.signed_by', 'p.name'])
-		.where('c.subject_id', '=', subjectId)
 		.execute();
 	const items: RecordItem[] = screenings.map((each) => ({
 		id: each.id,
@@ -268,12 +348,10 @@ async function wayIn(
 		items.push({
 			id: each.id,
 			kind: 'consent',
-			when: instantText(each.signed_at, site.zone),
-			key: instantKey(each.signed_at, site.zone),
+			when: each.signedAt,
+			key: instantKey(each.signed, site.zone),
 			title: `Consent, version ${each.label}`,
-			lines: [
-				`Signed by the ${each.signed_by === 'participant' ? 'participant' : 'legally acceptable representative'}; explained by ${each.name}; a copy was given.`
-			]
+			lines: [...each.lines, each.withdrawn ?? ''].filter(Boolean)
 		});
 	items.push({
 		id: subject.id,
@@ -307,7 +385,7 @@ async function visitsOf(
 	studyId: string,
 	subjectId: string,
 	site: SiteNow
-): Promise<{ items: RecordItem[]; ahead: VisitAhead[] }> {
+): Promise<{ items: RecordItem[]; ahead: VisitAhead[]; underWay: number }> {
 	const visits = await reader
 		.selectFrom('visit as v')
 		.leftJoin('appointment as a', (join) =>
@@ -329,6 +407,7 @@ async function visitsOf(
 			'v.finished_at',
 			'f.name as finished_by',
 			'a.starts_at',
+			'a.outside_reason',
 			'r.name as room'
 		])
 		.where('v.study_id', '=', studyId)
@@ -355,7 +434,13 @@ async function visitsOf(
 				booked: visit.starts_at
 					? `${instantText(visit.starts_at, site.zone)}${visit.room ? `, ${visit.room}` : ''}`
 					: null,
-				bookedOn: visit.starts_at ? dateInZone(visit.starts_at, site.zone) : null
+				bookedOn: visit.starts_at ? dateInZone(visit.starts_at, site.zone) : null,
+				bookedAt: visit.starts_at,
+				toMove:
+					visit.starts_at !== null &&
+					window !== null &&
+					visit.outside_reason === null &&
+					!inWindow(window, dateInZone(visit.starts_at, site.zone))
 			});
 			continue;
 		}
@@ -384,7 +469,8 @@ async function visitsOf(
 			measurements: values.get(visit.id) ?? []
 		});
 	}
-	return { items, ahead };
+	const underWay = visits.filter((visit) => visit.status === 'under way').length;
+	return { items, ahead, underWay };
 }
 
 const mailWords: Record<string, string> = {
@@ -427,12 +513,6 @@ async function alongTheWay(
 	const deviations = await reader
 		.selectFrom('deviation')
 		.select(['id', 'category', 'detail', 'important', 'found_at'])
-		.where('study_id', '=', studyId)
-		.where('subject_id', '=', subjectId)
-		.execute();
-	const exits = await reader
-		.selectFrom('study_exit')
-		.select(['id', 'kind', 'happened_on', 'reason'])
 		.where('study_id', '=', studyId)
 		.where('subject_id', '=', subjectId)
 		.execute();
@@ -481,18 +561,11 @@ async function alongTheWay(
 			title: `Deviation: ${each.category}${each.important ? ', important' : ''}`,
 			lines: [each.detail]
 		});
-	for (const each of exits)
-		items.push({
-			id: each.id,
-			kind: 'exit',
-			when: dayWords(each.happened_on),
-			key: dayKey(each.happened_on, '~4'),
-			title: each.kind.charAt(0).toUpperCase() + each.kind.slice(1),
-			lines: [
-				exitMeanings[each.kind as ExitKind],
-				each.reason ? `Said: ${each.reason}` : ''
-			].filter(Boolean)
-		});
+	items.push(
+		...(await exitItems(reader, studyId, subjectId, site)),
+		...(await movedItems(reader, studyId, subjectId)),
+		...(await refusedItems(reader, studyId, subjectId))
+	);
 	for (const each of mails)
 		items.push({
 			id: each.id,

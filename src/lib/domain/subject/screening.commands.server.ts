@@ -4,12 +4,10 @@ import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { change, mustHaveChanged, type Writer } from '$lib/server/change';
 import { clock } from '$lib/time/clock';
-import { plainDateOf, shortDateText } from '$lib/time/dates';
-import { dateInZone, instantFromLocal } from '$lib/time/zones';
 import { getPublished } from '../study/study.reads.server';
 import { answeredVersionOf, answersOf, sameAnswers } from './eligibility';
 import { getSite, siteOf } from './site.reads.server';
-import type { ConsentInput, EligibilityInput, ScreeningInput } from './subject.input';
+import type { EligibilityInput, ScreeningInput } from './subject.input';
 
 /** One at a time for a site and a purpose, or two callers would take the same next number. */
 export const takeTurn = (writer: Writer, what: string, siteId: string) =>
@@ -132,103 +130,4 @@ export async function closeScreening(
 		mustHaveChanged(changed);
 		return { version: changed[0]?.version ?? version };
 	});
-}
-
-/** Roles that may explain a study to somebody; whoever did must have held one at the site on that day. */
-const explaining = ['coordinator', 'investigator', 'nurse'] as const;
-
-/** Records a consent: which version, when by the site's clocks, who explained it, who signed, that a copy was given. */
-export async function recordConsent(
-	actor: Actor,
-	studyId: string,
-	screeningId: string,
-	input: ConsentInput
-): Promise<{ id: string; version: number }> {
-	const siteId = await siteOf(actor, 'consent.record', 'screening', studyId, screeningId);
-	return change(actor, 'consent.record', { studyId, siteId }, async (writer) => {
-		const screening = await openScreening(writer, studyId, siteId, screeningId);
-		const site = await getSite(writer, studyId, siteId);
-		const form = await writer
-			.selectFrom('consent_version')
-			.select(['id', 'approved_on'])
-			.where('study_id', '=', studyId)
-			.where('id', '=', input.consentVersionId)
-			.executeTakeFirst();
-		if (!form)
-			throw new Refusal(
-				'INVALID',
-				{},
-				{ consentVersionId: 'Choose one of this study’s versions.' }
-			);
-		const signedAt = instantFromLocal(plainDateOf(input.signedOn), input.signedTime, site.zone);
-		if (signedAt > clock.now())
-			throw new Refusal(
-				'FUTURE',
-				{ what: 'The consent' },
-				{ signedOn: 'A consent is recorded once it is signed.' }
-			);
-		if (input.signedOn < form.approved_on)
-			throw new Refusal(
-				'CONSENT_EARLY',
-				{ approved: shortDateText(plainDateOf(form.approved_on)) },
-				{ signedOn: 'This version was not approved yet.' }
-			);
-		await mustExplain(writer, studyId, siteId, input.explainedBy, input.signedOn);
-		const id = newId();
-		await writer
-			.insertInto('consent')
-			.values({
-				id,
-				study_id: studyId,
-				site_id: siteId,
-				screening_id: screening.id,
-				consent_version_id: form.id,
-				signed_at: signedAt,
-				signed_by: input.signedBy,
-				explained_by: input.explainedBy,
-				copy_given: input.copyGiven
-			})
-			.execute();
-		return { id, version: 1 };
-	});
-}
-
-async function mustExplain(
-	writer: Writer,
-	studyId: string,
-	siteId: string,
-	personId: string,
-	on: string
-): Promise<void> {
-	const held = await writer
-		.selectFrom('person_role')
-		.select('id')
-		.where('person_id', '=', personId)
-		.where('study_id', '=', studyId)
-		.where('role', 'in', explaining)
-		.where((e) => e.or([e('site_id', 'is', null), e('site_id', '=', siteId)]))
-		.where('valid_from', '<=', on)
-		.where((e) => e.or([e('valid_to', 'is', null), e('valid_to', '>=', on)]))
-		.executeTakeFirst();
-	if (!held)
-		throw new Refusal(
-			'INVALID',
-			{},
-			{ explainedBy: 'This person had no role at the site on that day.' }
-		);
-}
-
-/** The days of the consents given so far, on the site's calendar. */
-export async function consentDays(
-	writer: Writer,
-	screeningId: string,
-	zone: string
-): Promise<string[]> {
-	const given = await writer
-		.selectFrom('consent')
-		.select('signed_at')
-		.where('screening_id', '=', screeningId)
-		.where('copy_given', '=', true)
-		.execute();
-	return given.map((consent) => dateInZone(consent.signed_at, zone));
 }

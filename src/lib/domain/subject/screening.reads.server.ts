@@ -2,12 +2,20 @@ import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { read } from '$lib/server/change';
 import { may, sitesAllowing } from '$lib/server/permission';
-import { instantText } from '$lib/time/zones';
+import { formsInForce } from '../amendment/amendment';
+import { newestOf, publishedVersions } from '../amendment/versions.reads.server';
+import { whyNot } from '../consent/consent';
+import {
+	consentChoices,
+	consentViews,
+	type ConsentChoices,
+	type ConsentView
+} from '../consent/consent.reads.server';
+import { consentsOf, groundFor } from '../consent/ground.server';
 import type { SignatureView } from '../signature/signature.input';
 import { signaturesOf } from '../signature/signature.reads.server';
 import { isRandomised, type StudyDefinition } from '../study/definition';
-import { getPublished } from '../study/study.reads.server';
-import { answersOf, type Answers } from './eligibility';
+import { answeredVersionOf, answersOf, type Answers } from './eligibility';
 import { eligibilityKind } from './eligibility-signable.server';
 import { getSite, siteOf, type SiteNow } from './site.reads.server';
 import type { ScreeningsQuery } from './subject.input';
@@ -91,13 +99,7 @@ export interface ScreeningDetail {
 	outcome: 'in progress' | 'entered' | 'not entered';
 	reason: string | null;
 	answers: Answers;
-	consents: {
-		id: string;
-		label: string;
-		signedAt: string;
-		signedBy: string;
-		explainedBy: string;
-	}[];
+	consents: (ConsentView & { counts: boolean })[];
 	subject: { id: string; number: string } | null;
 	/** What the version in force asks for. */
 	definition: Pick<
@@ -109,9 +111,12 @@ export interface ScreeningDetail {
 	signatures: SignatureView[];
 	/** Whether the protocol asks for one before enrolment, and whether the actor can sign now. */
 	signing: { asked: boolean; obstacle: string | null; mine: boolean };
-	consentVersions: { id: string; label: string; approvedOn: string }[];
-	/** Who may have explained the study: people with a role at the site. */
-	explainers: { id: string; name: string }[];
+	choices: ConsentChoices;
+	/** Forms of the version in force, by label and language. */
+	forms: string[];
+	minors: StudyDefinition['minors'] | null;
+	mayConsent: boolean;
+	mayScan: boolean;
 	mayEdit: boolean;
 	mayContact: boolean;
 }
@@ -142,40 +147,19 @@ export async function getScreening(
 			.executeTakeFirst();
 		if (!row) throw new Refusal('NOT_FOUND');
 		const site = await getSite(reader, studyId, siteId);
-		const { definition } = await getPublished(reader, studyId);
-		const consents = await reader
-			.selectFrom('consent as c')
-			.innerJoin('consent_version as v', 'v.id', 'c.consent_version_id')
-			.innerJoin('person as p', 'p.id', 'c.explained_by')
-			.select(['c.id', 'v.label', 'c.signed_at', 'c.signed_by', 'p.name'])
-			.where('c.screening_id', '=', screeningId)
-			.orderBy('c.signed_at')
-			.execute();
-		const consentVersions = await reader
-			.selectFrom('consent_version')
-			.select(['id', 'label', 'approved_on as approvedOn'])
-			.where('study_id', '=', studyId)
-			.orderBy('approved_on', 'desc')
-			.execute();
-		const explainers = await reader
-			.selectFrom('person as p')
-			.select(['p.id', 'p.name'])
-			.where((e) =>
-				e.exists(
-					e
-						.selectFrom('person_role as r')
-						.select('r.id')
-						.whereRef('r.person_id', '=', 'p.id')
-						.where('r.study_id', '=', studyId)
-						.where('r.role', 'in', ['coordinator', 'investigator', 'nurse'])
-						.where((f) => f.or([f('r.site_id', 'is', null), f('r.site_id', '=', siteId)]))
-						.where('r.valid_from', '<=', site.today)
-						.where((f) => f.or([f('r.valid_to', 'is', null), f('r.valid_to', '>=', site.today)]))
-				)
-			)
-			.where('p.active', '=', true)
-			.orderBy('p.name')
-			.execute();
+		const versions = await publishedVersions(reader, studyId);
+		const newest = newestOf(versions);
+		const answered = answeredVersionOf(row.eligibility);
+		// What is closed is shown by the version it was answered by.
+		const { definition } =
+			(row.outcome === 'in progress'
+				? undefined
+				: versions.find((version) => version.number === answered)) ?? newest;
+		const mayScan = may(actor.grants, 'consent.scan', { studyId, siteId });
+		const consents = await consentViews(reader, { screeningId }, site.zone, mayScan);
+		const forms = formsInForce(versions, newest.number);
+		const known = await consentsOf(reader, { screeningId }, site.zone);
+		const ground = groundFor(versions, newest.number, site.today, null);
 		const [signable] = await eligibilityKind.find(reader, [screeningId]);
 		return {
 			id: row.id,
@@ -186,13 +170,14 @@ export async function getScreening(
 			outcome: row.outcome,
 			reason: row.reason,
 			answers: answersOf(row.eligibility),
-			consents: consents.map((each) => ({
-				id: each.id,
-				label: each.label,
-				signedAt: instantText(each.signed_at, site.zone),
-				signedBy: each.signed_by,
-				explainedBy: each.name
-			})),
+			consents: consents.map((each) => {
+				const consent = known.find((one) => one.id === each.id);
+				return {
+					...each,
+					counts:
+						row.outcome !== 'in progress' || (consent ? whyNot(consent, ground) === null : false)
+				};
+			}),
 			subject:
 				row.subject_id && row.subject_number
 					? { id: row.subject_id, number: row.subject_number }
@@ -211,8 +196,11 @@ export async function getScreening(
 				obstacle: signable?.obstacle ?? null,
 				mine: may(actor.grants, eligibilityKind.capability, { studyId, siteId })
 			},
-			consentVersions,
-			explainers,
+			choices: await consentChoices(reader, studyId, site),
+			forms: [...forms],
+			minors: definition.minors ?? null,
+			mayConsent: may(actor.grants, 'consent.record', { studyId, siteId }),
+			mayScan,
 			mayEdit: may(actor.grants, 'screening.edit', { studyId, siteId }),
 			mayContact: may(actor.grants, 'contact.edit', { studyId, siteId })
 		};

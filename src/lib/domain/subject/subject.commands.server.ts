@@ -4,15 +4,19 @@ import { Refusal, type FieldErrors } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { change, mustHaveChanged, type Writer } from '$lib/server/change';
 import { may } from '$lib/server/permission';
-import { getPublished } from '../study/study.reads.server';
 import { armName, isRandomised } from '../study/definition';
 import { tellLowStock } from '../kit/kit.commands.server';
+import { holdVersion } from '../amendment/amendment.commands.server';
+import { publishedVersions, newestOf } from '../amendment/versions.reads.server';
+import { birthDateOf, consentsOf, groundFor, noneCounts } from '../consent/ground.server';
+import { getDefinition } from '../study/study.reads.server';
+import { plainDateOf } from '$lib/time/dates';
 import { isSigned } from '../signature/signature.reads.server';
 import { answeredVersionOf, answersOf, standing } from './eligibility';
 import { mostSubjectsPerSite, subjectNumber } from './number';
 import { characteristicsOf, stratumOf } from './particulars';
 import { planSubjectVisits } from './plan-visits.server';
-import { consentDays, openScreening, takeTurn } from './screening.commands.server';
+import { openScreening, takeTurn } from './screening.commands.server';
 import { getSite, siteOf, type SiteNow } from './site.reads.server';
 import type { ContactInput, EnrolInput } from './subject.input';
 
@@ -24,9 +28,10 @@ export async function nextSubjectNumbers(
 	count = 1
 ): Promise<string[]> {
 	await takeTurn(writer, 'subject', site.id);
+	// By the site's code, not by where the subjects are now: a number stays with who has moved away.
 	const { rows } = await sql<{ last: number | null }>`
 		select max(substring(number from 4 for 4)::int) as last from app.subject
-		where study_id = ${studyId}::uuid and site_id = ${site.id}::uuid
+		where study_id = ${studyId}::uuid
 			and number ~ ${`^${site.code}-[0-9]{4}-[0-9]$`}`.execute(writer);
 	const last = rows[0]?.last ?? 0;
 	if (last + count > mostSubjectsPerSite)
@@ -47,14 +52,12 @@ export async function enrolSubject(
 ): Promise<{ id: string; number: string; version: number }> {
 	const siteId = await siteOf(actor, 'subject.enrol', 'screening', studyId, screeningId);
 	return change(actor, 'subject.enrol', { studyId, siteId }, async (writer) => {
+		await holdVersion(writer, studyId, false);
 		const screening = await openScreening(writer, studyId, siteId, screeningId);
 		if (screening.version !== version) throw new Refusal('STALE');
 		const site = await getSite(writer, studyId, siteId);
-		const {
-			id: protocolVersionId,
-			number: protocolVersion,
-			definition
-		} = await getPublished(writer, studyId);
+		const versions = await publishedVersions(writer, studyId);
+		const { id: protocolVersionId, number: protocolVersion, definition } = newestOf(versions);
 
 		if (input.enrolledOn > site.today)
 			throw new Refusal(
@@ -70,10 +73,16 @@ export async function enrolSubject(
 				{ why: 'The day of enrolment lies before the screening.' },
 				{ enrolledOn: 'Choose the day of the screening or a later one.' }
 			);
-		const consented = (await consentDays(writer, screening.id, site.zone)).some(
-			(day) => day <= input.enrolledOn
+		const why = noneCounts(
+			await consentsOf(writer, { screeningId: screening.id }, site.zone),
+			groundFor(
+				versions,
+				protocolVersion,
+				plainDateOf(input.enrolledOn),
+				birthDateOf(definition, input.characteristics)
+			)
 		);
-		if (!consented) throw new Refusal('CONSENT_NEEDED');
+		if (why !== null) throw new Refusal('CONSENT_NEEDED', { why });
 		const { unanswered, unmet } = standing(definition, answersOf(screening.eligibility));
 		if (unanswered.length + unmet.length > 0)
 			throw new Refusal('NOT_ELIGIBLE', {
@@ -117,6 +126,14 @@ export async function enrolSubject(
 			.updateTable('consent')
 			.set({ subject_id: id })
 			.where('screening_id', '=', screening.id)
+			.execute();
+		await writer
+			.updateTable('upload')
+			.set({ subject_id: id })
+			.where('study_id', '=', studyId)
+			.where('consent_id', 'in', (e) =>
+				e.selectFrom('consent').select('consent.id').where('screening_id', '=', screening.id)
+			)
 			.execute();
 		if (input.contact) await insertContact(writer, studyId, siteId, id, input.contact);
 		await planSubjectVisits(writer, studyId, id);
@@ -208,14 +225,14 @@ export async function randomiseSubject(
 	return change(actor, 'subject.randomise', { studyId, siteId }, async (writer) => {
 		const subject = await writer
 			.selectFrom('subject')
-			.select(['id', 'kit_number'])
+			.select(['id', 'kit_number', 'protocol_version_id'])
 			.where('study_id', '=', studyId)
 			.where('id', '=', subjectId)
 			.forUpdate()
 			.executeTakeFirst();
 		if (!subject) throw new Refusal('NOT_FOUND');
 		if (subject.kit_number !== null) throw new Refusal('ALREADY_RANDOMISED');
-		const { definition } = await getPublished(writer, studyId);
+		const definition = await getDefinition(writer, studyId, subject.protocol_version_id);
 		if (!isRandomised(definition))
 			throw new Refusal('RULE', { why: 'This study has one arm: nobody is randomised.' });
 		if (definition.eligibilitySigned) await mustStandSigned(writer, subjectId);
@@ -224,6 +241,7 @@ export async function randomiseSubject(
 			.select('kind')
 			.where('study_id', '=', studyId)
 			.where('subject_id', '=', subjectId)
+			.where('taken_back_at', 'is', null)
 			.execute();
 		if (exits.length > 0) throw new Refusal('LEFT_STUDY');
 		const { rows } = await sql<{

@@ -1,5 +1,4 @@
 import { z } from 'zod';
-import { minutesOfTime } from '$lib/time/zones';
 import { isPlainDate } from '$lib/time/dates';
 import { exitKinds } from './exit';
 
@@ -7,12 +6,6 @@ import { exitKinds } from './exit';
 const oneLine = /^[^\u0000-\u001f\u007f]*$/;
 const id = z.uuid('Choose one of the list.');
 const date = z.string().refine((text): boolean => isPlainDate(text), 'Enter a date that exists.');
-const time = z
-	.string()
-	.refine(
-		(text) => minutesOfTime(text) !== null && text !== '24:00',
-		'Enter a time on a 24-hour clock: 09:30.'
-	);
 const version = z.coerce.number().int().min(1).max(1_000_000_000);
 const key = z.string().min(1).max(40);
 
@@ -30,18 +23,6 @@ export const notEnteredInput = z.strictObject({
 });
 export const notEnteredForm = notEnteredInput.extend({ version });
 
-/** Date and time are those of the site's own clocks. */
-export const consentInput = z.strictObject({
-	consentVersionId: id,
-	signedOn: date,
-	signedTime: time,
-	explainedBy: id,
-	signedBy: z.enum(['participant', 'representative'], 'Say who signed.'),
-	copyGiven: z
-		.boolean('Say whether a copy was given.')
-		.refine((given) => given, 'Give a copy of what was signed, then record the consent.')
-});
-export type ConsentInput = z.output<typeof consentInput>;
 /** A choice of which a form must not take the first by itself. */
 const chosen = (of: readonly string[], said: string) =>
 	z
@@ -49,16 +30,6 @@ const chosen = (of: readonly string[], said: string) =>
 		.max(60)
 		.default('')
 		.refine((text): boolean => of.includes(text), said);
-
-/** The same as a form says it: a box that is not ticked is not sent, and means no. */
-export const consentForm = z.object({
-	...consentInput.shape,
-	signedBy: chosen(['participant', 'representative'], 'Say who signed.'),
-	copyGiven: z
-		.boolean()
-		.default(false)
-		.refine((given) => given, 'Give a copy of what was signed, then record the consent.')
-});
 
 const contact = {
 	name: z
@@ -115,6 +86,31 @@ export const exitForm = z.object({
 	...exitInput.shape,
 	kind: chosen(exitKinds, 'Choose what happened.')
 });
+
+/** An entry taken back: it stays, marked. */
+export const takeBackInput = z.strictObject({
+	exitId: id,
+	because: z.enum(['entered by mistake', 'changed mind'], 'Say which of the two it is.'),
+	reason: z.string().trim().min(1, 'Say why.').max(500, 'At most 500 characters.')
+});
+export type TakeBackInput = z.output<typeof takeBackInput>;
+
+export const transferInput = z.strictObject({
+	siteId: id,
+	transferredOn: date,
+	reason: z.string().trim().min(1, 'Say why.').max(500, 'At most 500 characters.')
+});
+export type TransferInput = z.output<typeof transferInput>;
+
+/** A name to look for, or the beginning of any of its words. */
+export const contactSearchInput = z.strictObject({
+	name: z
+		.string()
+		.trim()
+		.max(120, 'At most 120 characters.')
+		.refine((text) => (text.match(/\p{L}/gu) ?? []).length >= 2, 'Enter two letters or more.')
+});
+export type ContactSearchInput = z.output<typeof contactSearchInput>;
 
 export const threadsQuery = z.object({
 	site: z.union([z.literal(''), z.uuid()]).optional(),

@@ -61,7 +61,7 @@ export const getThreadFrame = (
 			high: number;
 			dated: boolean;
 		}>`
-			select v.name, v.position,
+			select v.name, min(v.position) as position,
 				avg(coalesce((v.target - ${anchor})::numeric, v.study_time * ${days}::numeric,
 					(v.happened_on - ${anchor})::numeric))::float8 as at,
 				min(least((v.earliest - ${anchor})::numeric, (v.happened_on - ${anchor})::numeric,
@@ -71,7 +71,7 @@ export const getThreadFrame = (
 				bool_or(v.target is not null or v.happened_on is not null) as dated
 			from app.visit v join app.subject s on s.id = v.subject_id
 			where ${where} and v.study_id = ${studyId}::uuid
-			group by v.position, v.name order by v.position, v.name`.execute(reader);
+			group by v.name order by min(v.position), v.name`.execute(reader);
 		const known = columns.rows.filter((column) => column.at !== null);
 		const low = Math.min(0, ...known.flatMap((column) => column.low ?? []));
 		const high = Math.max(1, ...known.flatMap((column) => column.high ?? []));
@@ -207,6 +207,7 @@ async function threadsOf(
 		.select(['subject_id', 'kind', 'happened_on'])
 		.where('study_id', '=', studyId)
 		.where('subject_id', 'in', ids)
+		.where('taken_back_at', 'is', null)
 		.orderBy('happened_on')
 		.orderBy('id')
 		.execute();

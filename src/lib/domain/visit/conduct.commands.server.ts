@@ -12,6 +12,7 @@ import { planSubjectVisits } from '../subject/plan-visits.server';
 import { closeAppointment, findOpenAppointment } from './booking.commands.server';
 import { refuseStale, refuseStep } from './steps.server';
 import {
+	collectionEnded,
 	holdVisit,
 	refuseIfLeft,
 	refuseWithoutConsent,
@@ -69,7 +70,8 @@ export async function finishVisit(
 		refuseStep(visit, 'completed');
 		refuseStale(visit, version);
 		if (visit.happenedOn === null) throw new Refusal('VISIT_STATE', { status: visit.status });
-		await refuseIncomplete(writer, visit);
+		// Where nothing more may be written down, the visit ends as it stands.
+		if (!(await collectionEnded(writer, visit.subjectId))) await refuseIncomplete(writer, visit);
 		await deriveAtVisit(writer, actor, visit, true);
 		const open = await findOpenAppointment(writer, visitId);
 		if (open)

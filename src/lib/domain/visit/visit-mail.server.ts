@@ -38,6 +38,7 @@ export async function tellSubject(
 		.select('id')
 		.where('subject_id', '=', row.subject_id)
 		.where('kind', '=', 'died')
+		.where('taken_back_at', 'is', null)
 		.executeTakeFirst();
 	if (died) return;
 	const contact = await writer

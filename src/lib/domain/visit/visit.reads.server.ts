@@ -1,7 +1,7 @@
 import { Refusal } from '$lib/refusal';
 import type { Actor } from '$lib/server/actor';
 import { read, type Reader, type Writer } from '$lib/server/change';
-import type { Capability } from '$lib/server/permission';
+import { may, type Capability } from '$lib/server/permission';
 import { clock } from '$lib/time/clock';
 import { findPlainDate, plainDateOf, type PlainDate } from '$lib/time/dates';
 import { dateInZone } from '$lib/time/zones';
@@ -151,13 +151,18 @@ export const scopeOfVisit = (
 ): Promise<{ studyId: string; siteId: string }> =>
 	read(actor, capability, { studyId }, async (reader) => {
 		const row = await reader
-			.selectFrom('visit')
-			.select('site_id')
-			.where('study_id', '=', studyId)
-			.where('id', '=', visitId)
+			.selectFrom('visit as v')
+			.innerJoin('subject as s', 's.id', 'v.subject_id')
+			.select(['v.site_id', 's.site_id as present'])
+			.where('v.study_id', '=', studyId)
+			.where('v.id', '=', visitId)
 			.executeTakeFirst();
 		if (!row) throw new Refusal('NOT_FOUND');
-		return { studyId, siteId: row.site_id };
+		// Whoever takes a subject over reads what the site before collected, and changes none of it.
+		const reads =
+			capability === 'subject.read' &&
+			!may(actor.grants, capability, { studyId, siteId: row.site_id });
+		return { studyId, siteId: reads ? row.present : row.site_id };
 	});
 
 /**
@@ -203,9 +208,22 @@ export async function visitsEndedOn(reader: Reader, subjectId: string): Promise<
 		.select('happened_on')
 		.where('subject_id', '=', subjectId)
 		.where('kind', 'in', endings)
+		.where('taken_back_at', 'is', null)
 		.orderBy('happened_on')
 		.executeTakeFirst();
 	return row ? findPlainDate(row.happened_on) : null;
+}
+
+/** Whether nothing more may be written down about the subject: consent withdrawn, or died. */
+export async function collectionEnded(reader: Reader, subjectId: string): Promise<boolean> {
+	const row = await reader
+		.selectFrom('study_exit')
+		.select('id')
+		.where('subject_id', '=', subjectId)
+		.where('kind', 'in', ['consent withdrawn', 'died'])
+		.where('taken_back_at', 'is', null)
+		.executeTakeFirst();
+	return row !== undefined;
 }
 
 export async function refuseIfLeft(reader: Reader, subjectId: string): Promise<void> {
@@ -232,6 +250,7 @@ export async function refuseWithoutConsent(
 		.select('id')
 		.where('subject_id', '=', subjectId)
 		.where('kind', '=', 'consent withdrawn')
+		.where('taken_back_at', 'is', null)
 		.executeTakeFirst();
 	if (withdrawn) throw new Refusal('LEFT_STUDY');
 	if (subject.imported_as !== null) return;
@@ -240,6 +259,7 @@ export async function refuseWithoutConsent(
 		.select('id')
 		.where('subject_id', '=', subjectId)
 		.where('signed_at', '<=', now)
+		.where('withdrawn_on', 'is', null)
 		.executeTakeFirst();
 	if (!consent) throw new Refusal('CONSENT_NEEDED');
 }

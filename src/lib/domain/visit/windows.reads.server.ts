@@ -41,6 +41,7 @@ interface Found {
 	latest: string;
 	sorted: number;
 	starts_at: Date | null;
+	outside_reason: string | null;
 	contact_at: Date | null;
 	contact_way: string | null;
 	contact_outcome: string | null;
@@ -93,7 +94,7 @@ async function windowsOf(
 	}[query.what];
 	const pattern = `%${literally(query.text)}%`;
 	const { rows } = await sql<Found>`
-		select w.*, a.starts_at, c.at as contact_at, c.way as contact_way, c.outcome as contact_outcome, c.try_again_on
+		select w.*, a.starts_at, a.outside_reason, c.at as contact_at, c.way as contact_way, c.outcome as contact_outcome, c.try_again_on
 		from (
 			select v.id as visit_id, v.version, v.subject_id, s.number, v.name as visit, v.site_id, v.status,
 				v.earliest, v.target, v.latest, ${order} as sorted
@@ -103,7 +104,7 @@ async function windowsOf(
 			where v.site_id in (${sql.join(sites.map((site) => sql`${site.id}::uuid`))})
 				and v.status in ('planned', 'booked') and v.earliest <= ${horizon}::date
 				and v.study_id = ${studyId}::uuid and ${kind}
-				and not exists (select from app.study_exit e where e.subject_id = v.subject_id and e.kind <> 'intervention discontinued')
+				and not exists (select from app.study_exit e where e.subject_id = v.subject_id and e.kind <> 'intervention discontinued' and e.taken_back_at is null)
 				and (${query.text} = '' or s.number ilike ${pattern} or v.name ilike ${pattern})
 		) w
 		left join app.appointment a on a.visit_id = w.visit_id and a.status = 'booked'
@@ -155,8 +156,12 @@ const dayOf = (date: PlainDate) =>
 
 /** 'booked Fri 12 Jun, 11:00', 'telephone: no answer, 8 Jun 2026; try again 11 Jun 2026', 'not booked' */
 function lastStepOf(row: Found, zone: string): string {
-	if (row.starts_at)
-		return `booked ${dayOf(dateInZone(row.starts_at, zone))}, ${timeInZone(row.starts_at, zone)}`;
+	if (row.starts_at) {
+		const on = dateInZone(row.starts_at, zone);
+		// An amendment moved the window from under the booking.
+		const outside = row.outside_reason === null && (on < row.earliest || on > row.latest);
+		return `booked ${dayOf(on)}, ${timeInZone(row.starts_at, zone)}${outside ? '; outside the window, to move' : ''}`;
+	}
 	if (row.contact_at) {
 		const again = row.try_again_on
 			? `; try again ${shortDateText(plainDateOf(row.try_again_on))}`

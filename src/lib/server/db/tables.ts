@@ -14,6 +14,8 @@ type Numeric = number;
 type Json = ColumnType<unknown, string, string>;
 type GeneratedJson = ColumnType<unknown, string | undefined, string>;
 export type JobStatus = 'waiting' | 'running' | 'done' | 'failed' | 'cancelled';
+export type MailStatus =
+	'waiting' | 'sending' | 'sent' | 'failed' | 'doubtful' | 'no address' | 'stopped';
 export type MailKind =
 	| 'invitation'
 	| 'reset'
@@ -70,13 +72,21 @@ interface ConsentTable {
 	id: string;
 	study_id: string;
 	site_id: string;
-	screening_id: string;
+	screening_id: string | null;
 	subject_id: string | null;
 	consent_version_id: string;
 	signed_at: Timestamp;
 	signed_by: string;
 	explained_by: string;
 	copy_given: boolean;
+	obtained_at: Timestamp | null;
+	relationship: string | null;
+	witnessed: Generated<boolean>;
+	minor: Generated<boolean>;
+	assent: string | null;
+	assent_reason: string | null;
+	withdrawn_on: string | null;
+	withdrawn_reason: string | null;
 	version: Generated<number>;
 }
 
@@ -287,7 +297,7 @@ interface MailTable {
 	appointment_id: string | null;
 	facts: GeneratedJson;
 	secret: Buffer | null;
-	status: Generated<'waiting' | 'sending' | 'sent' | 'failed' | 'doubtful' | 'no address'>;
+	status: Generated<MailStatus>;
 	message_id: string;
 	created_at: Generated<Timestamp>;
 	sent_at: Timestamp | null;
@@ -397,6 +407,10 @@ interface ProtocolVersionTable {
 	status: Generated<'draft' | 'published'>;
 	published_at: Timestamp | null;
 	published_by: string | null;
+	summary: string | null;
+	approved_on: string | null;
+	reconsent: boolean | null;
+	reconsent_by: string | null;
 	version: Generated<number>;
 }
 
@@ -536,6 +550,9 @@ interface StudyExitTable {
 	kind: string;
 	happened_on: string;
 	reason: string | null;
+	taken_back_at: Timestamp | null;
+	taken_back_by: string | null;
+	taken_back_reason: string | null;
 	version: Generated<number>;
 }
 
@@ -552,9 +569,53 @@ interface SubjectTable {
 	kit_number: string | null;
 	stratum: GeneratedJson;
 	characteristics: GeneratedJson;
+	version_since: string | null;
 	version: Generated<number>;
 	/** Filled in by the allocation where nothing is masked; elsewhere always null. */
 	arm_key: string | null;
+}
+
+interface ReconsentRefusalTable {
+	id: string;
+	study_id: string;
+	site_id: string;
+	subject_id: string;
+	protocol_version_id: string | null;
+	refused_on: string;
+	reason: string | null;
+	recorded_by: string;
+	recorded_at: Generated<Timestamp>;
+	version: Generated<number>;
+}
+
+interface TransferTable {
+	id: string;
+	study_id: string;
+	site_id: string;
+	from_site_id: string;
+	subject_id: string;
+	transferred_on: string;
+	reason: string;
+	made_by: string;
+	made_at: Generated<Timestamp>;
+	version: Generated<number>;
+}
+
+interface UploadTable {
+	id: string;
+	study_id: string;
+	site_id: string;
+	subject_id: string | null;
+	consent_id: string;
+	kind: 'pdf' | 'png' | 'jpeg';
+	bytes: number;
+	sha256: string;
+	storage_key: string;
+	uploaded_by: string;
+	uploaded_at: Generated<Timestamp>;
+	superseded_at: Timestamp | null;
+	superseded_reason: string | null;
+	version: Generated<number>;
 }
 
 interface UnmaskingTable {
@@ -588,6 +649,8 @@ interface VisitTable {
 	finished_at: Timestamp | null;
 	finished_by: string | null;
 	missed_reason: string | null;
+	ended_by: string | null;
+	dropped_by: string | null;
 	version: Generated<number>;
 }
 
@@ -794,6 +857,9 @@ export interface Tables {
 	subject: SubjectTable;
 	unmasking: UnmaskingTable;
 	visit: VisitTable;
+	reconsent_refusal: ReconsentRefusalTable;
+	transfer: TransferTable;
+	upload: UploadTable;
 	'audit.event': AuditEventTable;
 	'audit.seal': AuditSealTable;
 	'audit.sealed': AuditSealedTable;

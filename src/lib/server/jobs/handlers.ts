@@ -1,5 +1,6 @@
 import { makeAllocationList } from '$lib/domain/randomisation/allocation.commands.server';
 import { sealedCodesJob } from '$lib/domain/unmasking/codes.server';
+import { amendmentJob } from '../amendments/job';
 import { importJob } from '../imports/job';
 import { byArmLookJob, lookJob } from '../looks/jobs';
 import { closedReleaseJob, closedReportJob, releaseJob, reportJob } from '../looks/report-jobs';
@@ -9,6 +10,7 @@ import type { Handlers } from './worker';
 
 /** What the ordinary worker does, each queue's work in a file of its own. */
 export const openHandlers: Handlers = {
+	amendment: amendmentJob,
 	import: importJob,
 	look: lookJob,
 	report: reportJob,

@@ -10,6 +10,8 @@ import { database } from '../db/db';
 export interface QueuePayloads {
 	mail: { mailId: string };
 	import: { batchId: string; jobRunId: string; dryRun: boolean };
+	/** Subjects follow a new protocol version. */
+	amendment: { studyId: string; jobRunId: string };
 	look: { lookId: string; jobRunId: string };
 	report: { reportId: string; jobRunId: string };
 	release: { releaseId: string };
@@ -41,6 +43,7 @@ export const queueSettings: Record<
 	mail: { ...retry, retryLimit: 8, expireInSeconds: 5 * minute },
 	// All of it or nothing, so that a worker that died may be followed by another.
 	import: { ...retry, retryLimit: 1, expireInSeconds: 30 * minute },
+	amendment: { ...retry, retryLimit: 2, expireInSeconds: 30 * minute },
 	look: { ...retry, retryLimit: 2, expireInSeconds: 30 * minute },
 	report: { ...retry, retryLimit: 2, expireInSeconds: 10 * minute },
 	release: { ...retry, expireInSeconds: 10 * minute },

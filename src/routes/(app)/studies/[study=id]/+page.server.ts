@@ -1,5 +1,7 @@
 import { redirect } from '@sveltejs/kit';
 import { findCuts } from '$lib/domain/cut/cut.reads.server';
+import { findReconsents } from '$lib/domain/consent/reconsent.reads.server';
+import { findTransfers } from '$lib/domain/subject/transfer.reads.server';
 import { findLooks } from '$lib/domain/look/look.reads.server';
 import { findLowStock } from '$lib/domain/kit/kit.reads.server';
 import { toldRoles } from '$lib/domain/unmasking/notice.server';
@@ -36,25 +38,41 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 		const atSites = has('coordinator', 'nurse', 'pharmacist', 'investigator');
 		const coordinator = roles.has('coordinator');
 		const analyst = has('statistician', 'independent_statistician');
-		const [work, windows, counts, screenings, state, cuts, looks, toSign, unmaskings, low, apart] =
-			await Promise.all([
-				atSites ? getWorkAtSites(actor, studyId) : null,
-				coordinator
-					? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
-					: null,
-				has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
-				has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
-				roles.has('data_manager') ? getStudyState(actor, studyId) : null,
-				analyst ? findCuts(actor, studyId) : null,
-				analyst ? findLooks(actor, studyId) : null,
-				may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null,
-				has(...toldRoles) ? findRecentUnmaskings(actor, studyId) : [],
-				has('coordinator', 'pharmacist', 'data_manager') ? findLowStock(actor, studyId) : [],
-				may(actor.grants, 'visit.record', { studyId }) ? findToRecord(actor, studyId) : []
-			]);
+		const [
+			work,
+			windows,
+			counts,
+			screenings,
+			state,
+			cuts,
+			looks,
+			toSign,
+			unmaskings,
+			low,
+			apart,
+			transfers,
+			asked
+		] = await Promise.all([
+			atSites ? getWorkAtSites(actor, studyId) : null,
+			coordinator
+				? findWindows(actor, studyId, windowsQuery.parse({ limit: 8 }), 'visit.book')
+				: null,
+			has('monitor', 'data_manager') ? getSiteCounts(actor, studyId) : null,
+			has('coordinator', 'investigator') ? countScreenings(actor, studyId) : null,
+			roles.has('data_manager') ? getStudyState(actor, studyId) : null,
+			analyst ? findCuts(actor, studyId) : null,
+			analyst ? findLooks(actor, studyId) : null,
+			may(actor.grants, 'signature.sign', { studyId }) ? findWaiting(actor, studyId) : null,
+			has(...toldRoles) ? findRecentUnmaskings(actor, studyId) : [],
+			has('coordinator', 'pharmacist', 'data_manager') ? findLowStock(actor, studyId) : [],
+			may(actor.grants, 'visit.record', { studyId }) ? findToRecord(actor, studyId) : [],
+			atSites ? findTransfers(actor, studyId) : [],
+			has('coordinator', 'investigator') ? findReconsents(actor, studyId) : null
+		]);
 		return {
 			day: work?.day ?? dateText(dateInZone(clock.now(), 'UTC')),
 			work,
+			transfers,
 			notices: { unmaskings, low },
 			windows,
 			counts,
@@ -81,7 +99,8 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 				studyId,
 				state,
 				screenings,
-				cuts && looks ? { cuts, looks } : null
+				cuts && looks ? { cuts, looks } : null,
+				asked?.tasks ?? null
 			)
 		};
 	});

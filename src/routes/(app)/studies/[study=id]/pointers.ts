@@ -1,5 +1,6 @@
 import type { CutHead } from '$lib/domain/cut/cut.reads.server';
 import type { ClosedLook, OpenLook } from '$lib/domain/look/look.reads.server';
+import type { ReconsentTask } from '$lib/domain/consent/reconsent.reads.server';
 import type { Role } from '$lib/domain/person/roles';
 import type { StudyState } from '$lib/domain/visit/today.reads.server';
 import { instantText } from '$lib/time/zones';
@@ -22,7 +23,8 @@ export function pointersFor(
 	studyId: string,
 	state: StudyState | null,
 	screenings: number | null,
-	analyses: Analyses | null
+	analyses: Analyses | null,
+	asked: readonly Pick<ReconsentTask, 'overdue' | 'refused'>[] | null = null
 ): Pointer[] {
 	const to = (path: string, label: string, text: string): Pointer => ({
 		href: `/studies/${studyId}${path}`,
@@ -41,6 +43,17 @@ export function pointersFor(
 					: `${screenings} in progress.`
 			)
 		);
+	const open = asked?.filter((task) => task.refused === null) ?? [];
+	if (open.length > 0) {
+		const overdue = open.filter((task) => task.overdue).length;
+		found.push(
+			to(
+				'/consent',
+				'Re-consent',
+				`${open.length === 1 ? 'One person has' : `${open.length} people have`} to be asked again for consent${overdue > 0 ? `, ${overdue} of them overdue` : ''}.`
+			)
+		);
+	}
 	if (roles.has('monitor') || roles.has('auditor'))
 		found.push(
 			to('/audit', 'Audit trail', 'Who did what, when and why; to filter and to follow one record.')

@@ -1,3 +1,6 @@
+import { redirect } from '@sveltejs/kit';
+import { createAmendment } from '$lib/domain/amendment/amendment.commands.server';
+import { amendmentInput } from '$lib/domain/amendment/amendment.input';
 import { shownFindings } from '$lib/domain/study/shown-findings';
 import { getProtocol, getStudy } from '$lib/domain/study/study.reads.server';
 import { planVisits } from '$lib/domain/schedule/window';
@@ -9,12 +12,22 @@ import {
 	targetWords,
 	widthWords
 } from '$lib/domain/study/words';
+import { formFor, submit } from '$lib/server/forms';
 import { may } from '$lib/server/permission';
 import { actorOf, serve } from '$lib/server/serve';
 import { clock } from '$lib/time/clock';
 import { shortDateText } from '$lib/time/dates';
 import { dateInZone } from '$lib/time/zones';
-import type { PageServerLoad } from './$types';
+import type { Actions, PageServerLoad } from './$types';
+
+/** What came of publishing: the first version opens the study, a later one is followed by some or by nobody yet. */
+function followWords(follow: string | null): string {
+	if (follow === null) return 'Published. The study is open.';
+	if (follow === 'many') return 'Published. The subjects follow it one after the other.';
+	const count = Number(follow);
+	if (!Number.isSafeInteger(count) || count <= 0) return 'Published. Nobody follows it yet.';
+	return `Published. ${count === 1 ? 'One subject follows it.' : `${count} subjects follow it.`}`;
+}
 
 export const load: PageServerLoad = async ({ locals, params, url }) => {
 	const actor = actorOf({ locals });
@@ -80,6 +93,28 @@ export const load: PageServerLoad = async ({ locals, params, url }) => {
 		characteristics: definition.characteristics.map((each) => each.name),
 		findings: draft ? shownFindings(definition) : [],
 		editable: draft && may(actor.grants, 'study.edit', scope),
-		justPublished: !draft && url.searchParams.get('published') === 'yes'
+		mayAmend: !draft && may(actor.grants, 'study.edit', scope),
+		amend: await formFor(amendmentInput, { summary: '' }, 'amend'),
+		justPublished:
+			!draft && url.searchParams.get('published') === 'yes'
+				? followWords(url.searchParams.get('follow'))
+				: null
 	};
+};
+
+export const actions: Actions = {
+	amend: async ({ request, locals, params }) => {
+		let done = false;
+		const answer = await submit(
+			request,
+			amendmentInput,
+			async (data) => {
+				await createAmendment(actorOf({ locals }), params.study, data);
+				done = true;
+			},
+			'amend'
+		);
+		if (done) redirect(303, `/studies/${params.study}/setup`);
+		return answer;
+	}
 };

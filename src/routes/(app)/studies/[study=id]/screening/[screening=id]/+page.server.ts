@@ -1,10 +1,7 @@
 import { redirect } from '@sveltejs/kit';
 import { standing } from '$lib/domain/subject/eligibility';
-import {
-	answerEligibility,
-	closeScreening,
-	recordConsent
-} from '$lib/domain/subject/screening.commands.server';
+import { answerEligibility, closeScreening } from '$lib/domain/subject/screening.commands.server';
+import { recordConsent, withdrawConsent } from '$lib/domain/consent/consent.commands.server';
 import { getScreening } from '$lib/domain/subject/screening.reads.server';
 import { enrolSubject } from '$lib/domain/subject/subject.commands.server';
 import {
@@ -14,12 +11,12 @@ import {
 	enrolForm,
 	enrolmentFrom
 } from '$lib/domain/subject/subject.forms';
-import { consentForm, consentInput, notEnteredForm } from '$lib/domain/subject/subject.input';
+import { consentForm, consentInput, withdrawConsentInput } from '$lib/domain/consent/consent.input';
+import { freshConsent } from '$lib/domain/consent/fresh-form';
+import { notEnteredForm } from '$lib/domain/subject/subject.input';
 import { formFor, submit } from '$lib/server/forms';
 import { actorOf, serve } from '$lib/server/serve';
-import { clock } from '$lib/time/clock';
 import { plainDateOf, shortDateText } from '$lib/time/dates';
-import { timeInZone } from '$lib/time/zones';
 import type { Actions, PageServerLoad } from './$types';
 
 export const load: PageServerLoad = async ({ locals, params }) => {
@@ -27,21 +24,19 @@ export const load: PageServerLoad = async ({ locals, params }) => {
 	const screening = await serve(() => getScreening(actor, params.study, params.screening));
 	const { definition, site, answers, version } = screening;
 	const { unanswered, unmet } = standing(definition, answers);
-	const explainer = screening.explainers.find((person) => person.id === actor.personId);
+	const explainer = screening.choices.explainers.find((person) => person.id === actor.personId);
 	return {
 		screening: { ...screening, screenedOn: shortDateText(plainDateOf(screening.screenedOn)) },
 		standing: { unanswered: unanswered.length, unmet: unmet.length },
 		consent: await formFor(
 			consentForm,
-			{
-				consentVersionId: screening.consentVersions[0]?.id ?? '',
-				signedOn: site.today,
-				signedTime: timeInZone(clock.now(), site.zone),
-				explainedBy: explainer?.id ?? '',
-				signedBy: '',
-				copyGiven: false
-			},
+			freshConsent(screening.choices, screening.forms, site, explainer?.id),
 			'consent'
+		),
+		withdraw: await formFor(
+			withdrawConsentInput,
+			{ consentId: '', withdrawnOn: site.today, reason: '' },
+			'withdraw'
 		),
 		eligibility: await formFor(
 			eligibilityForm(definition),
@@ -73,6 +68,16 @@ export const actions: Actions = {
 				return 'The consent is recorded.';
 			},
 			'consent'
+		),
+	withdraw: ({ request, locals, params }) =>
+		submit(
+			request,
+			withdrawConsentInput,
+			async (data) => {
+				await withdrawConsent(actorOf({ locals }), params.study, params.screening, data);
+				return 'The consent is marked as withdrawn and does not count any more.';
+			},
+			'withdraw'
 		),
 	eligibility: async ({ request, locals, params }) => {
 		const actor = actorOf({ locals });

@@ -1,6 +1,6 @@
 import { z } from 'zod';
-import { recordConsent } from '$lib/domain/subject/screening.commands.server';
-import { consentInput } from '$lib/domain/subject/subject.input';
+import { recordConsent } from '$lib/domain/consent/consent.commands.server';
+import { consentInput } from '$lib/domain/consent/consent.input';
 import { endpoint } from '$lib/server/api/endpoint';
 
 export const POST = endpoint({
