@@ -276,7 +276,7 @@ describe('randomising', () => {
 	});
 
 	test('R-48: an exhausted stratum and a list that is not there get the same answer, and nothing changes', async () => {
-		const bare = await makeScene(db, { plannedSubjects: 1 });
+		const bare = await makeScene(db, { plannedSubjects: 4 });
 		const alone = await enrolOne(bare);
 		const missing = await randomiseSubject(bare.coordinator, bare.studyId, alone.id).catch(
 			(error: Error) => error.message
@@ -284,6 +284,8 @@ describe('randomising', () => {
 		await makeList(db, bare);
 		end = useAs(db.appUrl);
 		await randomiseSubject(bare.coordinator, bare.studyId, alone.id);
+		for (let n = 0; n < 3; n++)
+			await randomiseSubject(bare.coordinator, bare.studyId, (await enrolOne(bare)).id);
 		const next = await enrolOne(bare);
 		const exhausted = await randomiseSubject(bare.coordinator, bare.studyId, next.id).catch(
 			(error: Error) => error.message

@@ -104,8 +104,19 @@ test('pictures of a study being set up and a file being brought in', async ({
 	const draft = await make('two-arm-trial', 'HGT-01');
 	await open(`/studies/${draft}/schedule`);
 	await picture(page, 'draft schedule');
-	await page.getByRole('link', { name: 'Change Month 1', exact: true }).click();
-	await picture(page, 'draft visit being changed');
+	for (const [part, name] of [
+		['', 'overview'],
+		['/arms?list=strata&item=kidney-function', 'arms'],
+		['/sites?list=sites&item=01', 'sites'],
+		['/visits?list=visits&item=month-1', 'visits'],
+		['/measures?list=measures&item=egfr', 'derived measure'],
+		['/measures?list=measures&item=weight', 'measure'],
+		['/schedule', 'grid'],
+		['/eligibility?list=eligibility&item=adult', 'eligibility']
+	] as const) {
+		await open(`/studies/${draft}/setup${part}`);
+		await picture(page, `draft set-up ${name}`);
+	}
 
 	const imported = await make('imported-data', 'HGT-02');
 	await open(`/studies/${imported}/import`);

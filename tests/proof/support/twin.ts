@@ -81,6 +81,7 @@ import { addDays, isoWeekday, plainDateOf, type PlainDate } from '../../../src/l
 import { checkFile, orthodontMapping } from '../../support/analysis';
 import { useEnvironment, type FreshDatabase } from '../../support/database';
 import { useAs } from '../../support/scene';
+import { withTellingMeasure } from '../../support/telling';
 
 export interface TwinPerson {
 	name: string;
@@ -114,9 +115,11 @@ const cast: [name: string, role: Role, site?: 0 | 1][] = [
 	['coordinator', 'coordinator', 0],
 	['nurse', 'nurse', 0],
 	['investigator', 'investigator', 0],
+	['pharmacist', 'pharmacist', 0],
 	['monitor', 'monitor', 0],
 	['coordinator elsewhere', 'coordinator', 1],
 	['nurse elsewhere', 'nurse', 1],
+	['pharmacist elsewhere', 'pharmacist', 1],
 	['auditor', 'auditor'],
 	['statistician', 'statistician'],
 	['independent statistician', 'independent_statistician'],
@@ -128,8 +131,13 @@ function definitionFrom(begin: PlainDate): StudyDefinition {
 	const file = join(root, 'templates/studies/two-arm-trial.json');
 	const { $schema, ...definition } = JSON.parse(readFileSync(file, 'utf8'));
 	void $schema;
+	const told = withTellingMeasure(definition as StudyDefinition);
 	return {
-		...definition,
+		...told,
+		schedule: {
+			...told.schedule,
+			baseline: [...(told.schedule.baseline ?? []), 'urine-glucose', 'urine-glucose-mean']
+		},
 		code: 'TWIN-1',
 		name: 'Twin threads',
 		plannedSubjects: 40,
@@ -415,6 +423,28 @@ async function play(
 			);
 		await keep('potassium', { kind: 'value', value: '4.4' });
 		await finishVisit(nurse, studyId, visit.id, version);
+		if (definition.schedule[key]?.includes('urine-glucose')) await tell(n, visit.id);
+	}
+	/** What differs with the arm and only the pharmacist sees; changed once, so that the trail tells of it twice. */
+	async function tell(n: number, visitId: string): Promise<void> {
+		const [rows = []] = await db.sql(
+			`select arm_key from closed.list_position where subject_id = '${subjects[n]}'`
+		);
+		const level = rows[0]?.arm_key === 'b' ? 41 + n : 0.5;
+		const keep = (value: number, version: number | null) =>
+			recordMeasurement(
+				as(here(n) === 0 ? 'pharmacist' : 'pharmacist elsewhere'),
+				studyId,
+				visitId,
+				measureId['urine-glucose'] as string,
+				version,
+				recordMeasurementInput.parse({
+					entry: { kind: 'value', value: value.toFixed(2) },
+					reason: version ? 'Read again.' : ''
+				})
+			);
+		const { version } = await keep(level, null);
+		await keep(level + 0.25, version);
 	}
 	for (let n = 0; n < 10; n++) await measure(n, 'baseline', 10, 0);
 	for (let n = 0; n < 9; n++) await measure(n, 'week-2', 20 + n, 0.05);

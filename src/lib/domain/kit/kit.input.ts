@@ -1,15 +1,18 @@
 import { z } from 'zod';
 import { isPlainDate } from '$lib/time/dates';
 
+const said = (least: number, most: number) => `Give a whole number from ${least} to ${most}.`;
 const whole = (least: number, most: number) =>
-	z.coerce
-		.number(`Give a whole number from ${least} to ${most}.`)
-		.int(`Give a whole number from ${least} to ${most}.`)
-		.min(least, `Give a whole number from ${least} to ${most}.`)
-		.max(most, `Give a whole number from ${least} to ${most}.`);
+	z
+		.number(said(least, most))
+		.int(said(least, most))
+		.min(least, said(least, most))
+		.max(most, said(least, most));
+/** The same as a form says it. */
+const typed = (least: number, most: number) => z.coerce.number().pipe(whole(least, most));
 
 export const kitPlanInput = z.strictObject({ useDays: whole(0, 1100) });
-export const kitPlanForm = z.object({ ...kitPlanInput.shape, useDays: whole(0, 1100).default(30) });
+export const kitPlanForm = z.object({ ...kitPlanInput.shape, useDays: typed(0, 1100).default(30) });
 export type KitPlanInput = z.output<typeof kitPlanInput>;
 
 export const kitLevelInput = z.strictObject({
@@ -18,7 +21,12 @@ export const kitLevelInput = z.strictObject({
 	resupplyAt: whole(1, 4999),
 	version: whole(0, 1_000_000_000)
 });
-export const kitLevelForm = z.object(kitLevelInput.shape);
+export const kitLevelForm = z.object({
+	siteId: kitLevelInput.shape.siteId,
+	fullStock: typed(2, 5000),
+	resupplyAt: typed(1, 4999),
+	version: typed(0, 1_000_000_000)
+});
 export type KitLevelInput = z.output<typeof kitLevelInput>;
 
 export const sendKitsInput = z.strictObject({

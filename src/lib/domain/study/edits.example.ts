@@ -1,3 +1,5 @@
+import { readdirSync, readFileSync } from 'node:fs';
+import { resolve } from 'node:path';
 import fc from 'fast-check';
 import { normalised } from './definition-file';
 import type { StudyDefinition } from './definition';
@@ -5,10 +7,16 @@ import { applyEdits, itemsOf } from './edits';
 import { editedLists, type EditedList } from './edit-lists';
 import type { Edit } from './edits.input';
 import { keyOf } from './references';
-import { studyTemplates } from './templates.server';
+import { readTemplate } from './template';
 
 /** Random edits of the templates, for tests: each can be applied where it stands, and most leave a readable study. */
-export const templates = studyTemplates.map(({ definition }) => normalised(definition));
+export const templates = readdirSync(resolve('templates/studies'))
+	.filter((name) => name.endsWith('.json') && !name.endsWith('.schema.json'))
+	.map((name) => {
+		const read = readTemplate(readFileSync(resolve('templates/studies', name), 'utf8'));
+		if (!read.ok) throw new Error(`The template ${name} does not hold`);
+		return normalised(read.definition);
+	});
 
 const word = fc.stringMatching(/^[A-Z][a-z]{1,8}( [a-z]{1,6})?$/);
 const key = fc.stringMatching(/^[a-z]{2,6}(-[0-9]{1,2})?$/);

@@ -58,11 +58,20 @@ export const createStudyInput = z.strictObject({
 export type CreateStudyInput = z.output<typeof createStudyInput>;
 
 /** A new study from nothing. */
+/** As a program says it: capital letters. A form takes small ones too. */
+const exactCode = z
+	.string()
+	.regex(
+		/^[A-Z0-9][A-Z0-9-]{1,19}$/,
+		'A study code has 2 to 20 capital letters, digits and hyphens.'
+	);
+
 export const createBlankInput = z.strictObject({
-	code,
+	code: exactCode,
 	name,
 	training: z.boolean().default(false)
 });
+export const createBlankForm = createBlankInput.extend({ code });
 export type CreateBlankInput = z.output<typeof createBlankInput>;
 
 /** What is said beside a file: another code than the file’s own, so that one study can begin from another. */

@@ -28,3 +28,22 @@ export async function readScan(request: Request): Promise<Buffer> {
 	}
 	return Buffer.concat(parts);
 }
+
+/** How much of a body that is refused is still read, and thrown away, so that the refusal reaches whoever is sending. */
+const drained = scanLimits.bytes + 4 * 1024 * 1024;
+
+/** Reads on what nobody wants any more, within bounds. */
+export async function letGo(request: Request): Promise<void> {
+	if (request.bodyUsed || !request.body) return;
+	const reader = request.body.getReader();
+	try {
+		for (let size = 0; size <= drained;) {
+			const { done, value } = await reader.read();
+			if (done) return;
+			size += value.length;
+		}
+		await reader.cancel();
+	} catch {
+		// Whoever sent it has gone.
+	}
+}

@@ -5,7 +5,7 @@ import { scanOutput } from '$lib/domain/upload/upload.input';
 import { Refusal } from '$lib/refusal';
 import { endpoint } from '$lib/server/api/endpoint';
 import { fault, problem } from '$lib/server/api/problem';
-import { readScan } from '$lib/server/uploads/read-scan';
+import { letGo, readScan } from '$lib/server/uploads/read-scan';
 import { fileNameIn } from '$lib/server/imports/upload';
 
 /** Said in the API's description; the file itself is the body, as it is. */
@@ -43,6 +43,7 @@ const receive: RequestHandler = async ({ request, params, locals }) => {
 			headers: { 'cache-control': 'no-store', etag: `"${made.version}"` }
 		});
 	} catch (thrown) {
+		await letGo(request);
 		if (thrown instanceof Refusal) return problem(thrown, locals.requestId);
 		return fault(thrown, locals.requestId);
 	}
