@@ -175,11 +175,13 @@ test('the search finds what it looks for', () => {
 	expect(holds('Nobody of that name')).toBe(false);
 });
 
-/** The site’s own, on the pages where they call and write to people. */
+/** The site’s own, where they call and write to people and where they read what changed. */
 const meantFor = ['coordinator', 'investigator'];
 const meantRoutes = [
 	'/(app)/studies/[study=id]/subjects/[subject=id]',
-	'/(app)/studies/[study=id]/visits/[visit=id]/chase'
+	'/(app)/studies/[study=id]/visits/[visit=id]/chase',
+	'/(app)/studies/[study=id]/history',
+	'/api/studies/[study=id]/history'
 ];
 
 test('no page, answer or export holds a contact’s name, address or number, but for the site’s own where they reach people', async () => {
@@ -203,7 +205,8 @@ test('no page, answer or export holds a contact’s name, address or number, but
 					: [])
 			];
 			for (const each of addresses) {
-				const answer = await visitor.get(each);
+				// A kept connection may be closed just as it is used again: once more, then.
+				const answer = await visitor.get(each).catch(() => visitor.get(each));
 				const text = Buffer.from(await answer.arrayBuffer()).toString('latin1');
 				answers += 1;
 				if (!holds(text)) continue;
@@ -233,12 +236,11 @@ test('exports of cuts and of the audit trail hold none, whoever takes them out',
 			expect(holds(text)).toBe(false);
 		}
 	expect(rows).toBeGreaterThan(100);
-	for (const study of [imported.studyId, people.scene.studyId]) {
-		const answer = await everywhere?.get(`/studies/${study}/audit/export.csv`);
-		const text = (await answer?.text()) ?? '';
-		expect(text).toContain('contact');
-		expect(holds(text)).toBe(false);
-	}
+	const trail = await people.by.auditor?.get(`/studies/${people.scene.studyId}/audit/export.csv`);
+	expect(trail?.status).toBe(200);
+	const text = (await trail?.text()) ?? '';
+	expect(text).toContain('contact');
+	expect(holds(text)).toBe(false);
 });
 
 test('an import’s problems, a report and its particulars hold none', () => {
@@ -268,10 +270,12 @@ test('in the database only the contact details themselves hold one: no job’s t
 	expect(tables.length).toBeGreaterThan(40);
 	const found: string[] = [];
 	for (const { name } of tables as { name: string }[]) {
+		// The trail keeps who changed what to what, in rows that are marked and that nobody is shown the values of.
+		const but = name === 'audit.event' ? 'not t.personal and ' : '';
 		const [[row] = []] = await server.database.sql(
-			`select count(*)::int as n from ${name} t where ${traces
+			`select count(*)::int as n from ${name} t where ${but}(${traces
 				.map((trace) => `replace(t::text, ' ', '') ilike '%${trace}%'`)
-				.join(' or ')}`
+				.join(' or ')})`
 		);
 		if (row?.n > 0) found.push(name);
 	}
