@@ -196,13 +196,23 @@ function checkSoftLimits(
 			problem('SOFT_LIMIT', { value: quantityText(unusual, measure.unit, measure.decimals) })
 		);
 	const before = softChange?.from === 'baseline' ? context.baseline : context.last;
-	if (softChange && typeof before === 'number') {
-		const most =
-			softChange.by === 'percent' ? (Math.abs(before) * softChange.size) / 100 : softChange.size;
-		if (Math.abs(value - before) > most * (1 + 1e-12))
-			problems.push(
-				problem('SOFT_CHANGE', { value: quantityText(value, measure.unit, measure.decimals) })
-			);
-	}
+	if (softChange && typeof before === 'number' && changesMuch(value, before, measure, softChange))
+		problems.push(
+			problem('SOFT_CHANGE', { value: quantityText(value, measure.unit, measure.decimals) })
+		);
 	return problems;
+}
+
+/** Per cent are counted on the measure's scale: on the log scale up by 50 % is as far as down to two thirds. */
+function changesMuch(
+	value: number,
+	before: number,
+	{ scale }: NumberMeasure,
+	{ by, size }: NonNullable<NumberMeasure['softChange']>
+): boolean {
+	const [change, most] =
+		by === 'percent' && scale === 'log' && value > 0 && before > 0
+			? [Math.abs(Math.log(value / before)), Math.log1p(size / 100)]
+			: [Math.abs(value - before), by === 'percent' ? (Math.abs(before) * size) / 100 : size];
+	return change > most * (1 + 1e-12);
 }

@@ -183,6 +183,26 @@ describe('assessing an entry', () => {
 		expect(assess(fromBaseline, value('82'), { today, last: 70, baseline: 80 }).result).toBe('ok');
 	});
 
+	it('counts per cent on the log scale where the measure says so: half is as far as double', () => {
+		const doubling = {
+			...weight,
+			hardLow: 1,
+			softLow: undefined,
+			softHigh: undefined,
+			softChange: { from: 'last', by: 'percent', size: 100 }
+		} as const;
+		const logged = { ...doubling, scale: 'log' } as const;
+		for (const [text, linear, log] of [
+			['200.0', 'ok', 'ok'],
+			['200.1', 'SOFT_CHANGE', 'SOFT_CHANGE'],
+			['50.0', 'ok', 'ok'],
+			['49.9', 'ok', 'SOFT_CHANGE']
+		]) {
+			expect(code(doubling, value(text as string), 100), text).toBe(linear);
+			expect(code(logged, value(text as string), 100), text).toBe(log);
+		}
+	});
+
 	it('summarises repeated readings and looks at each of them', () => {
 		expect(assess(systolic, readings('132', '128', '131'), { today })).toMatchObject({
 			result: 'ok',
