@@ -80,6 +80,8 @@ import { clock } from '../../../src/lib/time/clock';
 import { addDays, isoWeekday, plainDateOf, type PlainDate } from '../../../src/lib/time/dates';
 import { checkFile, orthodontMapping } from '../../support/analysis';
 import { useEnvironment, type FreshDatabase } from '../../support/database';
+import { keepScan } from '../../../src/lib/domain/upload/upload.commands.server';
+import { smallPdf } from '../../support/files';
 import { useAs } from '../../support/scene';
 import { withTellingMeasure } from '../../support/telling';
 
@@ -310,7 +312,7 @@ async function play(
 		const by = coordinatorOf(n);
 		const siteId = sites[here(n)].id as string;
 		const screening = await addScreening(by, studyId, { siteId, screenedOn: day(n) });
-		await recordConsent(by, studyId, screening.id, {
+		const consent = await recordConsent(by, studyId, screening.id, {
 			consentVersionId: consents[0].id,
 			signedOn: day(n),
 			signedTime: '04:30',
@@ -325,6 +327,13 @@ async function play(
 			signedBy: 'participant',
 			copyGiven: true
 		});
+		if (n === 0)
+			await keepScan(by, studyId, consent.id, {
+				bytes: smallPdf,
+				name: 'form.pdf',
+				type: 'application/pdf',
+				reason: ''
+			});
 		const { version } = await answerEligibility(
 			by,
 			studyId,

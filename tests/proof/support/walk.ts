@@ -52,7 +52,12 @@ export async function fillings(
 		batch: await idsOf('select id from app.import_batch order by id'),
 		signature: await idsOf('select id from app.signature order by id'),
 		delivery: await idsOf('select id from app.kit_delivery order by id'),
-		print: await idsOf('select id from app.code_print order by id')
+		print: await idsOf('select id from app.code_print order by id'),
+		consent: await idsOf(
+			`(select consent_id as id from app.upload) union (select id from app.consent order by id limit 2) order by 1`
+		),
+		site: await idsOf('select id from app.site order by id'),
+		scan: await idsOf('select id from app.upload order by id')
 	};
 	return (route, param) => {
 		if (param === 'token')
