@@ -103,9 +103,7 @@ export async function screensFor(server: RunningServer, grants: Grant[]): Promis
 			!route.startsWith('/(app)') ||
 			!methods.GET ||
 			/\.\w+$/.test(route) ||
-			route.endsWith('/locked') ||
-			// Of a published study they say the same as the first of them; drafts are walked in tests of their own.
-			/\/setup\/\w+$/.test(route)
+			route.endsWith('/locked')
 		)
 			continue;
 		const names = [...route.matchAll(/\[(\w+)(?:=\w+)?\]/g)].map((match) => match[1] as string);
